@@ -1,0 +1,76 @@
+"""What the step and the number format make of a law."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+from hybgen.check.report import error
+from hybgen.diag.finding import Finding, Severity, Verdict
+from hybgen.expr.core import FALSE, Const, Node, Ref, RefKind
+from hybgen.expr.fold import fold
+from hybgen.law.model import Law
+from hybgen.step import StepLaw, build
+from hybgen.step.chain import longest
+
+
+def fits(law: Law) -> list[Finding]:
+    """Types and units: a law that could be read has passed."""
+    span = law.flow.span
+    return [
+        Finding(
+            "HG200", "units", Verdict.PROVED, Severity.NOTE, span, law.name, "types and units fit in every expression"
+        )
+    ]
+
+
+def questions(law: Law) -> list[Finding]:
+    """Findings of the step law; raises LawError where there is none."""
+    made = build(law)
+    return [*made.notes, *_defaults(made), _chain(made)]
+
+
+def _defaults(made: StepLaw) -> Iterator[Finding]:
+    """Do the default parameters pass their own rules, in the number format?"""
+    known: dict[Node, Const] = {}
+    for p in made.parameters:
+        for i, value in enumerate(p.default):
+            known[Ref(RefKind.PARAMETER, p.name, p.type, i if p.size is not None else None)] = Const(value, p.type)
+    for rule in made.rules:
+        if fold(rule.condition, known) == FALSE:
+            yield error(
+                "HG406",
+                "range",
+                rule.span,
+                "parameters",
+                f"the default values break '{rule.text}'",
+                "change a value, or the rule",
+            )
+
+
+def _chain(made: StepLaw) -> Finding:
+    most = longest(made.jumps, made.definitions)
+    span = made.law.flow.span
+    if most is None:
+        message = (
+            f"chains of jumps are not bounded by constants: up to {made.jumps_per_step} jumps are taken in one step"
+        )
+        return Finding(
+            "HG320",
+            "repeat",
+            Verdict.OPEN,
+            Severity.NOTE,
+            span,
+            made.law.name,
+            message,
+            hint="give jumps_per_step if you know the number",
+        )
+    return Finding(
+        "HG320",
+        "repeat",
+        Verdict.PROVED,
+        Severity.NOTE,
+        span,
+        made.law.name,
+        f"at most {most} jump{'s' if most != 1 else ''} can follow each other in one step",
+        value={"chain": most},
+    )

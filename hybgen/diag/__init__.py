@@ -1,0 +1,1 @@
+"""Positions, codes, findings, rendering."""

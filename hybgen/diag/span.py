@@ -1,0 +1,29 @@
+"""Places in a file, as values."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+
+@dataclass(frozen=True, slots=True)
+class Span:
+    """A stretch of one line of a file; lines and columns count from 1, columns in characters."""
+
+    file: str
+    line: int
+    column: int
+    length: int = 1
+    text: str = ""
+    """The whole line, without its line end, for showing it with a caret."""
+
+    @property
+    def place(self) -> str:
+        """`file:line:column`."""
+        return f"{self.file}:{self.line}:{self.column}"
+
+    def shifted(self, offset: int, length: int) -> Span:
+        """The span that starts `offset` characters further right on the same line."""
+        return Span(self.file, self.line, self.column + offset, max(1, length), self.text)
+
+
+NOWHERE = Span("", 0, 0, 0, "")

@@ -1,0 +1,1 @@
+"""Expressions: tokens, trees, types, units, printing."""

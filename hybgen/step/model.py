@@ -1,0 +1,207 @@
+"""The step law: one step of a law at a fixed period in one number format, as data.
+
+Every constant is exactly representable in the format; timers are whole steps (int); every expression is a
+tree of hybgen.expr.core over inputs, tunable parameters, states and the step law's own definitions. All
+definitions are pure functions of the state and of this step's snapshot, so a phase may evaluate any of them
+at the state it sees: while jumping, that is the state reached so far; for outputs and flow, the state after
+the last jump.
+
+Meaning of one step (LANGUAGE, section 2):
+
+1. snapshot: bad samples become what `StepInput` says (status INVALID_INPUT). If `rules` are broken by the
+   parameters handed in, the defaults are used for this step (status PARAMETER). `alarms` that are not finite
+   set NON_FINITE.
+2. while a jump is due and fewer than `jumps_per_step` were taken: take it. A jump is due: the first of
+   `jumps` in order whose condition holds; under `prefer: flow` only where `flow_condition` does not hold.
+   If one is still due afterwards: status JUMP_LIMIT.
+3. outputs, from the state and the snapshot.
+4. flow (`flow`, then every timer counts one step up to its maximum) if there is no flow condition or it
+   holds; else, if no jump is due, status STUCK. `sample` states take their new values in either case. All new
+   values are computed from the values before any of them is stored.
+
+A guarded assignment whose new value is not finite keeps the old value (status NON_FINITE).
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from enum import IntFlag
+from fractions import Fraction
+
+from hybgen.diag.finding import Finding
+from hybgen.diag.span import Span
+from hybgen.expr.core import Node, Type
+from hybgen.law.model import Law, StateKind, Value
+from hybgen.numbers.format import Format
+
+
+class Status(IntFlag):
+    """The status bits that a step returns."""
+
+    INVALID_INPUT = 1
+    JUMP_LIMIT = 2
+    STUCK = 4
+    NON_FINITE = 8
+    PARAMETER = 16
+
+
+@dataclass(frozen=True, slots=True)
+class StepInput:
+    """An input and what becomes of a bad sample. A number is good if low <= u <= high (NaN is not)."""
+
+    name: str
+    type: Type
+    size: int | None
+    low: Value
+    high: Value
+    """Representable; meaningless for bool, which is always good."""
+    invalid: str
+    """hold: the last good sample (a vector as a whole) | clamp: NaN and infinities as hold, else the nearest
+    end of the range, each component for itself | value: `substitute`"""
+    substitute: Value
+    initial: Value
+    """What `hold` holds before the first good sample (each component)."""
+    span: Span
+
+    @property
+    def held(self) -> bool:
+        """Does the instance have to remember the last good sample?"""
+        return self.type.kind != "bool" and self.invalid in ("hold", "clamp")
+
+
+@dataclass(frozen=True, slots=True)
+class StepParameter:
+    """A tunable parameter: a field of the parameter struct."""
+
+    name: str
+    type: Type
+    size: int | None
+    """Number of components (row-major) of a vector or matrix, None for a scalar."""
+    default: tuple[Value, ...]
+    low: Value | None
+    high: Value | None
+    span: Span
+
+
+@dataclass(frozen=True, slots=True)
+class Rule:
+    """A condition that the parameters have to meet; the number of the first broken one is reported."""
+
+    condition: Node
+    text: str
+    """Such as `0.25 m <= high <= 0.5 m`."""
+    span: Span
+
+
+@dataclass(frozen=True, slots=True)
+class StepState:
+    """A state; a timer's initial value and maximum are whole steps."""
+
+    name: str
+    kind: StateKind
+    type: Type
+    size: int | None
+    values: tuple[str, ...] | tuple[int, ...]
+    initial: tuple[Value, ...]
+    maximum: int | None
+    span: Span
+
+
+@dataclass(frozen=True, slots=True)
+class StepTable:
+    """A curve in the format: y[i] + slope[i] * (x - x[i]) for x[i] <= x < x[i+1]; y[0] for x <= x[0]; y[-1] for
+    x >= x[-1]; NaN for NaN."""
+
+    name: str
+    x: tuple[Fraction, ...]
+    y: tuple[Fraction, ...]
+    slope: tuple[Fraction, ...]
+    span: Span
+
+
+@dataclass(frozen=True, slots=True)
+class Definition:
+    """A named intermediate value (a term, or a stage of the integrator); Ref(LOCAL, name) reads it."""
+
+    name: str
+    expr: Node
+    span: Span
+    text: str
+    """What the author wrote for it, or what it is (`rate of depth at half the step`)."""
+
+
+@dataclass(frozen=True, slots=True)
+class StepAssign:
+    """A new value for one component of a state.
+
+    `guarded`: a value that is not finite is not taken. `clamp`: then held inside [low, high] (the op
+    clamp or iclamp; for a count [0, maximum], for a timer likewise).
+    """
+
+    state: str
+    index: int | None
+    expr: Node
+    guarded: bool
+    clamp: tuple[Value, Value] | None
+    span: Span
+    text: str
+
+
+@dataclass(frozen=True, slots=True)
+class StepJump:
+    """A jump; `number` counts from 1 in the listed order."""
+
+    name: str
+    number: int
+    condition: Node
+    """In negation normal form: a NaN makes no comparison true."""
+    assigns: tuple[StepAssign, ...]
+    flagged: bool
+    """Does an output, sample or flow expression ask jumped(name)?"""
+    span: Span
+    text: str
+
+
+@dataclass(frozen=True, slots=True)
+class StepOutput:
+    """One component of an output.
+
+    `guarded`: a value that is not finite becomes `fallback` (status NON_FINITE); then `clamp`.
+    """
+
+    name: str
+    index: int | None
+    expr: Node
+    guarded: bool
+    fallback: Value
+    clamp: tuple[Value, Value] | None
+    span: Span
+    text: str
+
+
+@dataclass(frozen=True, slots=True)
+class StepLaw:
+    """One step of a law."""
+
+    law: Law
+    format: Format
+    step: Fraction
+    """seconds"""
+    method: str
+    """The integration method in effect: none | exact | euler | heun | rk4"""
+    jumps_per_step: int
+    inputs: tuple[StepInput, ...]
+    parameters: tuple[StepParameter, ...]
+    rules: tuple[Rule, ...]
+    states: tuple[StepState, ...]
+    tables: tuple[StepTable, ...]
+    definitions: tuple[Definition, ...]
+    """Each uses only earlier ones."""
+    alarms: tuple[Node, ...]
+    jumps: tuple[StepJump, ...]
+    flow_condition: Node | None
+    outputs: tuple[StepOutput, ...]
+    flow: tuple[StepAssign, ...]
+    sample: tuple[StepAssign, ...]
+    notes: tuple[Finding, ...] = ()
+    """What the step changes that the author should know (times that are no whole number of steps)."""
