@@ -12,10 +12,11 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 
 from hybgen.check.report import error, warning
-from hybgen.check.view import View, logic_ref, logic_states, possible, value_name, values_of, view
+from hybgen.check.view import View, logic_states, value_name, view
 from hybgen.diag.finding import Finding
 from hybgen.expr.core import COMPARISONS, OPPOSITE, Const, Kind, Node, Op, Ref, truth
 from hybgen.expr.fold import fold
+from hybgen.law.members import logic_ref, possible, values_of
 from hybgen.law.model import Jump, Law, State
 
 MOST_CASES = 4096

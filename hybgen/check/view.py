@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import dataclass
 
-from hybgen.expr.core import INT, Const, Kind, Node, Ref, RefKind, rebuild, refs, walk
+from hybgen.expr.core import Const, Kind, Node, Ref, RefKind, rebuild, walk
 from hybgen.expr.fold import fold
 from hybgen.law.model import Law, State, StateKind
 from hybgen.step.translate import constants_of
@@ -52,18 +52,6 @@ def read_names(law: Law, node: Node) -> Iterator[str]:
                 yield piece.table
 
 
-def values_of(state: State) -> list[Const]:
-    """The members of a logic variable, as constants."""
-    if state.type.kind is Kind.ENUM:
-        return [Const(i, state.type) for i in range(len(state.values))]
-    return [Const(int(v), INT) for v in state.values]
-
-
-def logic_ref(state: State) -> Ref:
-    """The reference to a logic variable."""
-    return Ref(RefKind.STATE, state.name, state.type)
-
-
 def value_name(state: State, value: Const) -> str:
     """How the author writes a value of a logic variable."""
     return str(state.values[int(value.value)]) if state.type.kind is Kind.ENUM else str(value.value)
@@ -73,20 +61,3 @@ def logic_states(law: Law) -> list[State]:
     """The logic variables."""
     return [s for s in law.states if s.kind is StateKind.LOGIC]
 
-
-def possible(node: Node, states: list[State]) -> list[Const] | None:
-    """The constants that an expression for a logic variable may become, or None where that is not plain."""
-    if isinstance(node, Const):
-        return [node]
-    if isinstance(node, Ref):
-        owner = next((s for s in states if s.name == node.name and node.kind is RefKind.STATE), None)
-        return values_of(owner) if owner else None
-    if node.op == "select":
-        yes, no = (possible(a, states) for a in node.args[1:])
-        return None if yes is None or no is None else yes + no
-    read = [s for s in states if any(r.name == s.name for r in refs(node, RefKind.STATE))]
-    if len(read) == 1 and all(r.name == read[0].name for r in refs(node)):
-        found = [fold(node, {logic_ref(read[0]): v}) for v in values_of(read[0])]
-        constants = [f for f in found if isinstance(f, Const)]
-        return constants if len(constants) == len(found) else None
-    return None

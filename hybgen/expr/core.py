@@ -50,6 +50,8 @@ class RefKind(StrEnum):
     TERM = "term"
     JUMPED = "jumped"
     """jumped(name): was that jump taken in this step?"""
+    OUTPUT = "output"
+    """An output's value, in claims."""
     LOCAL = "local"
     """A definition of a step law."""
 

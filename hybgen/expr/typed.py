@@ -72,7 +72,7 @@ _KIND_WORDS = {
     RefKind.STATE: "a state",
     RefKind.TERM: "a term",
     RefKind.JUMPED: "jumped()",
-    RefKind.LOCAL: "a local",
+    RefKind.OUTPUT: "an output", RefKind.LOCAL: "a local",
 }
 
 

@@ -1,0 +1,124 @@
+"""What the readers of the parts of a law share: findings, numbers, expressions."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from fractions import Fraction
+
+from hybgen.diag.finding import Findings
+from hybgen.diag.span import Span
+from hybgen.diag.suggest import nearest
+from hybgen.expr import units
+from hybgen.expr.constant import value_in
+from hybgen.expr.parser import parse
+from hybgen.expr.show import show
+from hybgen.expr.tree import Cases, Expr, Vector
+from hybgen.expr.units import ONE, BadUnit, Unit
+from hybgen.law.document import Mapping, Node, Scalar, Sequence
+
+MOST_COMPONENTS = 64
+
+
+@dataclass(frozen=True, slots=True)
+class Context:
+    """Reads pieces of a document, adding findings."""
+
+    findings: Findings
+
+    def error(self, code: str, span: Span, message: str, hint: str | None = None) -> None:
+        """Add an error."""
+        self.findings.error(code, span, message, hint=hint)
+
+    def unit(self, group: Mapping, key: str = "unit") -> Unit:
+        """The unit under a key; dimensionless if there is none."""
+        node = group.get(key)
+        if not isinstance(node, Scalar) or node.text in ("", "1"):
+            return ONE
+        try:
+            return units.parse(node.text)
+        except BadUnit as bad:
+            close = nearest(bad.name, units.known_names()) if bad.name else None
+            self.error("HG214", node.locate(bad.offset, max(1, len(bad.name))), bad.message, f"did you mean '{close}'?" if close else None)
+            return ONE
+
+    def text(self, group: Mapping, key: str) -> str:
+        """The text under a key, on one line."""
+        node = group.get(key)
+        return " ".join(node.text.split()) if isinstance(node, Scalar) else ""
+
+    def flag(self, group: Mapping, key: str) -> bool:
+        """true or false under a key; false if there is none."""
+        node = group.get(key)
+        return isinstance(node, Scalar) and node.text == "true"
+
+    def whole(self, group: Mapping, key: str) -> int | None:
+        """A whole number under a key."""
+        node = group.get(key)
+        return int(node.text) if isinstance(node, Scalar) else None
+
+    def size(self, group: Mapping) -> int | None:
+        """The number of components under `vector`."""
+        n = self.whole(group, "vector")
+        if n is not None and n > MOST_COMPONENTS:
+            node = group.get("vector")
+            assert node is not None
+            self.error("HG139", node.span, f"a vector has at most {MOST_COMPONENTS} components, not {n}")
+            return MOST_COMPONENTS
+        return n
+
+    def expression(self, node: Node) -> Expr | None:
+        """The tree of an expression: text, cases, or a vector."""
+        if isinstance(node, Scalar):
+            return parse(node.text, node.locate, self.findings)
+        assert isinstance(node, Sequence)
+        if not any(isinstance(i, Mapping) for i in node.items):
+            items = [self.expression(i) for i in node.items]
+            return None if any(i is None for i in items) else Vector(tuple(i for i in items if i is not None), node.span)
+        branches: list[tuple[Expr, Expr]] = []
+        good, otherwise = True, None
+        for item in node.items:
+            assert isinstance(item, Mapping)
+            parts = {k.text: self.expression(v) for k, v in item.entries}
+            good = good and all(v is not None for v in parts.values())
+            when, value = parts.get("when"), parts.get("is")
+            if when is not None and value is not None:
+                branches.append((when, value))
+            otherwise = parts.get("otherwise", otherwise)
+        return Cases(tuple(branches), otherwise, node.span) if good and otherwise is not None else None
+
+    def written(self, node: Node, expr: Expr) -> str:
+        """What the author wrote, on one line."""
+        return " ".join(node.text.split()) if isinstance(node, Scalar) else show(expr)
+
+    def number(self, node: Node | None, unit: Unit | None, difference: bool = False) -> tuple[Fraction, Unit] | None:
+        """The exact value of a constant, in a unit (None: the written one)."""
+        if not isinstance(node, Scalar):
+            return None
+        expr = parse(node.text, node.locate, self.findings)
+        return None if expr is None else value_in(expr, unit, self.findings, difference)
+
+    def value(self, node: Node | None, unit: Unit, difference: bool = False) -> Fraction | None:
+        """The exact value of a constant, in a unit."""
+        found = self.number(node, unit, difference)
+        return None if found is None else found[0]
+
+    def positive(self, node: Node | None, unit: Unit, what: str, zero: bool = False, difference: bool = True) -> Fraction | None:
+        """A value above zero (or zero too)."""
+        found = self.value(node, unit, difference)
+        if found is not None and node is not None and (found < 0 or (found == 0 and not zero)):
+            self.error("HG140", node.span, f"{what} has to be {'zero or more' if zero else 'above zero'}")
+            return None
+        return found
+
+    def pair(self, node: Node | None, unit: Unit) -> tuple[Fraction, Fraction] | None:
+        """A range."""
+        if not isinstance(node, Sequence):
+            return None
+        low, high = (self.value(i, unit) for i in node.items)
+        if low is None or high is None:
+            return None
+        if low >= high:
+            self.error("HG131", node.span, "a range is [low, high] with low below high", "exchange the two" if low > high else None)
+            return None
+        return low, high
+
