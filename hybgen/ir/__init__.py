@@ -1,1 +1,1 @@
-
+"""Programs: typed statements for one number format."""

@@ -59,7 +59,8 @@ def _record(kind: shape.Record) -> dict[str, Any]:
     }
     if required := [n for n, f in kind.fields.items() if f.required]:
         found["required"] = required
-    excludes = {n: {"properties": {other: {"not": {}} for other in f.excludes}} for n, f in kind.fields.items() if f.excludes}
+    excludes: dict[str, Any] = {
+        n: {"properties": {other: {"not": {}} for other in f.excludes}} for n, f in kind.fields.items() if f.excludes}
     if excludes:
         found["dependentSchemas"] = excludes
     return found

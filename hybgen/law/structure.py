@@ -20,9 +20,11 @@ def check(node: Node, kind: shape.Kind, what: str, findings: Findings) -> None:
         case shape.Either():
             check(node, kind.full if isinstance(node, Mapping) else kind.short, what, findings)
         case shape.Named():
-            if _grouped(node, what, findings):
+            if isinstance(node, Mapping):
                 for key, value in node.entries:
                     check(value, kind.item, f"'{key.text}'", findings)
+            elif not (isinstance(node, Scalar) and not node.text):
+                _wrong(node, what, "a group of keys", findings)
         case shape.Listed():
             if not isinstance(node, Sequence):
                 _wrong(node, what, "a list", findings)
@@ -42,14 +44,6 @@ def _wrong(node: Node, what: str, wanted: str, findings: Findings, hint: str | N
     if isinstance(node, Scalar) and not node.text:
         found = "nothing"
     findings.error("HG122", node.span, f"{what} has to be {wanted}, this is {found}", hint=hint)
-
-
-def _grouped(node: Node, what: str, findings: Findings) -> bool:
-    if isinstance(node, Mapping):
-        return True
-    if not (isinstance(node, Scalar) and not node.text):
-        _wrong(node, what, "a group of keys", findings)
-    return False
 
 
 def _record(node: Node, kind: shape.Record, what: str, findings: Findings) -> None:

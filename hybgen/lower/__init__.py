@@ -1,1 +1,5 @@
+"""StepLaw -> Program."""
 
+from hybgen.lower.program import lower
+
+__all__ = ["lower"]

@@ -66,7 +66,9 @@ class StepInput:
     @property
     def held(self) -> bool:
         """Does the instance have to remember the last good sample?"""
-        return self.type.kind != "bool" and self.invalid in ("hold", "clamp")
+        return (self.type.kind == "real" and self.invalid in ("hold", "clamp")) or (
+            self.type.kind == "int" and self.invalid == "hold"
+        )
 
 
 @dataclass(frozen=True, slots=True)

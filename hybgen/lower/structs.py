@@ -1,0 +1,125 @@
+"""The structs of a program: members with their comments, enumerations, names."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+from fractions import Fraction
+
+from hybgen.expr.core import Kind, Node, RefKind, refs
+from hybgen.expr.units import Unit
+from hybgen.ir.model import Enum, Member
+from hybgen.law.model import Input, Parameter, State, StateKind
+from hybgen.lower.names import LOCALS, Namer
+from hybgen.lower.values import Values
+from hybgen.step.model import StepLaw
+
+
+@dataclass(frozen=True, slots=True)
+class Structs:
+    """Every struct's members, and the names behind them."""
+
+    enums: tuple[Enum, ...]
+    inputs: tuple[Member, ...]
+    parameters: tuple[Member, ...]
+    outputs: tuple[Member, ...]
+    states: tuple[Member, ...]
+    now: tuple[Member, ...]
+    values: Values
+    macros: tuple[str, ...]
+    held: dict[str, str]
+
+
+def structs(made: StepLaw, namer: Namer) -> Structs:
+    """The structs of a law."""
+    prefix = made.law.name
+    enums: list[Enum] = []
+    known: dict[str, tuple[str, tuple[str, ...]]] = {}
+    for state in made.states:
+        if state.type.kind is Kind.ENUM:
+            name = namer.unique(f"{prefix}_{state.name}")
+            words = tuple(namer.unique(f"{prefix}_{state.name}_{v}".upper()) for v in state.values)
+            known[state.name] = (name, words)
+            enums.append(Enum(name, words, f"values of {state.name}"))
+    macros = tuple(namer.unique(f"{prefix}_JUMP_{j.name}".upper()) for j in made.jumps)
+    names, now = _now(made)
+    locals_ = _locals(made)
+    values = Values(known, names, locals_)
+    held = {u.name: f"held_{u.name}" for u in made.inputs if u.held}
+    law = made.law
+    states = [Member(x.name, values.type(x.type), x.size, _state_note(law.state(x.name), made)) for x in made.states]
+    states += [Member(held[u.name], values.type(u.type), u.size, f"last good sample of {u.name}") for u in made.inputs if u.held]
+    return Structs(
+        tuple(enums),
+        tuple(Member(u.name, values.type(u.type), u.size, _input_note(u)) for u in law.inputs),
+        tuple(Member(p.name, values.type(p.type), p.size, _parameter_note(law.parameter(p.name))) for p in made.parameters),
+        tuple(Member(o.name, values.type(o.type), o.size, _joined(_unit(o.unit), _range(o.low, o.high), o.about)) for o in law.outputs),
+        tuple(states), now, values, macros, held)
+
+
+def _now(made: StepLaw) -> tuple[dict[tuple[RefKind, str], str], tuple[Member, ...]]:
+    """What one step knows: the sampled inputs, which of them were good, which jumps were taken (where asked)."""
+    namer = Namer({u.name for u in made.inputs})
+    names: dict[tuple[RefKind, str], str] = {}
+    asked = {r.name for node in _trees(made) for r in refs(node, RefKind.VALID)}
+    members = [Member(u.name, str(u.type.kind), u.size, "") for u in made.inputs]
+    for u in made.inputs:
+        if u.name in asked:
+            names[(RefKind.VALID, u.name)] = namer.unique(f"{u.name}_valid")
+            members.append(Member(names[(RefKind.VALID, u.name)], "bool", None, f"was the sample of {u.name} good?"))
+    for jump in made.jumps:
+        if jump.flagged:
+            names[(RefKind.JUMPED, jump.name)] = namer.unique(f"jumped_{jump.name}")
+            members.append(Member(names[(RefKind.JUMPED, jump.name)], "bool", None, f"was {jump.name} taken in this step?"))
+    return names, tuple(members)
+
+
+def _trees(made: StepLaw) -> Iterator[Node]:
+    yield from made.alarms
+    yield from (d.expr for d in made.definitions)
+    for jump in made.jumps:
+        yield jump.condition
+        yield from (a.expr for a in jump.assigns)
+    if made.flow_condition is not None:
+        yield made.flow_condition
+    yield from (o.expr for o in made.outputs)
+    yield from (a.expr for a in (*made.flow, *made.sample))
+
+
+def _locals(made: StepLaw) -> dict[str, str]:
+    namer = Namer(set(LOCALS))
+    return {d.name: namer.unique(d.name) for d in made.definitions}
+
+
+def _unit(unit: Unit) -> str:
+    return "" if unit.plain else str(unit)
+
+
+def _range(low: Fraction | None, high: Fraction | None) -> str:
+    return "" if low is None or high is None else f"{float(low):.9g} .. {float(high):.9g}"
+
+
+def _joined(*parts: str) -> str:
+    return "; ".join(p for p in parts if p)
+
+
+def _input_note(u: Input) -> str:
+    return _joined(_unit(u.unit), _range(u.low, u.high), u.about)
+
+
+def _parameter_note(p: Parameter) -> str:
+    return _joined(_unit(p.unit), _range(p.low, p.high), p.about)
+
+
+def _state_note(x: State, made: StepLaw) -> str:
+    match x.kind:
+        case StateKind.TIMER:
+            top = next(s.maximum for s in made.states if s.name == x.name)
+            return _joined(f"steps of {float(made.step):.9g} s, holds at {top}", x.about)
+        case StateKind.COUNT:
+            return _joined(f"holds at {x.maximum}", x.about)
+        case StateKind.REAL:
+            return _joined(_unit(x.unit), _range(x.low, x.high), x.about)
+        case _:
+            return x.about
+

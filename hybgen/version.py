@@ -1,0 +1,3 @@
+"""The version of hybgen."""
+
+VERSION = "0.1.0"
