@@ -1,0 +1,87 @@
+"""The operations in numpy, one function for each row of OPS; each rounds once, in the format's own type."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from functools import reduce
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from hybgen.numbers.format import LARGEST_COUNT, Format
+from hybgen.step.model import StepTable
+
+Array = NDArray[Any]
+Operation = Callable[..., Any]
+
+_I = np.int32
+
+
+def operations(fmt: Format) -> Mapping[str, Operation]:
+    """Operation name -> function on arrays (or scalars) of the format's type, int32 or bool."""
+    real = fmt.dtype.type
+    zero, one, largest = real(0), real(1), real(float(fmt.max))
+    return {
+        "add": np.add, "sub": np.subtract, "mul": np.multiply, "div": np.divide, "neg": np.negative,
+        "abs": lambda a: np.where(a <= zero, zero - a, a),
+        "min": lambda a, b: np.where(b < a, b, a),
+        "max": lambda a, b: np.where(b > a, b, a),
+        "clamp": lambda x, low, high: np.where(x < low, low, np.where(x > high, high, x)),
+        "sign": lambda a: np.where(a > zero, one, np.where(a < zero, -one, zero)),
+        "floor": _floor(fmt),
+        "iadd": np.add, "isub": np.subtract, "imul": np.multiply, "ineg": np.negative,
+        "iabs": lambda a: np.where(a < _I(0), -a, a),
+        "imin": lambda a, b: np.where(b < a, b, a),
+        "imax": lambda a, b: np.where(b > a, b, a),
+        "iclamp": lambda x, low, high: np.where(x < low, low, np.where(x > high, high, x)),
+        "isign": lambda a: np.where(a > _I(0), _I(1), np.where(a < _I(0), _I(-1), _I(0))),
+        "to_real": lambda a: np.asarray(a).astype(real),
+        "to_steps": _to_steps(fmt),
+        "lt": np.less, "le": np.less_equal, "gt": np.greater, "ge": np.greater_equal, "eq": np.equal, "ne": np.not_equal,
+        "finite": lambda a: (a >= -largest) & (a <= largest),
+        "and": lambda *a: reduce(np.logical_and, a), "or": lambda *a: reduce(np.logical_or, a), "not": np.logical_not,
+        "select": np.where,
+    }
+
+
+def _floor(fmt: Format) -> Operation:
+    real, whole = fmt.dtype.type, fmt.dtype.type(fmt.whole)
+    integer = np.int32 if fmt.precision == 24 else np.int64
+
+    def floor(a: Array) -> Any:
+        a = np.asarray(a)
+        small = (a > -whole) & (a < whole)
+        down = np.where(small, a, real(0)).astype(integer).astype(real)
+        return np.where(small, np.where(down > a, down - real(1), down), a)
+
+    return floor
+
+
+def _to_steps(fmt: Format) -> Operation:
+    real = fmt.dtype.type
+    top, near = real(LARGEST_COUNT), real(8 / 2**fmt.precision)
+
+    def to_steps(a: Array) -> Any:
+        a = np.asarray(a)
+        inside = (a > real(0)) & (a < top)
+        safe = np.where(inside, a, real(0))
+        steps = safe.astype(np.int32)
+        up = (safe - steps.astype(real)) > (safe * near)
+        return np.where(a >= top, _I(LARGEST_COUNT), np.where(inside, steps + up.astype(np.int32), _I(0)))
+
+    return to_steps
+
+
+def lookup(table: StepTable, fmt: Format) -> Operation:
+    """The function of a table."""
+    real = fmt.dtype.type
+    x, y, slope = (np.array([real(float(v)) for v in row], dtype=real) for row in (table.x, table.y, table.slope))
+
+    def look(u: Array) -> Any:
+        u = np.asarray(u)
+        i = np.clip(np.searchsorted(x, u, side="right") - 1, 0, len(slope) - 1)
+        inner = y[i] + slope[i] * (u - x[i])
+        return np.where(u <= x[0], y[0], np.where(u >= x[-1], y[-1], inner))
+
+    return look
