@@ -58,7 +58,8 @@ def _plans(made: StepLaw) -> _Plans:
 class Reference(Machine):
     """The law in Python: `step`, `run`, `state`, `status`, `last_jump`, `jumps`, `reset` (README).
 
-    `step` (seconds) and `number` override those of the law. `seen` counts, for each atomic condition of a jump or
+    `step` (seconds) and `number` override those of the law. `snapshot` holds the samples of the last step, `trail` the
+    numbers of its jumps in order (first lane). `seen` counts, for each atomic condition of a jump or
     of the flow, whether it was ever true and ever false (while `recording`); `taken` counts the jumps.
     """
 
@@ -69,7 +70,8 @@ class Reference(Machine):
         self.recording = False
         self.seen = np.zeros((len(self._plans.atoms), 2), bool)
         self.taken = np.zeros(len(made.jumps), np.int64)
-        self._now: Fields = {}
+        self.snapshot: Fields = {}
+        self.trail: list[int] = []
         self._used: Fields = {}
         self._broken: Array | None = None
         super().__init__(made, parameters, lanes)
@@ -116,7 +118,7 @@ class Reference(Machine):
                 array = sources[ref.kind][ref.name]
             else:
                 name = {RefKind.VALID: f"valid {ref.name}", RefKind.JUMPED: f"jumped {ref.name}"}.get(ref.kind, ref.name)
-                array = self._now[name]
+                array = self.snapshot[name]
             array = array if ref.index is None else array[:, ref.index]
             return array if lanes is None else array[lanes]
 
@@ -133,16 +135,16 @@ class Reference(Machine):
         return outputs
 
     def _snapshot(self, inputs: Fields, status: Array) -> None:
-        self._now = {}
+        self.snapshot = {}
         for u in self.step_law.inputs:
             raw = inputs[u.name]
             if u.type.kind is Kind.BOOL:
-                self._now[u.name] = raw
+                self.snapshot[u.name] = raw
             else:
                 self._sampled(u, raw, status)
         for jump in self.step_law.jumps:
             if jump.flagged:
-                self._now[f"jumped {jump.name}"] = np.zeros(self.lanes, bool)
+                self.snapshot[f"jumped {jump.name}"] = np.zeros(self.lanes, bool)
         for value in self._plans.alarms.run(self._load(None))[0]:
             status[~np.isfinite(np.broadcast_to(value, status.shape))] |= np.uint32(Status.NON_FINITE)
 
@@ -164,8 +166,8 @@ class Reference(Machine):
                 seen = inside if held is None else np.where(np.isfinite(raw), inside, held)
         if held is not None:
             held[...] = np.where(each, raw, held)
-        self._now[u.name] = seen
-        self._now[f"valid {u.name}"] = whole
+        self.snapshot[u.name] = seen
+        self.snapshot[f"valid {u.name}"] = whole
         status[~whole] |= np.uint32(Status.INVALID_INPUT)
 
     def _due(self, lanes: Array | None) -> Array:
@@ -187,6 +189,7 @@ class Reference(Machine):
             return np.zeros(self.lanes, np.uint32)
         due = self._due(None).copy()
         lanes = np.flatnonzero(due)
+        self.trail = []
         for _ in range(self.step_law.jumps_per_step):
             if not len(lanes):
                 break
@@ -205,8 +208,10 @@ class Reference(Machine):
         self.fields["last_jump"][lanes] = number
         self.fields["jumps"][lanes] += np.uint32(1)
         if jump.flagged:
-            self._now[f"jumped {jump.name}"][lanes] = True
+            self.snapshot[f"jumped {jump.name}"][lanes] = True
         self.taken[number - 1] += len(lanes)
+        if lanes[0] == 0:
+            self.trail.append(number)
 
     def _store(self, a: StepAssign, value: Array, lanes: Array, status: Array) -> None:
         """A new value into some lanes, if it is finite, held inside its range."""
