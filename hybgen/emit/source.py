@@ -173,14 +173,14 @@ class _Pages:
         return f"status |= {call};" if f.status else f"jump = {call};" if name == "due" else f"{call};"
 
     def step(self) -> Iterator[str]:
-        program, name = self.program, self.program.name
+        program, law = self.program, self.program.name
         calls = [f for f in program.functions if f.name not in ("init", "rules")]
         taken = {a for f in calls for a in self.arguments(f)}
         jumping = program.has("due")
         if "p" in taken or program.has("rules"):
-            yield f"    const {name}_parameters *used = p;"
+            yield f"    const {law}_parameters *used = p;"
         if program.now:
-            yield f"    {name}_now now;"
+            yield f"    {law}_now now;"
         yield "    uint32_t status = 0u;"
         if jumping or program.flow_asked:
             yield "    uint32_t jump = 0u;" if not jumping else "    uint32_t jump;"
@@ -189,8 +189,9 @@ class _Pages:
         yield ""
         yield from (f"    (void){a};" for a in ("self", "p", "u", "y") if a not in taken and not (a == "p" and program.has("rules")))
         yield from self.checked("p" in taken)
-        if program.has("read"):
-            yield f"    {self.call('read')}"
+        for name in ("read", "watch"):
+            if program.has(name):
+                yield f"    {self.call(name)}"
         if jumping:
             yield from self.jumping()
         if program.has("give"):

@@ -53,7 +53,8 @@ class Writer:
     def value(self, value: Value) -> str:
         """A value, outermost operation without parentheses."""
         text = self.inner(value)
-        return text[1:-1] if isinstance(value, Apply) and text.startswith("(") else text
+        wrapped = isinstance(value, Apply) and (value.op in INFIX or value.op in ("select", "neg", "ineg"))
+        return text[1:-1] if wrapped else text
 
     def inner(self, value: Value) -> str:
         """A value as an operand."""
@@ -113,11 +114,9 @@ class Writer:
 
     def _if(self, statement: If, depth: int) -> Iterator[str]:
         pad = INDENT * depth
-        if not statement.then and not statement.orelse:
-            return
         condition = self.value(statement.condition)
         then, orelse = statement.then, statement.orelse
-        if not any(not isinstance(s, Note) for s in then):
+        if not then:
             condition, then, orelse = f"!{self.inner(statement.condition)}", orelse, ()
         yield f"{pad}if ({condition}) {{"
         yield from self.block(then, depth + 1)

@@ -109,7 +109,10 @@ def _clamp(values: list[Typed], span: Span, findings: Findings) -> Typed:
     if whole:
         (a, b), (c, d), (e, f) = bounds_of(value), bounds_of(low), bounds_of(high)
         bounds = min(max(a, c), f, max(c, e)), max(min(b, f), d)
-    return replace(_gathered([value, low, high], span), nodes=(node,), bounds=bounds)
+    const = None
+    if value.const is not None and low.const is not None and high.const is not None:
+        const = (min(max(value.const[0], low.const[0]), high.const[0]),)
+    return replace(_gathered([value, low, high], span), nodes=(node,), bounds=bounds, const=None if whole else const)
 
 
 def _abs(values: list[Typed], span: Span, findings: Findings) -> Typed:
@@ -140,8 +143,9 @@ def _sign(values: list[Typed], span: Span, findings: Findings) -> Typed:
         return replace(
             value, nodes=(op("isign", value.nodes[0], span=span),), bounds=(Fraction(-1), Fraction(1)), span=span
         )
+    const = (Fraction((value.const[0] > 0) - (value.const[0] < 0)),) if value.const else None
     return replace(
-        value, nodes=(op("sign", value.nodes[0], span=span),), unit=ONE, const=None, zero=False, timer=False, span=span
+        value, nodes=(op("sign", value.nodes[0], span=span),), unit=ONE, const=const, zero=False, timer=False, span=span
     )
 
 

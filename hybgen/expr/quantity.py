@@ -42,7 +42,9 @@ class Typed:
 
     @property
     def whole(self) -> bool:
-        """A dimensionless constant that may stand as an integer."""
+        """Dimensionless constants that may stand as integers."""
+        if self.const is None and self.type == REAL and self.unit.plain:
+            return all(isinstance(n, Op) and _as_integer(n, False) is not None for n in self.nodes)
         return (
             self.const is not None
             and self.unit.plain
@@ -60,7 +62,7 @@ class Want:
     unit: Unit = ONE
     what: str = "this"
     timer: bool = False
-    """Constants of any time unit are converted."""
+    """Times in any unit are converted."""
 
 
 def enum_value(name: str, owner: Type, span: Span) -> Typed:
@@ -105,26 +107,44 @@ def unit_words(unit: Unit) -> str:
 _WHOLE = {"add": "iadd", "sub": "isub", "mul": "imul", "neg": "ineg"}
 
 
-def _as_integer(node: Node) -> Node | None:
-    """The same constant expression on integers, where every part of it is whole."""
+def _as_integer(node: Node, constant: bool) -> Node | None:
+    """The same expression on integers, where every part of it is whole; `constant`: names are known to be constants."""
     match node:
         case Const():
             return integer(int(node.value), node.span) if Fraction(node.value).denominator == 1 else None
         case Ref():
-            return Ref(node.kind, node.name, INT, node.index, node.span)
-        case Op() if node.op in _WHOLE:
-            args = [_as_integer(a) for a in node.args]
+            return Ref(node.kind, node.name, INT, node.index, node.span) if constant else None
+        case Op(op="select"):
+            parts = [_as_integer(a, constant) for a in node.args[1:]]
+            return op("select", node.args[0], *[p for p in parts if p], span=node.span) if all(parts) else None
+        case Op() if node.op in _WHOLE and constant:
+            args = [_as_integer(a, constant) for a in node.args]
             return op(_WHOLE[node.op], *[a for a in args if a], span=node.span) if all(args) else None
         case _:
             return None
 
 
+def _ends(node: Node) -> tuple[Fraction, Fraction]:
+    """The least and the largest of the constants that a choice may give."""
+    if isinstance(node, Op):
+        ends = [_ends(a) for a in node.args[1:]]
+        return min(e[0] for e in ends), max(e[1] for e in ends)
+    assert isinstance(node, Const)
+    return Fraction(node.value), Fraction(node.value)
+
+
 def to_integers(found: Typed) -> Typed:
-    """A whole constant as integers."""
+    """A whole constant, or a choice of them, as integers."""
     if found.type == INT:
         return found
-    assert found.whole and found.const is not None
-    nodes = tuple(_as_integer(n) or integer(int(c), found.span) for n, c in zip(found.nodes, found.const, strict=True))
+    assert found.whole
+    if found.const is None:
+        nodes = tuple(n for n in (_as_integer(n, False) for n in found.nodes) if n is not None)
+        ends = [_ends(n) for n in nodes]
+        return replace(found, nodes=nodes, type=INT, bounds=(min(e[0] for e in ends), max(e[1] for e in ends)))
+    nodes = tuple(
+        _as_integer(n, True) or integer(int(c), found.span) for n, c in zip(found.nodes, found.const, strict=True)
+    )
     return replace(found, nodes=nodes, type=INT, bounds=(min(found.const), max(found.const)))
 
 
@@ -136,11 +156,11 @@ def to_reals(found: Typed) -> Typed:
 
 
 def rescaled(found: Typed, unit: Unit) -> Typed:
-    """A constant expression in another unit of the same dimension: its exact value."""
-    assert found.const is not None
+    """An expression in another unit of the same dimension, by its exact factor."""
     ratio = factor(found.unit, unit)
     nodes = tuple(op("mul", n, real(ratio, found.span), span=found.span) for n in found.nodes)
-    return replace(found, nodes=nodes, const=tuple(c * ratio for c in found.const), unit=unit)
+    const = tuple(c * ratio for c in found.const) if found.const is not None else None
+    return replace(found, nodes=nodes, const=const, unit=unit, timer=False)
 
 
 def fit_unit(found: Typed, unit: Unit, what: str, findings: Findings, timer: bool = False) -> Typed:
@@ -148,7 +168,7 @@ def fit_unit(found: Typed, unit: Unit, what: str, findings: Findings, timer: boo
     if found.zero or found.unit.same(unit):
         return replace(found, unit=unit)
     if found.unit.alike(unit):
-        if timer and found.const is not None:
+        if timer:
             return rescaled(found, unit)
         factor_text = found.unit.factor_text(unit)
         findings.error(

@@ -81,7 +81,7 @@ def _numbers(sign: str, left: Typed, right: Typed, span: Span, findings: Finding
             f"'{sign}' between real numbers is hardly ever what happens",
             "say what band you mean: abs(a - b) <= tolerance",
         )
-    if timed and left.const is not None and left.unit.alike(right.unit):
+    if timed and not left.timer and left.unit.alike(right.unit) and not left.unit.same(right.unit):
         left = rescaled(left, right.unit)
     if left.zero:
         left = replace(left, unit=right.unit)

@@ -150,6 +150,22 @@ def _label(statement: Statement | None, subject: Value | None) -> Constant | Non
     return None
 
 
+def pruned(body: Statements) -> Statements:
+    """The body without choices that do nothing, whatever is chosen."""
+    kept: list[Statement] = []
+    for statement in body:
+        match statement:
+            case If():
+                statement = If(statement.condition, pruned(statement.then), pruned(statement.orelse))
+            case Switch():
+                cases = tuple((labels, pruned(block)) for labels, block in statement.cases)
+                statement = replace(statement, cases=cases, default=pruned(statement.default))
+        idle = isinstance(statement, If | Switch) and not any(b for b in blocks(statement))
+        if not idle:
+            kept.append(statement)
+    return tuple(kept) if any(not isinstance(s, Note) for s in kept) else ()
+
+
 @dataclass(frozen=True, slots=True)
 class Lets:
     """The definitions as lets, in their order."""

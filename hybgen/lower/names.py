@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass, field
 
-API = ("inputs", "parameters", "outputs", "defaults", "init", "step", "check_parameters", "jump_name", "now", "read", "due", "take",
+API = ("inputs", "parameters", "outputs", "defaults", "init", "step", "check_parameters", "jump_name", "now", "read", "watch", "due", "take",
        "give", "advance")
 LOCALS = ("self", "p", "u", "y", "now", "status", "jump", "taken", "answer", "used", "double", "float", "int", "if", "for", "while", "do")
 

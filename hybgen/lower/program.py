@@ -13,7 +13,7 @@ from hybgen.ir.model import (
 )
 from hybgen.ir.verify import verify
 from hybgen.ir.walk import all_values, statements
-from hybgen.lower.blocks import Assignment, Lets, Statements, chosen, merged, ordered
+from hybgen.lower.blocks import Assignment, Lets, Statements, chosen, merged, ordered, pruned
 from hybgen.lower.due import Due
 from hybgen.lower.names import API, LOCALS, Namer
 from hybgen.lower.structs import Structs, structs
@@ -57,8 +57,10 @@ class _Builder:
         yield self._function("init", "the state after start", tuple(self._init()))
         if self.made.rules:
             yield self._function("rules", "the first rule that the parameters break, 0 if none", tuple(self._rules()))
-        if self.made.inputs or self.made.alarms or any(j.flagged for j in self.made.jumps):
+        if self.made.inputs or any(j.flagged for j in self.made.jumps):
             yield self._function("read", "takes the snapshot: a bad sample becomes what the law says", self._read())
+        if self.made.alarms:
+            yield self._function("watch", "reports values in conditions that are not finite", tuple(self._watch()))
         if self.made.jumps:
             yield self._function("due", "the jump that is due, 0 if none", self._due())
             yield self._function("take", "takes a jump: every new value from the old ones", self._take())
@@ -70,7 +72,7 @@ class _Builder:
 
     def _function(self, name: str, about: str, body: Statements) -> Function:
         lets = Lets(tuple(self._lets()))
-        body = lets.placed(body)
+        body = lets.placed(pruned(body))
         used = {v.base for v in all_values(body) if isinstance(v, Field)}
         written = {s.target.base for s in statements(body) if isinstance(s, Store)}
         status = any(isinstance(s, Raise) for s in statements(body))
@@ -118,9 +120,12 @@ class _Builder:
         for jump in self.made.jumps:
             if jump.flagged:
                 body.append(Store(self._flag(jump), Constant(False, "bool")))
-        for alarm in self.made.alarms:
-            body.append(If(Apply("not", (Apply("finite", (self._value(alarm),), "bool"),), "bool"), (Raise("NON_FINITE"),)))
         return tuple(body)
+
+    def _watch(self) -> Iterator[Statement]:
+        for alarm in self.made.alarms:
+            bad = Apply("not", (Apply("finite", (self._value(alarm),), "bool"),), "bool")
+            yield If(bad, (Raise("NON_FINITE"),))
 
     def _flag(self, jump: StepJump) -> Field:
         return Field("now", self.parts.values.names[(RefKind.JUMPED, jump.name)], None, "bool")

@@ -26,6 +26,8 @@ class Plan:
     work: tuple[tuple[int, Callable[..., Any], tuple[int, ...]], ...]
     roots: tuple[int, ...]
     size: int
+    loaded: frozenset[int]
+    """Roots that are references: copied, so that storing one result can't change another."""
 
     def run(self, load: Load, watch: Sequence[int] = ()) -> tuple[list[Array], list[Array]]:
         """Values of the roots and of the watched slots."""
@@ -36,7 +38,7 @@ class Plan:
             slots[at] = load(ref)
         for at, function, args in self.work:
             slots[at] = function(*[slots[a] for a in args])
-        return [slots[r] for r in self.roots], [slots[w] for w in watch]
+        return [slots[r].copy() if r in self.loaded else slots[r] for r in self.roots], [slots[w] for w in watch]
 
 
 class Planner:
@@ -63,7 +65,8 @@ class Planner:
         building = _Building(self)
         slots = tuple(building.slot(r) for r in roots)
         watch = tuple(building.slot(w) for w in watched)
-        made = Plan(tuple(building.constants), tuple(building.loads), tuple(building.work), slots, building.size)
+        loaded = frozenset(at for at, _ in building.loads)
+        made = Plan(tuple(building.constants), tuple(building.loads), tuple(building.work), slots, building.size, loaded)
         return made, watch
 
 

@@ -126,6 +126,9 @@ class Translator:
             return op(
                 "select", self._translate(condition), self.in_steps(yes, unit), self.in_steps(no, unit), span=node.span
             )
+        if isinstance(node, Op) and node.op == "mul" and isinstance(node.args[1], Const):
+            scaled = Unit(unit.powers, unit.scale * Fraction(node.args[1].value))
+            return self.in_steps(node.args[0], scaled)
         period = real(self.rounded(self.step / unit.scale), node.span)
         return op("to_steps", op("div", self._translate(node), period, span=node.span), span=node.span)
 
