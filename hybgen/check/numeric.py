@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from fractions import Fraction
 
 from hybgen.check.report import error
 from hybgen.diag.finding import Finding, Severity, Verdict
@@ -23,9 +24,9 @@ def fits(law: Law) -> list[Finding]:
     ]
 
 
-def questions(law: Law) -> list[Finding]:
+def questions(law: Law, step: Fraction | None, number: str | None) -> list[Finding]:
     """Findings of the step law; raises LawError where there is none."""
-    made = build(law)
+    made = build(law, step=step, number=number)
     return [*made.notes, *_defaults(made), _chain(made)]
 
 

@@ -12,7 +12,7 @@ _CLAMP = ("static {type} {name}({type} x, {type} low, {type} high)\n{{\n"
           "    return (x < low) ? low : ((x > high) ? high : x);\n}}")
 _SIGN = "static {type} {name}({type} a)\n{{\n    return (a > {zero}) ? {one} : ((a < {zero}) ? -{one} : {zero});\n}}"
 _TEMPLATES: dict[str, str] = {
-    "abs": "static {type} {name}({type} a)\n{{\n    return (a <= {zero}) ? ({zero} - a) : a;\n}}",
+    "abs": "static {type} {name}({type} a)\n{{\n    return (a < {zero}) ? -a : a;\n}}",
     "iabs": "static {type} {name}({type} a)\n{{\n    return (a < 0) ? -a : a;\n}}",
     "min": _PAIR, "max": _PAIR, "imin": _PAIR, "imax": _PAIR, "clamp": _CLAMP, "iclamp": _CLAMP, "sign": _SIGN, "isign": _SIGN,
     "finite": "/* false for infinities and for what is no number */\nstatic bool {name}({type} a)\n{{\n"

@@ -109,7 +109,7 @@ OPS: dict[str, Row] = {
         Row("mul", ("real", "real"), "real", "a * b"),
         Row("div", ("real", "real"), "real", "a / b"),
         Row("neg", ("real",), "real", "-a"),
-        Row("abs", ("real",), "real", "0 - a if a <= 0 else a"),
+        Row("abs", ("real",), "real", "-a if a < 0 else a"),
         Row("min", ("real", "real"), "real", "b if b < a else a"),
         Row("max", ("real", "real"), "real", "b if b > a else a"),
         Row("clamp", ("real", "real", "real"), "real", "lo if x < lo else (hi if x > hi else x)"),

@@ -9,7 +9,7 @@ from __future__ import annotations
 from collections.abc import Callable, Mapping
 from fractions import Fraction
 
-from hybgen.expr.core import FALSE, OPPOSITE, TRUE, Const, Node, Op, Ref, op, truth
+from hybgen.expr.core import FALSE, OPPOSITE, REAL, TRUE, Const, Node, Op, Ref, op, truth
 
 Known = Mapping[Node, Const]
 MOST_BITS = 8192
@@ -72,7 +72,12 @@ def _fold(node: Node, known: Known) -> Node:
             return _computed(node)
 
 
+_REFLEXIVE = {"lt": False, "le": True, "gt": False, "ge": True, "eq": True, "ne": False}
+
+
 def _computed(node: Op) -> Node:
+    if node.op in _REFLEXIVE and node.args[0] == node.args[1] and (isinstance(node.args[0], Ref) or node.args[0].type != REAL):
+        return truth(_REFLEXIVE[node.op], node.span)
     exact = _EXACT.get(node.op)
     if exact is None or not all(isinstance(a, Const) for a in node.args):
         return node

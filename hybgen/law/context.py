@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from dataclasses import dataclass
 from fractions import Fraction
 
@@ -12,11 +13,27 @@ from hybgen.expr import units
 from hybgen.expr.constant import value_in
 from hybgen.expr.parser import parse
 from hybgen.expr.show import show
-from hybgen.expr.tree import Cases, Expr, Vector
+from hybgen.expr.tree import Cases, Expr, Number, Vector
 from hybgen.expr.units import ONE, BadUnit, Unit
 from hybgen.law.document import Mapping, Node, Scalar, Sequence
 
 MOST_COMPONENTS = 64
+
+
+_MEASURED = re.compile(r"\s*(-?)([0-9]{1,30}(?:\.[0-9]{0,30})?(?:[eE][+-]?[0-9]{1,3})?)\s*([A-Za-zµ%/].*?)\s*\Z", re.DOTALL)
+
+
+def _measured(node: Scalar) -> Number | None:
+    """A number with all the rest as its unit: in a declaration `8 V*s/m` needs no parentheses."""
+    found = _MEASURED.match(node.text)
+    if found is None or found[3][0] == "/" and not node.text[: found.start(3)].endswith(" "):
+        return None
+    try:
+        unit = units.parse(found[3])
+    except BadUnit:
+        return None
+    value = Fraction(found[2]) * (-1 if found[1] else 1)
+    return Number(value, unit, node.text.strip(), node.span)
 
 
 @dataclass(frozen=True, slots=True)
@@ -94,7 +111,7 @@ class Context:
         """The exact value of a constant, in a unit (None: the written one)."""
         if not isinstance(node, Scalar):
             return None
-        expr = parse(node.text, node.locate, self.findings)
+        expr = _measured(node) or parse(node.text, node.locate, self.findings)
         return None if expr is None else value_in(expr, unit, self.findings, difference)
 
     def value(self, node: Node | None, unit: Unit, difference: bool = False) -> Fraction | None:

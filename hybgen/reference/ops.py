@@ -24,7 +24,7 @@ def operations(fmt: Format) -> Mapping[str, Operation]:
     zero, one, largest = real(0), real(1), real(float(fmt.max))
     return {
         "add": np.add, "sub": np.subtract, "mul": np.multiply, "div": np.divide, "neg": np.negative,
-        "abs": lambda a: np.where(a <= zero, zero - a, a),
+        "abs": lambda a: np.where(a < zero, -a, a),
         "min": lambda a, b: np.where(b < a, b, a),
         "max": lambda a, b: np.where(b > a, b, a),
         "clamp": lambda x, low, high: np.where(x < low, low, np.where(x > high, high, x)),

@@ -84,6 +84,9 @@ class Translator:
                 return node
             case Op() if node.op in COMPARISONS:
                 return self._comparison(node)
+            case Op(op="sub", args=(Const(value=0), other)):
+                # 0 - x is -x: gcc 12 folds 0.0 - (float)i so, with the other sign of zero, whatever the flags
+                return op("neg", self._translate(other), span=node.span)
             case Op():
                 return Op(node.op, tuple(self._translate(a) for a in node.args), node.type, node.table, node.span)
 

@@ -1,0 +1,42 @@
+"""Hybrid feedback laws: from a law file to C that equals its reference in every bit.
+
+`load`, `check`, `generate`, `Reference`, `compile` are the whole job in Python; they are imported when first used.
+"""
+
+from __future__ import annotations
+
+from importlib import import_module
+from typing import TYPE_CHECKING, Any
+
+from hybgen.version import VERSION as __version__
+
+if TYPE_CHECKING:
+    from hybgen.check import Report, check
+    from hybgen.diag.finding import Finding, LawError
+    from hybgen.generate import generate
+    from hybgen.law import Law, load
+    from hybgen.reference import Reference
+    from hybgen.sil import Chip, compile
+
+_HOMES = {
+    "Chip": "hybgen.sil",
+    "Finding": "hybgen.diag.finding",
+    "Law": "hybgen.law",
+    "LawError": "hybgen.diag.finding",
+    "Reference": "hybgen.reference",
+    "Report": "hybgen.check",
+    "check": "hybgen.check",
+    "compile": "hybgen.sil",
+    "generate": "hybgen.generate",
+    "load": "hybgen.law",
+}
+
+__all__ = ["Chip", "Finding", "Law", "LawError", "Reference", "Report", "__version__", "check", "compile", "generate", "load"]
+
+
+def __getattr__(name: str) -> Any:
+    if name not in _HOMES:
+        raise AttributeError(f"module 'hybgen' has no attribute '{name}'")
+    found = getattr(import_module(_HOMES[name]), name)
+    globals()[name] = found
+    return found
