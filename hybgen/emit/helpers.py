@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from fractions import Fraction
 
-from hybgen.emit.text import real_literal
+from hybgen.emit.text import comment, real_literal
 from hybgen.ir.model import Program
 
 _PAIR = "static {type} {name}({type} a, {type} b)\n{{\n    return (b {sign} a) ? b : a;\n}}"
@@ -50,21 +50,22 @@ static const {type} {name}_slope[{m}] = {{ {slope} }};
 
 static {type} {name}({type} x)
 {{
-    uint32_t i = 0u;
-    {type} y;
+{index}    {type} y;
 
     if (x <= {name}_x[0]) {{
         y = {name}_y[0];
     }} else if (x >= {name}_x[{m}]) {{
         y = {name}_y[{m}];
     }} else {{
-        while ((i < {last}u) && (x >= {name}_x[i + 1u])) {{
-            i++;
-        }}
-        y = {name}_y[i] + ({name}_slope[i] * (x - {name}_x[i]));
+{search}        y = {name}_y[{at}] + ({name}_slope[{at}] * (x - {name}_x[{at}]));
     }}
     return y;
 }}"""
+_INDEX = "    uint32_t i = 0u;\n"
+_SEARCH = """        while ((i < {last}u) && (x >= {name}_x[i + 1u])) {{
+            i++;
+        }}
+"""
 
 
 def lookups(program: Program, used: frozenset[str]) -> list[str]:
@@ -74,5 +75,8 @@ def lookups(program: Program, used: frozenset[str]) -> list[str]:
         if t.name in used:
             rows = {k: ", ".join(real_literal(v, program) for v in getattr(t, k)) for k in ("x", "y", "slope")}
             n = len(t.x)
-            made.append(_LOOKUP.format(name=f"{program.name}_{t.name}", type=program.real, n=n, m=n - 1, last=n - 2, note=t.note, **rows))
+            search = _SEARCH.format(name=t.name, last=n - 2) if n > 2 else ""
+            made.append(_LOOKUP.format(
+                name=t.name, type=program.real, n=n, m=n - 1, note=comment(t.note), index=_INDEX if search else "",
+                search=search, at="i" if search else "0", **rows))
     return made

@@ -83,8 +83,8 @@ class Writer:
             return f"({self.inner(args[0])} ? {self.inner(args[1])} : {self.inner(args[2])})"
         if value.op == "to_real":
             return f"({self.program.real}){self.inner(args[0])}"
-        name = value.table if value.op == "lookup" else value.op
-        return f"{self.program.name}_{name}({', '.join(self.value(a) for a in args)})"
+        name = value.table if value.op == "lookup" else f"{self.program.name}_{value.op}"
+        return f"{name}({', '.join(self.value(a) for a in args)})"
 
     def block(self, body: Sequence[Statement], depth: int) -> Iterator[str]:
         """The lines of a body."""
@@ -96,7 +96,7 @@ class Writer:
         pad = INDENT * depth
         match statement:
             case Note():
-                yield f"{pad}/* {comment(f'{statement.place}  {statement.text}')} */"
+                yield f"{pad}/* {comment(statement.place)}  {comment(statement.text)} */"
             case Let():
                 yield f"{pad}const {ctype(statement.type, self.program)} {statement.name} = {self.value(statement.value)};"
             case Store():
@@ -153,7 +153,7 @@ class Writer:
 def comment(text: str) -> str:
     """A text that can't end or upset a comment."""
     safe = "".join(c if c.isascii() and c.isprintable() else "?" for c in " ".join(text.split()))
-    for bad, good in (("*/", "* /"), ("/*", "/ *"), ("??", "? ?"), ("\\", "/")):
+    for bad, good in (("\\", "/"), ("*/", "* /"), ("/*", "/ *"), ("??", "? ?")):
         while bad in safe:
             safe = safe.replace(bad, good)
     return safe if len(safe) <= 240 else f"{safe[:237]}..."

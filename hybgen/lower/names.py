@@ -4,9 +4,19 @@ from __future__ import annotations
 
 from dataclasses import dataclass, field
 
+from hybgen.ir.model import HELPERS
+from hybgen.step.model import Status
+
 API = ("inputs", "parameters", "outputs", "defaults", "init", "step", "check_parameters", "jump_name", "now", "read", "watch", "due", "take",
        "give", "advance")
 LOCALS = ("self", "p", "u", "y", "now", "status", "jump", "taken", "answer", "used", "double", "float", "int", "if", "for", "while", "do")
+
+
+def reserved(law: str) -> set[str]:
+    """The names that every law's C may have, whatever its author declares."""
+    words = {f"{law}_{word}" for word in (*API, *HELPERS)}
+    macros = {f"{law}_STATUS_{bit.name}".upper() for bit in Status} | {f"{law}_NO_NAMES".upper()}
+    return {law} | words | macros
 
 
 @dataclass(slots=True)
@@ -20,4 +30,11 @@ class Namer:
         while name in self.taken:
             name += "_"
         self.taken.add(name)
+        return name
+
+    def family(self, name: str, endings: tuple[str, ...]) -> str:
+        """A free name that is also free with each of the endings; all of them are now taken."""
+        while {name, *(name + e for e in endings)} & self.taken:
+            name += "_"
+        self.taken |= {name, *(name + e for e in endings)}
         return name

@@ -15,7 +15,7 @@ from hybgen.ir.verify import verify
 from hybgen.ir.walk import all_values, statements
 from hybgen.lower.blocks import Assignment, Lets, Statements, chosen, merged, ordered, pruned
 from hybgen.lower.due import Due
-from hybgen.lower.names import API, LOCALS, Namer
+from hybgen.lower.names import LOCALS, Namer, reserved
 from hybgen.lower.structs import Structs, structs
 from hybgen.step.model import StepAssign, StepInput, StepJump, StepLaw, StepOutput
 from hybgen.step.translate import component
@@ -26,7 +26,7 @@ TRUE = Constant(True, "bool")
 
 def lower(made: StepLaw) -> Program:
     """The program of a step law, verified."""
-    namer = Namer({f"{made.law.name}_{word}" for word in API} | {made.law.name})
+    namer = Namer(reserved(made.law.name))
     parts = structs(made, namer)
     builder = _Builder(made, parts)
     program = builder.program()
@@ -50,7 +50,7 @@ class _Builder:
             "float" if made.format.precision == 24 else "double", made.format.precision, made.format.max, parts.enums, parts.inputs,
             parts.parameters, parts.outputs, parts.states, parts.now, defaults, tuple(r.text for r in made.rules),
             tuple(Jump(j.number, m, j.name) for j, m in zip(made.jumps, parts.macros, strict=True)), made.jumps_per_step,
-            tuple(Table(t.name, t.x, t.y, t.slope, _place(t.span)) for t in made.tables), _helpers(functions), functions,
+            tuple(Table(parts.values.tables[t.name], t.x, t.y, t.slope, _place(t.span)) for t in made.tables), _helpers(functions), functions,
             made.flow_condition is not None)
 
     def _functions(self) -> Iterator[Function | None]:
@@ -81,7 +81,7 @@ class _Builder:
     def _lets(self) -> Iterator[tuple[Note, Let]]:
         for d in self.made.definitions:
             value = self._value(d.expr)
-            yield self._note(d.span, d.text if d.text.startswith(("rate of", "not (")) else f"{d.name}: {d.text}"), Let(
+            yield self._note(d.span, d.text if " " in d.name else f"{d.name}: {d.text}"), Let(
                 self.parts.values.locals[d.name], value.type, value)
 
     def _value(self, node: Node) -> Value:

@@ -41,10 +41,13 @@ def structs(made: StepLaw, namer: Namer) -> Structs:
             words = tuple(namer.unique(f"{prefix}_{state.name}_{v}".upper()) for v in state.values)
             known[state.name] = (name, words)
             enums.append(Enum(name, words, f"values of {state.name}"))
-    macros = tuple(namer.unique(f"{prefix}_JUMP_{j.name}".upper()) for j in made.jumps)
+    fields = Namer(namer.taken | _fields(made))
+    macros = tuple(fields.unique(f"{prefix}_JUMP_{j.name}".upper()) for j in made.jumps)
+    namer.taken.update(macros)
+    tables = {t.name: namer.family(f"{prefix}_{t.name}", ("_x", "_y", "_slope")) for t in made.tables}
     names, now = _now(made)
-    locals_ = _locals(made)
-    values = Values(known, names, locals_)
+    locals_ = _locals(made, namer)
+    values = Values(known, names, locals_, tables)
     held = {u.name: f"held_{u.name}" for u in made.inputs if u.held}
     law = made.law
     states = [Member(x.name, values.type(x.type), x.size, _state_note(law.state(x.name), made)) for x in made.states]
@@ -74,6 +77,11 @@ def _now(made: StepLaw) -> tuple[dict[tuple[RefKind, str], str], tuple[Member, .
     return names, tuple(members)
 
 
+def _fields(made: StepLaw) -> set[str]:
+    """The members that bear the author's names: a macro of that name would change them."""
+    return {row.name for rows in (made.inputs, made.parameters, made.states, made.law.outputs) for row in rows}
+
+
 def _trees(made: StepLaw) -> Iterator[Node]:
     yield from made.alarms
     yield from (d.expr for d in made.definitions)
@@ -86,9 +94,9 @@ def _trees(made: StepLaw) -> Iterator[Node]:
     yield from (a.expr for a in (*made.flow, *made.sample))
 
 
-def _locals(made: StepLaw) -> dict[str, str]:
-    namer = Namer(set(LOCALS))
-    return {d.name: namer.unique(d.name) for d in made.definitions}
+def _locals(made: StepLaw, others: Namer) -> dict[str, str]:
+    namer = Namer(set(LOCALS) | others.taken)
+    return {d.name: namer.unique(d.name.replace(" ", "_")) for d in made.definitions}
 
 
 def _unit(unit: Unit) -> str:

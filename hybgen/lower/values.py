@@ -14,11 +14,13 @@ _BASES = {RefKind.INPUT: "now", RefKind.VALID: "now", RefKind.JUMPED: "now", Ref
 
 @dataclass(frozen=True, slots=True)
 class Values:
-    """Translates; `enums`: owner -> (type name, enumerators), `names`: members whose name differs, `locals`: definitions."""
+    """Translates; `enums`: owner -> (type name, enumerators), `names`: members whose name differs, `locals`: definitions,
+    `tables`: curves."""
 
     enums: Mapping[str, tuple[str, tuple[str, ...]]]
     names: Mapping[tuple[RefKind, str], str]
     locals: Mapping[str, str]
+    tables: Mapping[str, str]
 
     def type(self, type_: Type) -> str:
         """The type's name in the program."""
@@ -42,4 +44,4 @@ class Values:
                 name = self.names.get((node.kind, node.name), node.name)
                 return Field(_BASES[node.kind], name, node.index, self.type(node.type))
             case Op():
-                return Apply(node.op, tuple(self.of(a) for a in node.args), self.type(node.type), node.table)
+                return Apply(node.op, tuple(self.of(a) for a in node.args), self.type(node.type), self.tables.get(node.table, ""))

@@ -145,8 +145,8 @@ class _Builder:
             expr = normalizer.normal(d.expr)
             made.append(replace(d, expr=expr))
             if watched(expr) or any(r.name in opposites for r in refs(expr, RefKind.LOCAL)):
-                opposites[d.name] = f"not_{d.name}"
-                made.append(Definition(f"not_{d.name}", normalizer.normal(d.expr, False), d.span, f"not ({d.text})"))
+                opposites[d.name] = f"not {d.name}"
+                made.append(Definition(f"not {d.name}", normalizer.normal(d.expr, False), d.span, f"not ({d.text})"))
         return made, opposites
 
     def _jumps(self, normalizer: Normalizer, bounds: Bounds) -> tuple[StepJump, ...]:

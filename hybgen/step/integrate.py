@@ -9,10 +9,11 @@ integrated together; a rate that no flowing state acts on gives the same formula
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 
-from hybgen.expr.core import REAL, Const, Node, Op, Ref, RefKind, op, real, rebuild, refs
+from hybgen.expr.core import REAL, Const, Node, Op, Ref, RefKind, op, real, rebuild, refs, walk
+from hybgen.expr.fold import fold
 from hybgen.law.model import Assign, Law
 from hybgen.numbers.expm import discretise
 from hybgen.step.affine import ONE_NODE, Affine, Form, Key, NotAffine, Split, decided
@@ -64,10 +65,7 @@ def integrate(law: Law, translator: Translator) -> Integrated:
             if method == "exact":
                 _refuse_exact(flow, group)
             method = "rk4"
-        if not any(flow.acts[k] for k in group):
-            news.update({k: _along(flow, k) for k in group})
-        else:
-            news.update(_staged(flow, group, method, definitions))
+        news.update(_explicit(flow, group, method, definitions))
         methods.add(method)
     updates = tuple((flow.assigns[k], news[k]) for k in flow.rates)
     return Integrated(updates, tuple(definitions), "+".join(sorted(methods)) or "none")
@@ -206,21 +204,26 @@ def _sum(translator: Translator, parts: list[tuple[Fraction, Node]]) -> Node:
 
 @dataclass(frozen=True, slots=True)
 class _Stage:
-    """One evaluation of the rates of a group: at the state itself (1) or at a state on the way."""
+    """One evaluation of the rates of a group: at the state itself (1) or at a state on the way.
+
+    Names of definitions have blanks, so that no name of the author can be the same.
+    """
 
     flow: _Flow
     number: int
     group: list[Key]
     definitions: list[Definition]
+    tag: str
+    """Tells the names of one case from those of another."""
 
     def rates(self) -> dict[Key, Node]:
         """Defines the rates at this stage; references to them."""
         found: dict[Key, Node] = {}
         for key in self.group:
             expr = self._placed(self.flow.rates[key])
-            name = f"{component(*key)}_k{self.number}"
+            name = f"{component(*key)} k{self.number}{self.tag}"
             assign = self.flow.assigns[key]
-            text = f"rate of {component(*key)}, evaluation {self.number}: {assign.text}"
+            text = f"rate of {component(*key)}, evaluation {self.number}"
             self.definitions.append(Definition(name, self.flow.translator.translate(expr), assign.span, text))
             found[key] = Ref(RefKind.LOCAL, name, REAL)
         return found
@@ -232,7 +235,7 @@ class _Stage:
 
         def change(here: Node) -> Node:
             if isinstance(here, Ref) and (here.name, here.index) in self.group and here.kind is RefKind.STATE:
-                return Ref(RefKind.LOCAL, f"{component(here.name, here.index)}_at{self.number}", REAL, None, here.span)
+                return Ref(RefKind.LOCAL, f"{component(here.name, here.index)} at{self.number}{self.tag}", REAL, None, here.span)
             if isinstance(here, Ref) and here.kind is RefKind.TERM and (here.name, here.index) in self.flow.moving:
                 return self._term(here)
             return here
@@ -240,7 +243,7 @@ class _Stage:
         return rebuild(node, change)
 
     def _term(self, ref: Ref) -> Node:
-        name = f"{component(ref.name, ref.index)}_at{self.number}"
+        name = f"{component(ref.name, ref.index)} at{self.number}{self.tag}"
         if all(d.name != name for d in self.definitions):
             expr = self._placed(self.flow.terms[(ref.name, ref.index)])
             self.definitions.append(
@@ -257,21 +260,54 @@ class _Stage:
             expr = op("add", _state(key), op("mul", h, rates[key]))
             self.definitions.append(
                 Definition(
-                    f"{component(*key)}_at{number}",
+                    f"{component(*key)} at{number}{self.tag}",
                     expr,
                     self.flow.assigns[key].span,
                     f"{component(*key)} for evaluation {number}",
                 )
             )
-        return _Stage(self.flow, number, self.group, self.definitions)
+        return _Stage(self.flow, number, self.group, self.definitions, self.tag)
+
+
+def _explicit(flow: _Flow, group: list[Key], method: str, definitions: list[Definition]) -> dict[Key, Node]:
+    """New values by an explicit formula; where the rates have cases that do not move, each case for itself."""
+    if method == "euler" or not any(flow.acts[k] for k in group):
+        return {k: _along(flow, k) for k in group}
+    asked = next((c for k in group if (c := _held_choice(flow, flow.rates[k])) is not None), None)
+    if asked is None:
+        return _staged(flow, group, method, definitions)
+    branches = []
+    for value in (True, False):
+        known = decided({}, asked, value)
+        rates = {k: fold(r, known) if k in group else r for k, r in flow.rates.items()}
+        acts = {k: flow.acts[k] if k not in group or _moves(flow, rates[k]) else frozenset[Key]() for k in rates}
+        branches.append(_explicit(replace(flow, rates=rates, acts=acts), group, method, definitions))
+    yes, no = branches
+    condition = flow.translator.translate(asked)
+    return {k: yes[k] if yes[k] == no[k] else op("select", condition, yes[k], no[k]) for k in group}
+
+
+def _moves(flow: _Flow, node: Node) -> bool:
+    """Does the expression change while flowing?"""
+    return any(
+        (r.name, r.index) in (flow.rates if r.kind is RefKind.STATE else flow.moving)
+        for r in refs(node, RefKind.STATE, RefKind.TERM)
+    )
+
+
+def _held_choice(flow: _Flow, node: Node) -> Node | None:
+    """The condition of a choice in the expression that does not change while flowing."""
+    for here in walk(node):
+        if isinstance(here, Op) and here.op == "select" and not _moves(flow, here.args[0]):
+            return here.args[0]
+    return None
 
 
 def _staged(flow: _Flow, group: list[Key], method: str, definitions: list[Definition]) -> dict[Key, Node]:
     """New values by an explicit Runge-Kutta formula."""
     h = flow.h
-    first = _Stage(flow, 1, group, definitions)
-    if method == "euler":
-        return {k: _along(flow, k) for k in group}
+    taken = sum(d.name.startswith(f"{component(*group[0])} k1") for d in definitions)
+    first = _Stage(flow, 1, group, definitions, f" case{taken + 1}" if taken else "")
     one = first.rates()
     if method == "heun":
         two = first.move(2, Fraction(1), one).rates()
