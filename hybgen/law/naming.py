@@ -24,6 +24,8 @@ typeof NULL offsetof size_t ptrdiff_t max_align_t errno EOF main assert interrup
 """.split())
 _MACRO = re.compile(r"(U?INT|u?int)(_?(FAST|LEAST|fast|least))?(\d+|MAX|max|PTR|ptr)(_(MIN|MAX|C|t))?\Z|(SIZE|PTRDIFF|WCHAR|WINT|SIG_ATOMIC)_(MIN|MAX)\Z")
 _OURS = frozenset({"self", "last_jump", "jumps", "none"})
+_LOCALS = frozenset("p u y now status jump taken used answer text steps a b x i low high down".split())
+"""Local names of the generated code: a law of that name would be hidden by them."""
 
 
 def check_name(key: Scalar, what: str, findings: Findings, word: bool = False) -> bool:
@@ -44,6 +46,23 @@ def check_name(key: Scalar, what: str, findings: Findings, word: bool = False) -
         findings.error("HG505", key.span, f"'{name}' can't name {what}: it means something in expressions", hint="choose another name")
         return False
     return free_in_c(key, what, findings)
+
+
+def check_law_name(key: Scalar, findings: Findings) -> bool:
+    """Is this a good name for a law? It becomes the prefix of every symbol, and is itself a type in C."""
+    if not check_name(key, "a law", findings, word=True) or not free_in_c(key, "a law", findings):
+        return False
+    if key.text in _LOCALS or key.text.startswith("new_"):
+        findings.error("HG502", key.span, f"'{key.text}' can't name a law: the generated code uses it",
+                       hint="write a longer name")
+        return False
+    return True
+
+
+def macro_of(law: str, name: str) -> bool:
+    """Is the name a macro of the law's header, whatever the law declares?"""
+    prefix = law.upper()
+    return name.startswith(f"{prefix}_STATUS_") or name in (f"{prefix}_H", f"{prefix}_NO_NAMES")
 
 
 def free_in_c(key: Scalar, what: str, findings: Findings) -> bool:

@@ -21,7 +21,7 @@ from hybgen.law.context import Context
 from hybgen.law.declarations import read_input, read_parameter, read_state, read_table
 from hybgen.law.document import MOST_BYTES, Mapping, Scalar, Sequence, read_document
 from hybgen.law.model import Input, Law, Output, Parameter, State, StateKind
-from hybgen.law.naming import LONGEST, check_name, free_in_c
+from hybgen.law.naming import LONGEST, check_law_name, check_name, free_in_c, macro_of
 from hybgen.law.promises import read_assumptions, read_claim
 
 MOST_NAMES = 1000
@@ -113,8 +113,8 @@ class _Reader:
 
     def header(self) -> None:
         name = self.document.get("law")
-        if isinstance(name, Scalar) and check_name(name, "a law", self.context.findings, word=True):
-            free_in_c(name, "a law", self.context.findings)
+        if isinstance(name, Scalar):
+            check_law_name(name, self.context.findings)
         if self.word("prefer", "jump") == "flow" and self.group("flow").get("set") is None:
             node = self.document.key("prefer")
             assert node is not None
@@ -123,12 +123,16 @@ class _Reader:
     def unique_names(self) -> None:
         """Names are shared by inputs, parameters, states, terms, tables and outputs."""
         seen: dict[str, Scalar] = {}
+        law = self.document.get("law")
         for section in ("inputs", "parameters", "states", "terms", "tables", "outputs"):
             for key, _ in self.group(section).entries:
                 if (first := seen.get(key.text)) is not None:
                     self.context.findings.error("HG503", key.span, f"the name '{key.text[:LONGEST]}' is used twice",
                                                 hint="give one of them another name", related=((first.span, "first used here"),))
                 seen.setdefault(key.text, key)
+                if isinstance(law, Scalar) and macro_of(law.text, key.text):
+                    self.context.findings.error("HG502", key.span, f"'{key.text}' can't be a name here: the generated header uses it",
+                                                hint="choose another name")
         if len(seen) + len(self.group("jumps").entries) > MOST_NAMES:
             self.context.error("HG139", self.document.span, f"a law has at most {MOST_NAMES} names")
 

@@ -204,7 +204,7 @@ class _Builder:
     def _assignment(self, a: StepAssign) -> Assignment:
         state = next(x for x in self.made.states if x.name == a.state)
         target = Field("self", a.state, a.index, self.parts.values.type(state.type))
-        name = Namer(set(LOCALS) | set(self.parts.values.locals.values())).unique(f"new_{component(a.state, a.index)}")
+        name = self._new(a.state, a.index)
 
         def store(value: Value) -> Statements:
             if value == target:
@@ -216,6 +216,10 @@ class _Builder:
             return (Let(name, value.type, value), *self._guarded(target, Local(name, value.type), a.clamp))
 
         return Assignment((a.state, a.index), a.expr, self._note(a.span, f"{component(a.state, a.index)}: {a.text}"), store, name)
+
+    def _new(self, name: str, index: int | None) -> str:
+        """A local for a new value until it is stored."""
+        return Namer(set(LOCALS) | set(self.parts.values.locals.values())).unique(f"new_{component(name, index)}")
 
     def _guarded(self, target: Field, value: Local, clamp: tuple[Fraction | int | bool, Fraction | int | bool] | None) -> Statements:
         finite = Apply("finite", (value,), "bool")
@@ -240,7 +244,7 @@ class _Builder:
 
     def _giver(self, o: StepOutput) -> Callable[[Value], Statements]:
         target = Field("y", o.name, o.index, self.parts.values.type(self.made.law.outputs[self._position(o)].type))
-        name = Namer(set(LOCALS) | set(self.parts.values.locals.values())).unique(f"new_{component(o.name, o.index)}")
+        name = self._new(o.name, o.index)
 
         def store(value: Value) -> Statements:
             if not o.guarded or isinstance(value, Constant | Field):
