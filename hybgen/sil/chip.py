@@ -25,9 +25,9 @@ _STRUCTS = ("state", "parameters", "inputs", "outputs")
 
 _HARNESS = """#include "{name}.c"
 
-const uint32_t {name}_places[] = {{ {places} }};
+const uint32_t hybgen_{name}_places[] = {{ {places} }};
 
-void {name}_lanes({name} *self, const {name}_parameters *p, const {name}_inputs *u, {name}_outputs *y, uint32_t *status,
+void hybgen_{name}_lanes({name} *self, const {name}_parameters *p, const {name}_inputs *u, {name}_outputs *y, uint32_t *status,
                   size_t lanes, size_t steps)
 {{
     size_t i;
@@ -91,15 +91,15 @@ def load_many(laws: Sequence[StepLaw], flags: Sequence[str] = FLAGS, files: Mapp
     ffi = cffi.FFI()
     for made, values in zip(laws, expected, strict=True):
         name = made.law.name
-        ffi.cdef(f"void {name}_lanes(void *, const void *, const void *, void *, uint32_t *, size_t, size_t);"
-                 f"extern const uint32_t {name}_places[{len(values)}];")
+        ffi.cdef(f"void hybgen_{name}_lanes(void *, const void *, const void *, void *, uint32_t *, size_t, size_t);"
+                 f"extern const uint32_t hybgen_{name}_places[{len(values)}];")
     with tempfile.TemporaryDirectory(prefix="hybgen-") as place:
         library = ffi.dlopen(str(shared_object(texts, "all.c", Path(place), flags)))
     found = []
     for made, values in zip(laws, expected, strict=True):
         name = made.law.name
-        assert list(getattr(library, f"{name}_places")) == values, f"the structs of {name} lie differently in C"
-        found.append(Library(getattr(library, f"{name}_lanes"), ffi.from_buffer))
+        assert list(getattr(library, f"hybgen_{name}_places")) == values, f"the structs of {name} lie differently in C"
+        found.append(Library(getattr(library, f"hybgen_{name}_lanes"), ffi.from_buffer))
     return found
 
 
