@@ -31,7 +31,19 @@ _HOMES = {
     "load": "hybgen.law",
 }
 
-__all__ = ["Chip", "Finding", "Law", "LawError", "Reference", "Report", "__version__", "check", "compile", "generate", "load"]
+__all__ = [
+    "Chip",
+    "Finding",
+    "Law",
+    "LawError",
+    "Reference",
+    "Report",
+    "__version__",
+    "check",
+    "compile",
+    "generate",
+    "load",
+]
 
 
 def __getattr__(name: str) -> Any:

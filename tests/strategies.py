@@ -77,25 +77,54 @@ class Author:
         if depth <= 0 or not (n.ints or n.signs):
             return self.pick([*n.ints, *n.signs, "1", "3"])
         a, b = self.whole(depth - 1), self.whole(depth - 1)
-        return self.pick([f"({a} + {b})", f"({a} - {b})", f"({a} * 2)", f"min({a}, {b})", f"max({a}, {b})", f"abs({a})", f"sign({a})",
-                          f"clamp({a}, -5, 9)", f"(-{a})", f"choose({self.boolean(0)}, {a}, {b})"])
+        return self.pick(
+            [
+                f"({a} + {b})",
+                f"({a} - {b})",
+                f"({a} * 2)",
+                f"min({a}, {b})",
+                f"max({a}, {b})",
+                f"abs({a})",
+                f"sign({a})",
+                f"clamp({a}, -5, 9)",
+                f"(-{a})",
+                f"choose({self.boolean(0)}, {a}, {b})",
+            ]
+        )
 
     def boolean(self, depth: int) -> str:
         n = self.names
         if depth <= 0 or self.some(0.4):
             return self.atom()
         a, b = self.boolean(depth - 1), self.boolean(depth - 1)
-        return self.pick([f"({a} and {b})", f"({a} or {b})", f"(not {a})", f"({a} and {b} or {a})", f"choose({a}, {b}, {self.atom()})",
-                          f"(({a}) == ({b}))" if not n.valid else f"({a} and {b})"])
+        return self.pick(
+            [
+                f"({a} and {b})",
+                f"({a} or {b})",
+                f"(not {a})",
+                f"({a} and {b} or {a})",
+                f"choose({a}, {b}, {self.atom()})",
+                f"(({a}) == ({b}))" if not n.valid else f"({a} and {b})",
+            ]
+        )
 
     def atom(self) -> str:
         n = self.names
-        options = [f"{self.real(1)} {self.pick(['<', '<=', '>', '>='])} {self.real(0)}",
-                   f"{self.pick(CONSTANTS)} {self.pick(['<', '>='])} {self.real(1)}"]
+        options = [
+            f"{self.real(1)} {self.pick(['<', '<=', '>', '>='])} {self.real(0)}",
+            f"{self.pick(CONSTANTS)} {self.pick(['<', '>='])} {self.real(1)}",
+        ]
         options += n.bools + [f"not {b}" for b in n.bools[:1]] + [f"valid({v})" for v in n.valid]
         for state, values in n.logic.items():
-            options += [f"{state} == {self.pick(values)}", f"{state} != {self.pick(values)}", f"{state} == {self.pick(values)}"]
-        options += [f"{t} {self.pick(['>=', '<', '>', '<='])} {self.pick(['0.3 s', '500 ms', '1 s', *n.times])}" for t in n.timers]
+            options += [
+                f"{state} == {self.pick(values)}",
+                f"{state} != {self.pick(values)}",
+                f"{state} == {self.pick(values)}",
+            ]
+        options += [
+            f"{t} {self.pick(['>=', '<', '>', '<='])} {self.pick(['0.3 s', '500 ms', '1 s', *n.times])}"
+            for t in n.timers
+        ]
         options += [f"{i} {self.pick(['>=', '<', '==', '!='])} {self.pick(['1', '2', '0'])}" for i in n.ints + n.signs]
         if n.reals and self.some(0.2):
             options.append(f"0.2 <= {self.pick(n.reals)} < 0.8")
@@ -131,15 +160,21 @@ class Author:
     def inputs(self, n: Names) -> None:
         rows = []
         for i in range(self.dice.randint(0, 3)):
-            policy = self.pick(["", ", invalid: hold", ", invalid: clamp", ", invalid: 0.5", ", invalid: hold, initial: 0.4"])
-            rows.append(f"  u{i}: {{range: [{self.pick(['0', '-1', '0.1'])}, {self.pick(['1', '2.3', '10'])}]{policy}}}")
+            policy = self.pick(
+                ["", ", invalid: hold", ", invalid: clamp", ", invalid: 0.5", ", invalid: hold, initial: 0.4"]
+            )
+            rows.append(
+                f"  u{i}: {{range: [{self.pick(['0', '-1', '0.1'])}, {self.pick(['1', '2.3', '10'])}]{policy}}}"
+            )
             n.reals.append(f"u{i}")
             n.valid.append(f"u{i}")
         if self.some(0.6):
             rows.append("  on_board: {type: bool}")
             n.bools.append("on_board")
         if self.some(0.3):
-            rows.append(f"  ticks: {{type: integer, range: [-3, 20]{self.pick(['', ', invalid: clamp', ', invalid: 2'])}}}")
+            rows.append(
+                f"  ticks: {{type: integer, range: [-3, 20]{self.pick(['', ', invalid: clamp', ', invalid: 2'])}}}"
+            )
             n.ints.append("ticks")
             n.valid.append("ticks")
         if self.some(0.25):
@@ -191,7 +226,9 @@ class Author:
             rows.append("  latch: {type: bool}")
             n.bools.append("latch")
         if self.some(0.6):
-            rows.append(f"  since: {{timer: {self.pick(['2 s', '1.5 s', '60 s'])}, initial: {self.pick(['0 s', '1.25 s'])}}}")
+            rows.append(
+                f"  since: {{timer: {self.pick(['2 s', '1.5 s', '60 s'])}, initial: {self.pick(['0 s', '1.25 s'])}}}"
+            )
             n.timers.append("since")
         if self.some(0.3):
             rows.append("  tries: {count: 4}")
@@ -234,7 +271,11 @@ class Author:
         if "mode" in self.names.logic and self.some(0.7):
             values = self.names.logic["mode"]
             value = self.pick(values)
-            rows.append(f'mode: "{value}"' if self.some(0.8) else f'mode: "choose({self.boolean(0)}, {value}, {self.pick(values)})"')
+            rows.append(
+                f'mode: "{value}"'
+                if self.some(0.8)
+                else f'mode: "choose({self.boolean(0)}, {value}, {self.pick(values)})"'
+            )
         if "pump" in self.names.logic and self.some(0.4):
             rows.append(f"pump: {self.pick(['off', 'on'])}")
         if "side" in self.names.signs and self.some(0.4):
@@ -247,7 +288,9 @@ class Author:
             rows.append(f'tries: "{self.pick(["0", "tries + 1", self.whole(1)])}"')
         for i in range(3):
             if self.declared(f"x{i}") and self.some(0.4):
-                rows.append(f'x{i}: "{self.pick([self.real(2), "x0", "x1"]) if self.declared("x0") and self.declared("x1") else self.real(2)}"')
+                rows.append(
+                    f'x{i}: "{self.pick([self.real(2), "x0", "x1"]) if self.declared("x0") and self.declared("x1") else self.real(2)}"'
+                )
         if self.declared("w") and self.some(0.4):
             rows.append('w: ["w[1]", "w[0]"]' if self.some(0.6) else 'w: "0.5 * w"')
         return rows
@@ -284,7 +327,9 @@ class Author:
                     rows += [f"      - when: {state} == {value}", f'        is: "({self.real(1)}) / (1 s)"']
                 return [*rows, "      - otherwise: 0"]
             case 4 if self.declared("x0") and self.declared("x1"):
-                return [f'    {name}: "(0.5 * x0 - x1 + {self.pick(["u0", "1"]) if self.declared("u0") else "1"}) / (3 s)"']
+                return [
+                    f'    {name}: "(0.5 * x0 - x1 + {self.pick(["u0", "1"]) if self.declared("u0") else "1"}) / (3 s)"'
+                ]
             case _:
                 return [f'    {name}: "choose({self.boolean(1)}, 1.0 * {self.real(1)}, 0) / (1 s)"']
 
@@ -294,7 +339,9 @@ class Author:
             rows.append(f'  set: "{self.boolean(1)}"')
         rates = [r for i in range(3) if self.declared(f"x{i}") and self.some(0.6) for r in self.rate(f"x{i}")]
         if self.declared("w") and self.some(0.5):
-            rates.append(f'    w: {self.pick(["[" + chr(34) + "w[1] / (1 s)" + chr(34) + ", " + chr(34) + "(-w[0] - 0.2 * w[1]) / (1 s)" + chr(34) + "]"])}')
+            rates.append(
+                f"    w: {self.pick(['[' + chr(34) + 'w[1] / (1 s)' + chr(34) + ', ' + chr(34) + '(-w[0] - 0.2 * w[1]) / (1 s)' + chr(34) + ']'])}"
+            )
         if rates:
             rows += ["  map:", *rates]
         if rates and self.some(0.7):
@@ -319,7 +366,9 @@ class Author:
         return real
 
     def outputs(self) -> None:
-        rows = [f'  y0: {{value: "{self.late(self.real(2))}"{self.pick(["", ", range: [-1, 1], limit: true", ", range: [0.5, 4]"])}}}']
+        rows = [
+            f'  y0: {{value: "{self.late(self.real(2))}"{self.pick(["", ", range: [-1, 1], limit: true", ", range: [0.5, 4]"])}}}'
+        ]
         rows.append(f'  y1: {{type: bool, value: "{self.boolean(2)}"}}')
         if self.names.logic and self.some(0.5):
             rows.append(f"  y2: {{value: {self.pick(list(self.names.logic))}}}")

@@ -62,13 +62,33 @@ NAMES = {"clamp": ("x", "lo", "hi"), "iclamp": ("x", "lo", "hi"), "select": ("c"
 
 # ---------------------------------------------------------------------------------------------------- operands
 
+
 def specials(fmt: Format) -> list[float]:
     """Values where arithmetic changes its behaviour."""
     real = fmt.dtype.type
     tiny, top = 2.0**fmt.least, float(fmt.max)
     normal, whole = float(np.finfo(fmt.dtype).tiny), float(fmt.whole)
     near = [float(np.nextafter(real(x), real(to))) for x in (1, 2, whole, 2.0**31, 0.5) for to in (0, math.inf)]
-    positive = [0.0, tiny, 3 * tiny, normal - tiny, normal, 0.1, 0.5, 1.0, 1.5, 2.0, 2.5, 3.0, 7.0, whole, 2.0**31, 1e6, top, *near]
+    positive = [
+        0.0,
+        tiny,
+        3 * tiny,
+        normal - tiny,
+        normal,
+        0.1,
+        0.5,
+        1.0,
+        1.5,
+        2.0,
+        2.5,
+        3.0,
+        7.0,
+        whole,
+        2.0**31,
+        1e6,
+        top,
+        *near,
+    ]
     return [*positive, *(-x for x in positive), math.inf, -math.inf, math.nan]
 
 
@@ -96,6 +116,7 @@ def lanes(number: str) -> Lanes:
 
 
 # ---------------------------------------------------------------------------------------------------- expressions
+
 
 def kinds_of(row: Row) -> Iterator[tuple[str, ...]]:
     """The kinds of operands with which a row of the table can be used."""
@@ -146,8 +167,12 @@ class Bench:
 
     def nested(self) -> Iterator[Op]:
         """Each row with each row as its first, second, third operand: what parentheses can break."""
-        inner = [self.apply(row, tuple(self.operand(k, i, True) for i, k in enumerate(kinds)))
-                 for row in OPS.values() for kinds in kinds_of(row) if kinds[0] != "enum" and kinds[-1] != "enum" and row.name != "to_steps"]
+        inner = [
+            self.apply(row, tuple(self.operand(k, i, True) for i, k in enumerate(kinds)))
+            for row in OPS.values()
+            for kinds in kinds_of(row)
+            if kinds[0] != "enum" and kinds[-1] != "enum" and row.name != "to_steps"
+        ]
         for row in OPS.values():
             for kinds in kinds_of(row):
                 for place, kind in enumerate(kinds):
@@ -161,8 +186,13 @@ class Bench:
         """What the generated C makes of the expressions, for all lanes."""
         law, span = self.made.law, self.made.law.outputs[0].span
         names = [f"y{i}" for i in range(len(nodes))]
-        outputs = tuple(Output(n, e.type, None, ONE, (e,), None, None, False, "", span, n) for n, e in zip(names, nodes, strict=True))
-        rows = tuple(StepOutput(n, None, e, False, Fraction(0), None, span, n) for n, e in zip(names, nodes, strict=True))
+        outputs = tuple(
+            Output(n, e.type, None, ONE, (e,), None, None, False, "", span, n)
+            for n, e in zip(names, nodes, strict=True)
+        )
+        rows = tuple(
+            StepOutput(n, None, e, False, Fraction(0), None, span, n) for n, e in zip(names, nodes, strict=True)
+        )
         made = replace(self.made, law=replace(law, outputs=outputs), outputs=rows)
         count = len(values["mode"])
         chip = Chip(made, lanes=count, flags=("-std=c99", "-O1", "-ffp-contract=off", "-fPIC", "-shared"))
@@ -173,6 +203,7 @@ class Bench:
 
 
 # ---------------------------------------------------------------------------------------------------- what they mean
+
 
 def special_meaning(name: str, fmt: Format, tables: dict[str, StepTable], table: str) -> Callable[..., Any] | None:
     """Rows whose column `means` is prose: the same in Python, from the contract, number by number."""
@@ -199,8 +230,13 @@ def special_meaning(name: str, fmt: Format, tables: dict[str, StepTable], table:
         return ys[i] + slopes[i] * (x - xs[i])
 
     return {
-        "floor": floor, "lookup": look, "to_steps": to_steps, "finite": lambda a: -largest <= a <= largest,
-        "to_real": lambda a: real(float(fmt.round(Fraction(int(a))))), "and": lambda *a: all(a), "or": lambda *a: any(a),
+        "floor": floor,
+        "lookup": look,
+        "to_steps": to_steps,
+        "finite": lambda a: -largest <= a <= largest,
+        "to_real": lambda a: real(float(fmt.round(Fraction(int(a))))),
+        "and": lambda *a: all(a),
+        "or": lambda *a: any(a),
     }.get(name)
 
 
@@ -260,6 +296,7 @@ def in_numpy(node: Node, values: Lanes, fmt: Format, tables: dict[str, StepTable
 
 # ---------------------------------------------------------------------------------------------------- the tests
 
+
 @pytest.mark.parametrize("number", sorted(FORMATS))
 def test_every_operation_means_in_c_and_numpy_what_the_table_says(number: str) -> None:
     fmt, bench, values = FORMATS[number], Bench.of(number), lanes(number)
@@ -291,7 +328,9 @@ def test_nested_operations_keep_the_order_of_the_tree(number: str) -> None:
 @pytest.mark.parametrize("number", sorted(FORMATS))
 def test_literals_are_the_bits_of_their_constants(number: str) -> None:
     fmt = FORMATS[number]
-    pool = np.concatenate([lanes(number)["real_b"][::11], np.array(specials(fmt), fmt.dtype), np.array([0.1, 1e-4, 1e7, 0.3], fmt.dtype)])
+    pool = np.concatenate(
+        [lanes(number)["real_b"][::11], np.array(specials(fmt), fmt.dtype), np.array([0.1, 1e-4, 1e7, 0.3], fmt.dtype)]
+    )
     constants = [Fraction(float(x)) for x in pool if np.isfinite(x)]
     values = {n: a[:1] for n, a in lanes(number).items()}
     found = Bench.of(number).run([Const(c, REAL) for c in constants], values)

@@ -60,4 +60,3 @@ def value_name(state: State, value: Const) -> str:
 def logic_states(law: Law) -> list[State]:
     """The logic variables."""
     return [s for s in law.states if s.kind is StateKind.LOGIC]
-

@@ -113,8 +113,14 @@ def sil_command(options: argparse.Namespace, law: Law, console: Console) -> int:
     try:
         if options.inputs:
             return _replay(options, law, console)
-        report = lockstep.run(law, lanes=options.lanes, steps=options.steps, step=options.step, number=options.number,
-                              progress=lambda done, total: console.progress("lock-step", done, total))
+        report = lockstep.run(
+            law,
+            lanes=options.lanes,
+            steps=options.steps,
+            step=options.step,
+            number=options.number,
+            progress=lambda done, total: console.progress("lock-step", done, total),
+        )
     except (NoCompiler, CompilerRefused) as error:
         _refused(law, str(error), console)
         return FINDINGS if isinstance(error, CompilerRefused) else USAGE
@@ -134,16 +140,20 @@ def _difference(report: Any, options: argparse.Namespace, law: Law, console: Con
         return OK
     path = Path(options.replay or f"{law.name}_replay.csv")
     write(path, difference.replay)
-    console.say(f"{difference.where}: error HG601: '{difference.field}' differs at step {difference.step}, lane {difference.lane} "
-                f"({difference.campaign})\n    reference {difference.reference}\n    C         {difference.c}\n"
-                f"    hint: hybgen sil {options.law} --inputs {path} shows it again")
+    console.say(
+        f"{difference.where}: error HG601: '{difference.field}' differs at step {difference.step}, lane {difference.lane} "
+        f"({difference.campaign})\n    reference {difference.reference}\n    C         {difference.c}\n"
+        f"    hint: hybgen sil {options.law} --inputs {path} shows it again"
+    )
     return FINDINGS
 
 
 def tell(report: Any, console: Console) -> None:
     """The outcome of lock-step for people."""
-    console.say(f"{report.law} on {report.target}: {'equal in every bit' if report.equal else 'DIFFERENT'}, {report.steps} steps "
-                f"in {report.lanes} lane{'s' if report.lanes != 1 else ''}")
+    console.say(
+        f"{report.law} on {report.target}: {'equal in every bit' if report.equal else 'DIFFERENT'}, {report.steps} steps "
+        f"in {report.lanes} lane{'s' if report.lanes != 1 else ''}"
+    )
     console.say(f"conditions seen true and false: {report.covered} of {report.conditions}")
     for text in report.open_conditions:
         console.say(f"    not covered: {text}")
@@ -212,20 +222,36 @@ def explain_command(options: argparse.Namespace) -> int:
     if options.code is None:
         for code in sorted(CODES.values(), key=lambda c: c.code):
             console.say(f"{code.code}  {code.title}")
-        console.data([{"code": c.code, "property": c.property, "severity": c.severity, "title": c.title}
-                      for c in sorted(CODES.values(), key=lambda c: c.code)])
+        console.data(
+            [
+                {"code": c.code, "property": c.property, "severity": c.severity, "title": c.title}
+                for c in sorted(CODES.values(), key=lambda c: c.code)
+            ]
+        )
         return OK
     found = CODES.get(options.code.upper())
     if found is None:
         close = nearest(options.code.upper(), CODES)
-        print(f"hybgen: there is no code '{options.code}'" + (f"; did you mean {close}?" if close else ""), file=sys.stderr)
+        print(
+            f"hybgen: there is no code '{options.code}'" + (f"; did you mean {close}?" if close else ""),
+            file=sys.stderr,
+        )
         return USAGE
     console.say(f"{found.code}: {found.title} ({found.property}, {found.severity})\n\n{found.meaning}")
     for word, example in (("bad ", found.bad), ("good", found.good)):
         if example not in ("", "—", "…"):
             console.say(f"\n{word}: " + example.replace("\\n", "\n      "))
-    console.data({"code": found.code, "property": found.property, "severity": found.severity, "title": found.title,
-                  "meaning": found.meaning, "bad": found.bad, "good": found.good})
+    console.data(
+        {
+            "code": found.code,
+            "property": found.property,
+            "severity": found.severity,
+            "title": found.title,
+            "meaning": found.meaning,
+            "bad": found.bad,
+            "good": found.good,
+        }
+    )
     return OK
 
 
@@ -253,9 +279,13 @@ def completion_command(options: argparse.Namespace) -> int:
 
 
 COMMANDS: dict[str, Callable[[argparse.Namespace], int]] = {
-    "check": law_command(check_command), "generate": law_command(generate_command), "sil": law_command(sil_command),
-    "show": law_command(show_command), "preflight": law_command(preflight_command), "new": new_command,
-    "explain": explain_command, "schema": schema_command, "completion": completion_command,
+    "check": law_command(check_command),
+    "generate": law_command(generate_command),
+    "sil": law_command(sil_command),
+    "show": law_command(show_command),
+    "preflight": law_command(preflight_command),
+    "new": new_command,
+    "explain": explain_command,
+    "schema": schema_command,
+    "completion": completion_command,
 }
-
-

@@ -35,6 +35,9 @@ def main(arguments: Sequence[str] | None = None) -> int:
     except Exception as fault:
         if getattr(chosen, "debug", False):
             raise
-        print(f"hybgen: HG901 a fault in hybgen: {type(fault).__name__}: {fault}\n"
-              "        run again with --debug and report it, with the law if you can", file=sys.stderr)
+        print(
+            f"hybgen: HG901 a fault in hybgen: {type(fault).__name__}: {fault}\n"
+            "        run again with --debug and report it, with the law if you can",
+            file=sys.stderr,
+        )
         return FAULT

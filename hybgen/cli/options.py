@@ -9,14 +9,17 @@ from hybgen.version import VERSION
 
 SHAPES = ("two-point", "modes", "pi", "empty")
 STAGES = ("law", "step", "program", "c")
-_EPILOG = ("Exit: 0 nothing wrong, 1 findings, 2 wrong usage or unreadable file, 3 a fault in hybgen. "
-           "Simulation is not a safety case.")
+_EPILOG = (
+    "Exit: 0 nothing wrong, 1 findings, 2 wrong usage or unreadable file, 3 a fault in hybgen. "
+    "Simulation is not a safety case."
+)
 
 
 def parser() -> argparse.ArgumentParser:
     """The command line."""
-    top = argparse.ArgumentParser(prog="hybgen", description="Hybrid feedback laws: check, generate C, verify bit for bit.",
-                                  epilog=_EPILOG)
+    top = argparse.ArgumentParser(
+        prog="hybgen", description="Hybrid feedback laws: check, generate C, verify bit for bit.", epilog=_EPILOG
+    )
     top.add_argument("--version", action="version", version=f"hybgen {VERSION}")
     commands = top.add_subparsers(dest="command", required=True, metavar="COMMAND")
     _law(commands, "check", "check a law: language, units, names, reachability, memory kept over jumps")
@@ -27,7 +30,9 @@ def parser() -> argparse.ArgumentParser:
     sil.add_argument("--lanes", type=_count, default=1024, metavar="N", help="runs side by side (default 1024)")
     sil.add_argument("--steps", type=_count, default=2000, metavar="N", help="steps of each run (default 2000)")
     sil.add_argument("--inputs", metavar="FILE", help="replay a recorded log (CSV) instead")
-    sil.add_argument("--replay", metavar="FILE", help="where a difference is written as a log (default NAME_replay.csv)")
+    sil.add_argument(
+        "--replay", metavar="FILE", help="where a difference is written as a log (default NAME_replay.csv)"
+    )
     show = _law(commands, "show", "print what a stage made of a law")
     show.add_argument("--stage", default="step", choices=STAGES, help="default: step")
     preflight = _law(commands, "preflight", "check, generate, compile, compare; evidence into a folder")
@@ -53,10 +58,17 @@ def _common(command: argparse.ArgumentParser) -> argparse.ArgumentParser:
     return command
 
 
-def _law(commands: argparse._SubParsersAction[argparse.ArgumentParser], name: str, about: str) -> argparse.ArgumentParser:
+def _law(
+    commands: argparse._SubParsersAction[argparse.ArgumentParser], name: str, about: str
+) -> argparse.ArgumentParser:
     command = _common(commands.add_parser(name, help=about))
     command.add_argument("law", metavar="LAW", help="the law file")
-    command.add_argument("--fail-on", choices=("error", "warning", "open"), default="error", help="least finding that fails (default error)")
+    command.add_argument(
+        "--fail-on",
+        choices=("error", "warning", "open"),
+        default="error",
+        help="least finding that fails (default error)",
+    )
     command.add_argument("--step", type=_time, metavar="TIME", help="another step, such as '50 ms'")
     command.add_argument("--number", choices=("float32", "float64"), help="another number format")
     return command

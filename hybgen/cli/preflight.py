@@ -24,8 +24,10 @@ if TYPE_CHECKING:
     from hybgen.law import Law
 
 Stage = Callable[[str, bool, str], bool]
-CAUTION = ("Simulation is not a safety case. Local codes, functional-safety standards and a qualified review decide whether "
-           "this code may control a machine.")
+CAUTION = (
+    "Simulation is not a safety case. Local codes, functional-safety standards and a qualified review decide whether "
+    "this code may control a machine."
+)
 
 
 def preflight(options: argparse.Namespace, law: Law, console: Console) -> int:
@@ -53,9 +55,16 @@ def preflight(options: argparse.Namespace, law: Law, console: Console) -> int:
     evidence = _evidence(law, report, files, sil, stages, passed)
     write_all(folder, evidence)
     console.say(f"{law.name}: {'passed' if passed else 'NOT passed'}; evidence in {folder}\n{CAUTION}")
-    console.data({"law": law.name, "ok": passed, "stages": [{"stage": n, "passed": p, "text": t} for n, p, t in stages],
-                  "findings": [f.to_json() for f in report.findings], "sil": sil.to_json() if sil else None,
-                  "evidence": str(folder)})
+    console.data(
+        {
+            "law": law.name,
+            "ok": passed,
+            "stages": [{"stage": n, "passed": p, "text": t} for n, p, t in stages],
+            "findings": [f.to_json() for f in report.findings],
+            "sil": sil.to_json() if sil else None,
+            "evidence": str(folder),
+        }
+    )
     return OK if passed else FINDINGS
 
 
@@ -68,19 +77,31 @@ def _builds(law: Law, files: Mapping[str, str], stage: Stage) -> bool:
 
 
 def _sil(options: argparse.Namespace, law: Law, stage: Stage, console: Console) -> SilReport:
-    report = lockstep.run(law, step=options.step, number=options.number,
-                          progress=lambda done, total: console.progress("lock-step", done, total))
+    report = lockstep.run(
+        law,
+        step=options.step,
+        number=options.number,
+        progress=lambda done, total: console.progress("lock-step", done, total),
+    )
     difference = report.first_difference
     text = f"equal in every bit over {report.steps} steps, {report.covered} of {report.conditions} conditions seen true and false"
     if difference is not None:
-        text = (f"'{difference.field}' differs at step {difference.step} ({difference.where}): reference {difference.reference}, "
-                f"C {difference.c}")
+        text = (
+            f"'{difference.field}' differs at step {difference.step} ({difference.where}): reference {difference.reference}, "
+            f"C {difference.c}"
+        )
     stage("sil", report.equal, text)
     return report
 
 
-def _evidence(law: Law, report: Report, files: Mapping[str, str], sil: SilReport | None, stages: list[tuple[str, bool, str]],
-              passed: bool) -> dict[str, str]:
+def _evidence(
+    law: Law,
+    report: Report,
+    files: Mapping[str, str],
+    sil: SilReport | None,
+    stages: list[tuple[str, bool, str]],
+    passed: bool,
+) -> dict[str, str]:
     """The files of the evidence folder; no clock, host or path in them."""
     made = dict(files)
     made["findings.json"] = _json(report.to_json())
@@ -96,19 +117,40 @@ def _json(value: object) -> str:
     return json.dumps(value, indent=2, ensure_ascii=False) + "\n"
 
 
-def _summary(law: Law, report: Report, files: Mapping[str, str], sil: SilReport | None, stages: list[tuple[str, bool, str]],
-             passed: bool) -> list[str]:
-    lines = [f"# Preflight of {law.name}: {'passed' if passed else 'NOT passed'}", "", law.about, "",
-             f"hybgen {VERSION}; law file {law.file}, SHA-256 {law.digest}", "", f"> {CAUTION}", "", "## Stages", ""]
+def _summary(
+    law: Law,
+    report: Report,
+    files: Mapping[str, str],
+    sil: SilReport | None,
+    stages: list[tuple[str, bool, str]],
+    passed: bool,
+) -> list[str]:
+    lines = [
+        f"# Preflight of {law.name}: {'passed' if passed else 'NOT passed'}",
+        "",
+        law.about,
+        "",
+        f"hybgen {VERSION}; law file {law.file}, SHA-256 {law.digest}",
+        "",
+        f"> {CAUTION}",
+        "",
+        "## Stages",
+        "",
+    ]
     lines += [f"- {'passed' if p else 'FAILED'}: {n}: {t}" for n, p, t in stages]
     lines += ["", "## Findings", ""]
-    lines += [f"- {f.severity} {f.code} ({f.property}, {f.verdict}) {f.where.place}: {f.message}" for f in report.findings
-              if f.verdict is not Verdict.OPEN] or ["- none"]
+    lines += [
+        f"- {f.severity} {f.code} ({f.property}, {f.verdict}) {f.where.place}: {f.message}"
+        for f in report.findings
+        if f.verdict is not Verdict.OPEN
+    ] or ["- none"]
     lines += ["", "## Not decided by this version", ""]
     lines += [f"- {f.property}: {f.message}" for f in report.findings if f.verdict is Verdict.OPEN]
     if sil is not None:
         lines += ["", "## Conditions that the stimulus did not show both ways", ""]
         lines += [f"- {text}" for text in sil.open_conditions] or ["- none"]
         lines += ["", "## Jumps taken", ""] + [f"- {name}: {count}" for name, count in sil.jumps.items()]
-    lines += ["", "## Files", ""] + [f"- {name}: SHA-256 {hashlib.sha256(text.encode()).hexdigest()}" for name, text in files.items()]
+    lines += ["", "## Files", ""] + [
+        f"- {name}: SHA-256 {hashlib.sha256(text.encode()).hexdigest()}" for name, text in files.items()
+    ]
     return lines

@@ -5,7 +5,6 @@ from __future__ import annotations
 from collections.abc import Iterator
 from fractions import Fraction
 
-
 from hybgen.law.model import Assign, Law
 
 
@@ -73,5 +72,3 @@ def _unit(unit: object) -> str:
 
 def _range(low: Fraction | None, high: Fraction | None) -> str:
     return "" if low is None or high is None else f" in {float(low):.9g} .. {float(high):.9g}"
-
-

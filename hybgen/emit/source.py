@@ -40,8 +40,14 @@ def _environment() -> Any:
     import jinja2  # only where text is made
 
     loader = jinja2.FileSystemLoader(str(templates_folder()))
-    return jinja2.Environment(loader=loader, trim_blocks=True, lstrip_blocks=True, keep_trailing_newline=True,
-                              undefined=jinja2.StrictUndefined, autoescape=False)
+    return jinja2.Environment(
+        loader=loader,
+        trim_blocks=True,
+        lstrip_blocks=True,
+        keep_trailing_newline=True,
+        undefined=jinja2.StrictUndefined,
+        autoescape=False,
+    )
 
 
 def emit(program: Program) -> dict[str, str]:
@@ -65,34 +71,58 @@ class _Pages:
         program = self.program
         about = textwrap.wrap(comment(f"{program.name}: {program.about}" if program.about else program.name), 100)
         return {
-            "name": program.name, "upper": program.name.upper(), "guard": f"{program.name.upper()}_H", "about": about,
-            "facts": self.facts(), "cautions": textwrap.wrap(CAUTIONS, 100), "step": program.step,
+            "name": program.name,
+            "upper": program.name.upper(),
+            "guard": f"{program.name.upper()}_H",
+            "about": about,
+            "facts": self.facts(),
+            "cautions": textwrap.wrap(CAUTIONS, 100),
+            "step": program.step,
             "status": [{"name": n, "value": v, "note": note} for n, v, note in STATUS],
             "jumps": program.jumps,
-            "enums": [{"name": e.name, "note": e.note, "rows": [
-                {"name": v, "number": i, "comma": "," if i + 1 < len(e.values) else ""} for i, v in enumerate(e.values)]}
-                for e in program.enums],
-            "structs": self.structs(), "rules": [f"{i}: {comment(r)}" for i, r in enumerate(program.rules, 1)] or ["(there is none)"],
+            "enums": [
+                {
+                    "name": e.name,
+                    "note": e.note,
+                    "rows": [
+                        {"name": v, "number": i, "comma": "," if i + 1 < len(e.values) else ""}
+                        for i, v in enumerate(e.values)
+                    ],
+                }
+                for e in program.enums
+            ],
+            "structs": self.structs(),
+            "rules": [f"{i}: {comment(r)}" for i, r in enumerate(program.rules, 1)] or ["(there is none)"],
         }
 
     def facts(self) -> list[str]:
         program = self.program
         return [
-            f"Made by hybgen {program.version} from {comment(program.origin)}, SHA-256", f"  {program.digest}",
+            f"Made by hybgen {program.version} from {comment(program.origin)}, SHA-256",
+            f"  {program.digest}",
             f"step {program.step}, numbers {program.number}, integration {program.method}",
             "Compile as C99 (or C++) with -ffp-contract=off, without -ffast-math.",
         ]
 
     def structs(self) -> list[dict[str, Any]]:
         program, name = self.program, self.program.name
-        last = (Member("last_jump", "word", None, "number of the last jump"), Member("jumps", "word", None, "count of jumps, wraps"))
+        last = (
+            Member("last_jump", "word", None, "number of the last jump"),
+            Member("jumps", "word", None, "count of jumps, wraps"),
+        )
         rows = (
             ("inputs", program.inputs, "the samples of one step"),
             ("parameters", program.parameters, "what may be tuned at run time"),
             ("outputs", program.outputs, "what a step gives"),
         )
-        made = [{"name": f"{name}_{word}", "note": note, "members": self.members(members, word)} for word, members, note in rows]
-        return [*made, {"name": name, "note": "one instance", "members": self.members((*program.states, *last), "states")}]
+        made = [
+            {"name": f"{name}_{word}", "note": note, "members": self.members(members, word)}
+            for word, members, note in rows
+        ]
+        return [
+            *made,
+            {"name": name, "note": "one instance", "members": self.members((*program.states, *last), "states")},
+        ]
 
     def members(self, members: Sequence[Member], word: str) -> list[dict[str, str]]:
         if not members:
@@ -107,14 +137,24 @@ class _Pages:
     def source(self) -> dict[str, Any]:
         program = self.program
         inner = [f for f in program.functions if f.name not in ("init", "rules")]
-        tables = frozenset(v.table for f in program.functions for v in all_values(f.body) if isinstance(v, Apply) and v.table)
+        tables = frozenset(
+            v.table for f in program.functions for v in all_values(f.body) if isinstance(v, Apply) and v.table
+        )
         helpers = [helper(h, program) for h in program.helpers if h != "lookup"] + lookups(program, tables)
         return {
-            "name": program.name, "upper": program.name.upper(), "facts": self.facts(), "cautions": textwrap.wrap(CAUTIONS, 100),
+            "name": program.name,
+            "upper": program.name.upper(),
+            "facts": self.facts(),
+            "cautions": textwrap.wrap(CAUTIONS, 100),
             "excess": " && (__FLT_EVAL_METHOD__ != 1)" if program.real == "double" else "",
-            "now": [{"text": self.member(m)} for m in program.now], "defaults": self.defaults(), "helpers": helpers,
-            "functions": [self.function(f) for f in inner], "init": list(self.writer.block(program.function("init").body, 1)),
-            "rules": list(self.rules()), "step": list(self.step()), "jump_name": list(self.jump_name()),
+            "now": [{"text": self.member(m)} for m in program.now],
+            "defaults": self.defaults(),
+            "helpers": helpers,
+            "functions": [self.function(f) for f in inner],
+            "init": list(self.writer.block(program.function("init").body, 1)),
+            "rules": list(self.rules()),
+            "step": list(self.step()),
+            "jump_name": list(self.jump_name()),
         }
 
     def defaults(self) -> list[str]:
@@ -124,8 +164,10 @@ class _Pages:
         for member, row in zip(self.program.parameters, self.program.defaults, strict=True):
             text = ", ".join(constant(c, self.program) for c in row)
             rows.append(f"{{ {text} }}" if member.size is not None else text)
-        return [f"{row}{',' if i + 1 < len(rows) else ''} /* {m.name} */"
-                for i, (row, m) in enumerate(zip(rows, self.program.parameters, strict=True))]
+        return [
+            f"{row}{',' if i + 1 < len(rows) else ''} /* {m.name} */"
+            for i, (row, m) in enumerate(zip(rows, self.program.parameters, strict=True))
+        ]
 
     def arguments(self, f: Function) -> list[str]:
         """The parameters that a function takes, in a fixed order."""
@@ -134,12 +176,27 @@ class _Pages:
 
     def function(self, f: Function) -> dict[str, Any]:
         name = self.program.name
-        types = {"self": name, "p": f"{name}_parameters", "u": f"{name}_inputs", "now": f"{name}_now", "y": f"{name}_outputs"}
+        types = {
+            "self": name,
+            "p": f"{name}_parameters",
+            "u": f"{name}_inputs",
+            "now": f"{name}_now",
+            "y": f"{name}_outputs",
+        }
         written = f.writes | ({"self"} if f.name == "take" else set())
-        signature = [("uint32_t jump" if a == "jump" else f"{'' if a in written else 'const '}{types[a]} *{a}") for a in self.arguments(f)]
+        signature = [
+            ("uint32_t jump" if a == "jump" else f"{'' if a in written else 'const '}{types[a]} *{a}")
+            for a in self.arguments(f)
+        ]
         lines = list(self.body(f))
         returns = "uint32_t" if f.status or f.name == "due" else "void"
-        return {"name": f.name, "about": f.about, "returns": returns, "signature": ", ".join(signature) or "void", "lines": lines}
+        return {
+            "name": f.name,
+            "about": f.about,
+            "returns": returns,
+            "signature": ", ".join(signature) or "void",
+            "lines": lines,
+        }
 
     def body(self, f: Function) -> Iterator[str]:
         if f.status:
@@ -187,7 +244,11 @@ class _Pages:
         if jumping and program.jumps_per_step > 1:
             yield "    uint32_t taken;"
         yield ""
-        yield from (f"    (void){a};" for a in ("self", "p", "u", "y") if a not in taken and not (a == "p" and program.has("rules")))
+        yield from (
+            f"    (void){a};"
+            for a in ("self", "p", "u", "y")
+            if a not in taken and not (a == "p" and program.has("rules"))
+        )
         yield from self.checked("p" in taken)
         for name in ("read", "watch"):
             if program.has(name):
@@ -215,7 +276,11 @@ class _Pages:
         most = self.program.jumps_per_step
         upper = self.program.name.upper()
         yield f"    {self.call('due')}"
-        head = "    if (jump != 0u) {" if most == 1 else f"    for (taken = 0u; (jump != 0u) && (taken < {most}u); taken++) {{"
+        head = (
+            "    if (jump != 0u) {"
+            if most == 1
+            else f"    for (taken = 0u; (jump != 0u) && (taken < {most}u); taken++) {{"
+        )
         yield head
         yield f"        {self.call('take')}"
         yield f"        {self.call('due')}"

@@ -10,7 +10,22 @@ from typing import assert_never
 import numpy as np
 
 from hybgen.ir.model import (
-    INFIX, PREFIX, Answer, Apply, Constant, Field, If, Let, Local, Note, Program, Raise, Statement, Store, Switch, Value,
+    INFIX,
+    PREFIX,
+    Answer,
+    Apply,
+    Constant,
+    Field,
+    If,
+    Let,
+    Local,
+    Note,
+    Program,
+    Raise,
+    Statement,
+    Store,
+    Switch,
+    Value,
 )
 
 INDENT = "    "
@@ -26,8 +41,11 @@ def real_literal(value: Fraction, program: Program) -> str:
     """The shortest decimal that gives the number's bits, as a literal of the format."""
     number = np.float32(float(value)) if program.real == "float" else np.float64(float(value))
     assert Fraction(float(number)) == value, value
-    text = np.format_float_scientific(number, unique=True, trim="0") if value and not 1e-4 <= abs(float(value)) < 1e7 else (
-        np.format_float_positional(number, unique=True, trim="0"))
+    text = (
+        np.format_float_scientific(number, unique=True, trim="0")
+        if value and not 1e-4 <= abs(float(value)) < 1e7
+        else (np.format_float_positional(number, unique=True, trim="0"))
+    )
     return text + ("f" if program.real == "float" else "")
 
 
@@ -78,7 +96,11 @@ class Writer:
         if value.op in INFIX:
             return f"({f' {INFIX[value.op]} '.join(self.inner(a) for a in args)})"
         if value.op in PREFIX:
-            return f"{PREFIX[value.op]}{self.inner(args[0])}" if value.op == "not" else f"({PREFIX[value.op]}{self.inner(args[0])})"
+            return (
+                f"{PREFIX[value.op]}{self.inner(args[0])}"
+                if value.op == "not"
+                else f"({PREFIX[value.op]}{self.inner(args[0])})"
+            )
         if value.op == "select":
             return f"({self.inner(args[0])} ? {self.inner(args[1])} : {self.inner(args[2])})"
         if value.op == "to_real":
@@ -137,17 +159,21 @@ class Writer:
         for labels, body in statement.cases:
             for label in labels:
                 yield f"{pad}case {constant(label, self.program)}:"
-            if any(isinstance(s, Let) for s in body):
-                yield f"{pad}{INDENT}{{"
-                yield from self.block(body, depth + 2)
-                yield f"{pad}{INDENT}}}"
-            else:
-                yield from self.block(body, depth + 1)
+            yield from self._case(body, depth)
             yield f"{pad}{INDENT}break;"
         yield f"{pad}default:"
-        yield from self.block(statement.default, depth + 1)
+        yield from self._case(statement.default, depth)
         yield f"{pad}{INDENT}break;"
         yield f"{pad}}}"
+
+    def _case(self, body: Sequence[Statement], depth: int) -> Iterator[str]:
+        """The body of a case; in braces where it declares something."""
+        if any(isinstance(s, Let) for s in body):
+            yield f"{INDENT * (depth + 1)}{{"
+            yield from self.block(body, depth + 2)
+            yield f"{INDENT * (depth + 1)}}}"
+        else:
+            yield from self.block(body, depth + 1)
 
 
 def comment(text: str) -> str:

@@ -8,7 +8,7 @@ from fractions import Fraction
 
 from hybgen.diag.finding import Findings
 from hybgen.diag.span import Span
-from hybgen.expr.core import INT, REAL, Const, Kind, Node, op, real
+from hybgen.expr.core import INT, REAL, Const, Kind, Node, integer, op, real
 from hybgen.expr.quantity import Stop, Typed, fit_unit, shape_words, to_integers, to_reals, type_words, unit_words
 from hybgen.expr.units import KELVIN, ONE, Unit
 
@@ -71,6 +71,7 @@ def binary(sign: str, left: Typed, right: Typed, span: Span, findings: Findings)
 def _whole(sign: str, left: Typed, right: Typed, span: Span, findings: Findings) -> Typed:
     if left.shape or right.shape:
         raise stop(findings, "HG208", span, "whole numbers are single values")
+    left = _room_for(sign, left, right, span)
     (a, b), (c, d) = bounds_of(left), bounds_of(right)
     ends = [_EXACT[sign](x, y) for x in (a, b) for y in (c, d)]
     low, high = min(ends), max(ends)
@@ -81,6 +82,23 @@ def _whole(sign: str, left: Typed, right: Typed, span: Span, findings: Findings)
         type=INT,
         bounds=(low, high),
     )
+
+
+def _room_for(sign: str, left: Typed, right: Typed, span: Span) -> Typed:
+    """Adding or subtracting a constant saturates at 32 bits: the other side is held where there is room for it."""
+    low, high = bounds_of(left)
+    if sign == "*" or right.const is None or not right.const:
+        return left
+    shift = right.const[0] if sign == "+" else -right.const[0]
+    top, bottom = LARGEST - max(shift, Fraction(0)), -LARGEST - min(shift, Fraction(0))
+    if high > top:
+        left = replace(
+            left, nodes=(op("imin", left.nodes[0], integer(int(top)), span=span),), bounds=(low, Fraction(top))
+        )
+    if low < bottom:
+        node = op("imax", left.nodes[0], integer(int(bottom)), span=span)
+        left = replace(left, nodes=(node,), bounds=(Fraction(bottom), bounds_of(left)[1]))
+    return left
 
 
 def check_32_bits(low: Fraction, high: Fraction, span: Span, findings: Findings) -> None:

@@ -76,7 +76,11 @@ _REFLEXIVE = {"lt": False, "le": True, "gt": False, "ge": True, "eq": True, "ne"
 
 
 def _computed(node: Op) -> Node:
-    if node.op in _REFLEXIVE and node.args[0] == node.args[1] and (isinstance(node.args[0], Ref) or node.args[0].type != REAL):
+    if (
+        node.op in _REFLEXIVE
+        and node.args[0] == node.args[1]
+        and (isinstance(node.args[0], Ref) or node.args[0].type != REAL)
+    ):
         return truth(_REFLEXIVE[node.op], node.span)
     exact = _EXACT.get(node.op)
     if exact is None or not all(isinstance(a, Const) for a in node.args):
@@ -110,7 +114,19 @@ def _logic(node: Op) -> Node:
         return truth(not ends, node.span)
     if len(kept) == 1:
         return kept[0]
+    if not ends and (simpler := _under_the_first(kept)) is not None:
+        return _logic(op("and", *simpler, span=node.span))
     return node if len(kept) == len(node.args) else op(node.op, *kept, span=node.span)
+
+
+def _under_the_first(parts: list[Node]) -> list[Node] | None:
+    """Conjuncts simplified by what the ones before them say, or None where that changes nothing."""
+    known: dict[Node, Const] = {}
+    found: list[Node] = []
+    for part in parts:
+        found.append(_fold(part, known) if known else part)
+        known.update(facts(part))
+    return found if any(a is not b for a, b in zip(found, parts, strict=True)) else None
 
 
 def _select(node: Op) -> Node:

@@ -15,7 +15,7 @@ from hybgen.diag.finding import Findings
 from hybgen.diag.span import NOWHERE, Span
 from hybgen.diag.suggest import nearest
 from hybgen.expr import algebra, functions, relations
-from hybgen.expr.core import BOOL, INT, REAL, Const, Kind, Node, Ref, RefKind, op, truth
+from hybgen.expr.core import BOOL, REAL, Const, Kind, Ref, RefKind, op, truth
 from hybgen.expr.quantity import Stop, Typed, Want, coerce, enum_value
 from hybgen.expr.scope import Scope, Symbol
 from hybgen.expr.tree import Binary, Call, Cases, Chain, Expr, Item, Logic, Name, Number, Truth, Unary, Vector
@@ -72,7 +72,8 @@ _KIND_WORDS = {
     RefKind.STATE: "a state",
     RefKind.TERM: "a term",
     RefKind.JUMPED: "jumped()",
-    RefKind.OUTPUT: "an output", RefKind.LOCAL: "a local",
+    RefKind.OUTPUT: "an output",
+    RefKind.LOCAL: "a local",
 }
 
 

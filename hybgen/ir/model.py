@@ -49,12 +49,41 @@ Value = Constant | Local | Field | Apply
 
 # infix: the C operator; prefix: likewise; call: a helper function of that name
 INFIX = {
-    "add": "+", "sub": "-", "mul": "*", "div": "/", "iadd": "+", "isub": "-", "imul": "*",
-    "lt": "<", "le": "<=", "gt": ">", "ge": ">=", "eq": "==", "ne": "!=", "and": "&&", "or": "||",
+    "add": "+",
+    "sub": "-",
+    "mul": "*",
+    "div": "/",
+    "iadd": "+",
+    "isub": "-",
+    "imul": "*",
+    "lt": "<",
+    "le": "<=",
+    "gt": ">",
+    "ge": ">=",
+    "eq": "==",
+    "ne": "!=",
+    "and": "&&",
+    "or": "||",
 }
 PREFIX = {"neg": "-", "ineg": "-", "not": "!"}
-HELPERS = frozenset({"abs", "min", "max", "clamp", "sign", "floor", "lookup", "to_steps", "finite",
-                     "iabs", "imin", "imax", "iclamp", "isign"})
+HELPERS = frozenset(
+    {
+        "abs",
+        "min",
+        "max",
+        "clamp",
+        "sign",
+        "floor",
+        "lookup",
+        "to_steps",
+        "finite",
+        "iabs",
+        "imin",
+        "imax",
+        "iclamp",
+        "isign",
+    }
+)
 OPS = frozenset(INFIX) | frozenset(PREFIX) | HELPERS | {"select", "to_real"}
 
 

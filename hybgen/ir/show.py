@@ -7,7 +7,23 @@ from fractions import Fraction
 from typing import assert_never
 
 from hybgen.ir.model import (
-    INFIX, PREFIX, Answer, Apply, Constant, Field, If, Let, Local, Member, Note, Program, Raise, Statement, Store, Switch, Value,
+    INFIX,
+    PREFIX,
+    Answer,
+    Apply,
+    Constant,
+    Field,
+    If,
+    Let,
+    Local,
+    Member,
+    Note,
+    Program,
+    Raise,
+    Statement,
+    Store,
+    Switch,
+    Value,
 )
 
 
@@ -20,8 +36,13 @@ def _lines(program: Program) -> Iterator[str]:
     yield f"program {program.name}: {program.number}, step {program.step}, at most {program.jumps_per_step} jumps in one step"
     for enum in program.enums:
         yield f"enum {enum.name}: {', '.join(enum.values)}"
-    for word, members in (("inputs", program.inputs), ("parameters", program.parameters), ("outputs", program.outputs),
-                          ("self", program.states), ("now", program.now)):
+    for word, members in (
+        ("inputs", program.inputs),
+        ("parameters", program.parameters),
+        ("outputs", program.outputs),
+        ("self", program.states),
+        ("now", program.now),
+    ):
         yield f"struct {word}: {', '.join(_member(m) for m in members) or 'nothing'}"
     for table in program.tables:
         yield f"table {table.name}: {', '.join(f'({float(x):.9g}, {float(y):.9g})' for x, y in zip(table.x, table.y, strict=True))}"
@@ -66,8 +87,13 @@ def _block(body: Sequence[Statement], depth: int) -> Iterator[str]:
 def _value(value: Value) -> str:
     match value:
         case Constant():
-            return f"{float(value.value):.17g}" if isinstance(value.value, Fraction) else str(value.value).lower() if isinstance(
-                value.value, bool) else str(value.value)
+            return (
+                f"{float(value.value):.17g}"
+                if isinstance(value.value, Fraction)
+                else str(value.value).lower()
+                if isinstance(value.value, bool)
+                else str(value.value)
+            )
         case Local():
             return value.name
         case Field():

@@ -8,8 +8,23 @@ from fractions import Fraction
 from hybgen.ir.model import OPS, Answer, Apply, Constant, Field, Let, Local, Member, Program, Statement, Store, Value
 from hybgen.ir.walk import blocks, own, values
 
-_ARITY = {"select": 3, "clamp": 3, "iclamp": 3, "neg": 1, "ineg": 1, "not": 1, "abs": 1, "iabs": 1, "sign": 1, "isign": 1,
-          "floor": 1, "lookup": 1, "to_steps": 1, "to_real": 1, "finite": 1}
+_ARITY = {
+    "select": 3,
+    "clamp": 3,
+    "iclamp": 3,
+    "neg": 1,
+    "ineg": 1,
+    "not": 1,
+    "abs": 1,
+    "iabs": 1,
+    "sign": 1,
+    "isign": 1,
+    "floor": 1,
+    "lookup": 1,
+    "to_steps": 1,
+    "to_real": 1,
+    "finite": 1,
+}
 
 
 Known = Mapping[tuple[str, str], Member]
@@ -18,7 +33,13 @@ Known = Mapping[tuple[str, str], Member]
 def verify(program: Program) -> None:
     """Raises AssertionError: an operation that does not exist, a name used before it is made or made twice, a member
     that no struct has, operands of different types."""
-    members = {"self": program.states, "p": program.parameters, "u": program.inputs, "now": program.now, "y": program.outputs}
+    members = {
+        "self": program.states,
+        "p": program.parameters,
+        "u": program.inputs,
+        "now": program.now,
+        "y": program.outputs,
+    }
     known = {(base, m.name): m for base, rows in members.items() for m in rows}
     for function in program.functions:
         _block(function.body, frozenset(), known, program)
@@ -62,4 +83,3 @@ def _value(value: Value, scope: frozenset[str], known: Known, program: Program) 
             assert value.op != "lookup" or any(t.name == value.table for t in program.tables), value
         case Constant():
             assert isinstance(value.value, Fraction | bool | int | str)
-

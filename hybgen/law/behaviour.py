@@ -50,7 +50,9 @@ class Behaviour:
         found = next((s for s in self.states if s.name == key.text), None)
         if found is None:
             close = nearest(key.text, [s.name for s in self.states])
-            self.context.error("HG201", key.span, f"'{key.text[:40]}' is no state", f"did you mean '{close}'?" if close else None)
+            self.context.error(
+                "HG201", key.span, f"'{key.text[:40]}' is no state", f"did you mean '{close}'?" if close else None
+            )
         return found
 
     def assigns(self, key: Scalar, node: Node, allow: frozenset[RefKind], place: str) -> Iterator[Assign]:
@@ -58,8 +60,13 @@ class Behaviour:
         state = self.state(key)
         if state is None:
             return
-        want = Want(state.type, () if state.size is None else (state.size,), state.unit, f"state '{state.name}'",
-                    timer=state.kind is StateKind.TIMER)
+        want = Want(
+            state.type,
+            () if state.size is None else (state.size,),
+            state.unit,
+            f"state '{state.name}'",
+            timer=state.kind is StateKind.TIMER,
+        )
         found = self.typed(node, want, allow, place)
         if found is None:
             return
@@ -77,8 +84,12 @@ class Behaviour:
         if values is None or any(v.value not in allowed for v in values):
             words = ", ".join(map(str, state.values))
             bad = "" if values is None else f": it may become {next(v.value for v in values if v.value not in allowed)}"
-            self.context.error("HG138", node.span, f"'{state.name}' has to stay one of {words}{bad}",
-                               "use constants, choose(), or an expression of logic variables only")
+            self.context.error(
+                "HG138",
+                node.span,
+                f"'{state.name}' has to stay one of {words}{bad}",
+                "use constants, choose(), or an expression of logic variables only",
+            )
 
     def flow(self, group: Mapping, span: Span) -> Flow:
         """The flow condition, the rates and the method."""
@@ -103,7 +114,12 @@ class Behaviour:
             hint = "it counts time by itself" if state.kind is StateKind.TIMER else "only real states flow"
             self.context.error("HG135", key.span, f"'{state.name}' has no rate: {hint}", "take it out of flow: map:")
             return
-        want = Want(REAL, () if state.size is None else (state.size,), difference_unit(state.unit) / SECOND, f"the rate of '{state.name}'")
+        want = Want(
+            REAL,
+            () if state.size is None else (state.size,),
+            difference_unit(state.unit) / SECOND,
+            f"the rate of '{state.name}'",
+        )
         found = self.typed(node, want, _ALL, "in a rate")
         if found is not None:
             for i, tree in enumerate(found[0].nodes):
@@ -115,9 +131,13 @@ class Behaviour:
         flowing = {r.state for r in flow.rates}
         for key, node in group.entries:
             if key.text in flowing:
-                self.context.error("HG135", key.span, f"'{key.text}' is sampled and flows: it can't do both", "keep one of the two")
+                self.context.error(
+                    "HG135", key.span, f"'{key.text}' is sampled and flows: it can't do both", "keep one of the two"
+                )
             elif any(s.name == key.text and s.kind is StateKind.TIMER for s in self.states):
-                self.context.error("HG135", key.span, f"'{key.text}' is a timer: it counts by itself and can't be sampled")
+                self.context.error(
+                    "HG135", key.span, f"'{key.text}' is a timer: it counts by itself and can't be sampled"
+                )
             else:
                 made += self.assigns(key, node, _ALL, "in sample")
         return tuple(made)
@@ -136,7 +156,16 @@ class Behaviour:
         keep = self._keep(group, {a.state for a in assigns})
         if condition is None:
             return None
-        return Jump(key.text, condition[0], condition[1], where.span, key.span, tuple(assigns), keep, self.context.text(group, "note"))
+        return Jump(
+            key.text,
+            condition[0],
+            condition[1],
+            where.span,
+            key.span,
+            tuple(assigns),
+            keep,
+            self.context.text(group, "note"),
+        )
 
     def _keep(self, group: Mapping, assigned: set[str]) -> tuple[str, ...]:
         node = group.get("keep")
@@ -167,15 +196,31 @@ class Behaviour:
         ends = None
         if (range_node := group.get("range")) is not None:
             if typed_value.type not in (REAL, INT):
-                context.error("HG124", range_node.span, f"output '{key.text}' is no number: it has no range", "take 'range' out")
+                context.error(
+                    "HG124", range_node.span, f"output '{key.text}' is no number: it has no range", "take 'range' out"
+                )
             else:
                 ends = context.pair(range_node, unit)
         limit = context.flag(group, "limit")
         if limit and ends is None and (key_node := group.key("limit")) is not None:
-            context.error("HG132", key_node.span, f"output '{key.text}' needs a range to be limited to", "such as range: [0, 1]")
+            context.error(
+                "HG132", key_node.span, f"output '{key.text}' needs a range to be limited to", "such as range: [0, 1]"
+            )
         low, high = ends if ends is not None else (None, None)
         size = typed_value.shape[0] if typed_value.shape else None
-        return Output(key.text, typed_value.type, size, unit, typed_value.nodes, low, high, limit, context.text(group, "about"), value.span, text)
+        return Output(
+            key.text,
+            typed_value.type,
+            size,
+            unit,
+            typed_value.nodes,
+            low,
+            high,
+            limit,
+            context.text(group, "about"),
+            value.span,
+            text,
+        )
 
     def _output_value(self, key: Scalar, group: Mapping, value: Node) -> tuple[Typed, str] | None:
         node = group.get("type")
@@ -184,7 +229,11 @@ class Behaviour:
         if word in ("bool", "integer"):
             return self.typed(value, Want(BOOL if word == "bool" else INT, what=what), _ALL, "in an output")
         found = self.typed(value, None, _ALL, "in an output")
-        if found is None or found[0].type.kind in (Kind.BOOL, Kind.ENUM) or (found[0].type == INT and group.get("unit") is None and word == ""):
+        if (
+            found is None
+            or found[0].type.kind in (Kind.BOOL, Kind.ENUM)
+            or (found[0].type == INT and group.get("unit") is None and word == "")
+        ):
             return self._vector(key, value, found)
         declared = group.get("unit")
         unit = self.context.unit(group) if declared is not None else found[0].unit if not found[0].zero else ONE
@@ -193,7 +242,9 @@ class Behaviour:
 
     def _vector(self, key: Scalar, value: Node, found: tuple[Typed, str] | None) -> tuple[Typed, str] | None:
         if found is not None and len(found[0].shape) > 1:
-            self.context.error("HG208", value.span, f"output '{key.text}' can't be a matrix", "give its rows one by one")
+            self.context.error(
+                "HG208", value.span, f"output '{key.text}' can't be a matrix", "give its rows one by one"
+            )
             return None
         return found
 
@@ -209,7 +260,9 @@ class Draft:
     about: str
 
 
-def read_terms(context: Context, scope: Scope, states: tuple[State, ...], group: Mapping) -> tuple[Scope, tuple[Term, ...]]:
+def read_terms(
+    context: Context, scope: Scope, states: tuple[State, ...], group: Mapping
+) -> tuple[Scope, tuple[Term, ...]]:
     """The terms in an order in which each uses only earlier ones, and the scope with them."""
     drafts = {d.key.text: d for key, node in group.entries if (d := _draft(context, key, node)) is not None}
     terms: list[Term] = []
@@ -249,8 +302,12 @@ def _ordered(context: Context, drafts: dict[str, Draft]) -> list[str]:
                 trail.pop()
             elif state[used] == 1:
                 circle = [n for n, _ in trail[[n for n, _ in trail].index(used) :]]
-                context.error("HG134", drafts[name].value.span, f"these terms need each other in a circle: {' -> '.join([*circle, used])}",
-                              "put a state in between, or write one of them without the other")
+                context.error(
+                    "HG134",
+                    drafts[name].value.span,
+                    f"these terms need each other in a circle: {' -> '.join([*circle, used])}",
+                    "put a state in between, or write one of them without the other",
+                )
                 return order
             else:
                 state[used] = 1
@@ -295,11 +352,14 @@ def _term(context: Context, scope: Scope, states: tuple[State, ...], draft: Draf
     if found is None:
         return None, None
     if found.type.kind is Kind.ENUM or len(found.shape) > 1:
-        context.error("HG204", draft.value.span, f"term '{draft.key.text}' has to be a number, a vector, or true or false")
+        context.error(
+            "HG204", draft.value.span, f"term '{draft.key.text}' has to be a number, a vector, or true or false"
+        )
         return None, None
     name, size = draft.key.text, found.shape[0] if found.shape else None
     text = context.written(draft.value, draft.expr)
     term = Term(name, found.type, size, found.unit, found.nodes, draft.value.span, text)
-    symbol = Symbol(RefKind.TERM, name, found.type, found.shape, found.unit, bounds=found.bounds, jumped=found.uses_jumped)
+    symbol = Symbol(
+        RefKind.TERM, name, found.type, found.shape, found.unit, bounds=found.bounds, jumped=found.uses_jumped
+    )
     return term, symbol
-

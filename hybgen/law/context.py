@@ -20,13 +20,15 @@ from hybgen.law.document import Mapping, Node, Scalar, Sequence
 MOST_COMPONENTS = 64
 
 
-_MEASURED = re.compile(r"\s*(-?)([0-9]{1,30}(?:\.[0-9]{0,30})?(?:[eE][+-]?[0-9]{1,3})?)\s*([A-Za-zµ%/].*?)\s*\Z", re.DOTALL)
+_MEASURED = re.compile(
+    r"\s*(-?)([0-9]{1,30}(?:\.[0-9]{0,30})?(?:[eE][+-]?[0-9]{1,3})?)\s*([A-Za-zµ%/].*?)\s*\Z", re.DOTALL
+)
 
 
 def _measured(node: Scalar) -> Number | None:
     """A number with all the rest as its unit: in a declaration `8 V*s/m` needs no parentheses."""
     found = _MEASURED.match(node.text)
-    if found is None or found[3][0] == "/" and not node.text[: found.start(3)].endswith(" "):
+    if found is None or (found[3][0] == "/" and not node.text[: found.start(3)].endswith(" ")):
         return None
     try:
         unit = units.parse(found[3])
@@ -55,7 +57,12 @@ class Context:
             return units.parse(node.text)
         except BadUnit as bad:
             close = nearest(bad.name, units.known_names()) if bad.name else None
-            self.error("HG214", node.locate(bad.offset, max(1, len(bad.name))), bad.message, f"did you mean '{close}'?" if close else None)
+            self.error(
+                "HG214",
+                node.locate(bad.offset, max(1, len(bad.name))),
+                bad.message,
+                f"did you mean '{close}'?" if close else None,
+            )
             return ONE
 
     def text(self, group: Mapping, key: str) -> str:
@@ -90,7 +97,9 @@ class Context:
         assert isinstance(node, Sequence)
         if not any(isinstance(i, Mapping) for i in node.items):
             items = [self.expression(i) for i in node.items]
-            return None if any(i is None for i in items) else Vector(tuple(i for i in items if i is not None), node.span)
+            return (
+                None if any(i is None for i in items) else Vector(tuple(i for i in items if i is not None), node.span)
+            )
         branches: list[tuple[Expr, Expr]] = []
         good, otherwise = True, None
         for item in node.items:
@@ -119,7 +128,9 @@ class Context:
         found = self.number(node, unit, difference)
         return None if found is None else found[0]
 
-    def positive(self, node: Node | None, unit: Unit, what: str, zero: bool = False, difference: bool = True) -> Fraction | None:
+    def positive(
+        self, node: Node | None, unit: Unit, what: str, zero: bool = False, difference: bool = True
+    ) -> Fraction | None:
         """A value above zero (or zero too)."""
         found = self.value(node, unit, difference)
         if found is not None and node is not None and (found < 0 or (found == 0 and not zero)):
@@ -135,7 +146,11 @@ class Context:
         if low is None or high is None:
             return None
         if low >= high:
-            self.error("HG131", node.span, "a range is [low, high] with low below high", "exchange the two" if low > high else None)
+            self.error(
+                "HG131",
+                node.span,
+                "a range is [low, high] with low below high",
+                "exchange the two" if low > high else None,
+            )
             return None
         return low, high
-

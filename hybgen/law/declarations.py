@@ -26,7 +26,9 @@ def _type(group: Mapping) -> Type:
     return _TYPES[node.text] if isinstance(node, Scalar) else REAL
 
 
-def _range(context: Context, key: Scalar, group: Mapping, type_: Type, unit: Unit, what: str) -> tuple[Fraction, Fraction] | None:
+def _range(
+    context: Context, key: Scalar, group: Mapping, type_: Type, unit: Unit, what: str
+) -> tuple[Fraction, Fraction] | None:
     """The declared range of a number; a finding if it is missing."""
     node = group.get("range")
     if type_ == BOOL:
@@ -44,7 +46,9 @@ def _range(context: Context, key: Scalar, group: Mapping, type_: Type, unit: Uni
     return found
 
 
-def _inside(context: Context, node: Node | None, value: Fraction | None, ends: tuple[Fraction, Fraction] | None, what: str) -> None:
+def _inside(
+    context: Context, node: Node | None, value: Fraction | None, ends: tuple[Fraction, Fraction] | None, what: str
+) -> None:
     if node is not None and value is not None and ends is not None and not ends[0] <= value <= ends[1]:
         context.error("HG130", node.span, f"{what} is outside the range", "widen the range, or change the value")
 
@@ -67,11 +71,27 @@ def read_input(context: Context, key: Scalar, group: Mapping) -> Input | None:
     if type_ != BOOL and ends is None:
         return None
     low, high = ends if ends is not None else (None, None)
-    return Input(key.text, type_, context.size(group), unit, low, high, noise, resolution, rate, policy, substitute, initial,
-                 context.text(group, "about"), key.span)
+    return Input(
+        key.text,
+        type_,
+        context.size(group),
+        unit,
+        low,
+        high,
+        noise,
+        resolution,
+        rate,
+        policy,
+        substitute,
+        initial,
+        context.text(group, "about"),
+        key.span,
+    )
 
 
-def _policy(context: Context, group: Mapping, type_: Type, unit: Unit, ends: tuple[Fraction, Fraction] | None) -> tuple[str, Fraction | None]:
+def _policy(
+    context: Context, group: Mapping, type_: Type, unit: Unit, ends: tuple[Fraction, Fraction] | None
+) -> tuple[str, Fraction | None]:
     node = group.get("invalid")
     if not isinstance(node, Scalar) or node.text in ("hold", "clamp"):
         return (node.text if isinstance(node, Scalar) else "hold"), None
@@ -82,7 +102,9 @@ def _policy(context: Context, group: Mapping, type_: Type, unit: Unit, ends: tup
     return "value", value
 
 
-def _first_sample(context: Context, group: Mapping, type_: Type, unit: Unit, ends: tuple[Fraction, Fraction] | None) -> Value:
+def _first_sample(
+    context: Context, group: Mapping, type_: Type, unit: Unit, ends: tuple[Fraction, Fraction] | None
+) -> Value:
     node = group.get("initial")
     if type_ == BOOL:
         if isinstance(node, Scalar) and node.text not in ("true", "false"):
@@ -107,7 +129,7 @@ def read_parameter(context: Context, key: Scalar, node: Node) -> Parameter | Non
     if value_node is None:
         return None
     declared = context.unit(group) if group.get("unit") is not None else None
-    if isinstance(value_node, Scalar) and value_node.text in ("true", "false") or _type(group) == BOOL:
+    if (isinstance(value_node, Scalar) and value_node.text in ("true", "false")) or _type(group) == BOOL:
         return _bool_parameter(context, key, group, value_node)
     found = _entries(context, value_node, declared)
     if found is None:
@@ -136,12 +158,26 @@ def _bool_parameter(context: Context, key: Scalar, group: Mapping, node: Node) -
         return None
     for word in ("range", "unit"):
         if (extra := group.key(word)) is not None:
-            context.error("HG124", extra.span, f"parameter '{key.text}' is true or false: it has no {word}", f"take '{word}' out")
-    return Parameter(key.text, BOOL, (), ONE, (node.text == "true",), None, None, context.flag(group, "tunable"),
-                     context.text(group, "about"), key.span)
+            context.error(
+                "HG124", extra.span, f"parameter '{key.text}' is true or false: it has no {word}", f"take '{word}' out"
+            )
+    return Parameter(
+        key.text,
+        BOOL,
+        (),
+        ONE,
+        (node.text == "true",),
+        None,
+        None,
+        context.flag(group, "tunable"),
+        context.text(group, "about"),
+        key.span,
+    )
 
 
-def _entries(context: Context, node: Node, unit: Unit | None) -> tuple[tuple[Fraction, ...], tuple[int, ...], Unit] | None:
+def _entries(
+    context: Context, node: Node, unit: Unit | None
+) -> tuple[tuple[Fraction, ...], tuple[int, ...], Unit] | None:
     """Numbers in one unit: a single one, a list, or a list of lists (row-major)."""
     rows = [node] if isinstance(node, Scalar) else list(node.items) if isinstance(node, Sequence) else []
     shape: tuple[int, ...] = () if isinstance(node, Scalar) else (len(rows),)
@@ -179,7 +215,9 @@ def read_state(context: Context, key: Scalar, group: Mapping) -> State | None:
     if _type(group) == BOOL:
         for word in ("range", "limit", "unit", "vector"):
             if (extra := group.key(word)) is not None:
-                context.error("HG124", extra.span, f"state '{key.text}' is true or false: it has no {word}", f"take '{word}' out")
+                context.error(
+                    "HG124", extra.span, f"state '{key.text}' is true or false: it has no {word}", f"take '{word}' out"
+                )
         initial = group.get("initial")
         if initial is not None and not (isinstance(initial, Scalar) and initial.text in ("true", "false")):
             context.error("HG122", initial.span, "initial has to be true or false")
@@ -196,8 +234,15 @@ def _logic(context: Context, key: Scalar, group: Mapping, node: Node, about: str
     if words and all(n is not None for n in whole):
         values, type_ = tuple(n for n in whole if n is not None), INT
     else:
-        good = all([check_name(w, "a logic value", context.findings, word=True) and free_in_c(w, "a logic value", context.findings)
-                    if w.text not in ("true", "false") else _no_bool(context, w) for w in words])
+        good = all(
+            [
+                check_name(w, "a logic value", context.findings, word=True)
+                and free_in_c(w, "a logic value", context.findings)
+                if w.text not in ("true", "false")
+                else _no_bool(context, w)
+                for w in words
+            ]
+        )
         if not good:
             return None
         values = tuple(w.text for w in words)
@@ -211,15 +256,27 @@ def _logic(context: Context, key: Scalar, group: Mapping, node: Node, about: str
         text = first.text if isinstance(first, Scalar) else ""
         names = [str(v) for v in values]
         if text not in names:
-            context.error("HG130", first.span, f"initial '{text[:40]}' is no value of {key.text}", f"its values are {', '.join(names)}")
+            context.error(
+                "HG130",
+                first.span,
+                f"initial '{text[:40]}' is no value of {key.text}",
+                f"its values are {', '.join(names)}",
+            )
             return None
         position = names.index(text)
         initial = position if type_ is not INT else int(values[position])
-    return State(key.text, StateKind.LOGIC, type_, None, ONE, values, (initial,), None, None, False, None, about, key.span)
+    return State(
+        key.text, StateKind.LOGIC, type_, None, ONE, values, (initial,), None, None, False, None, about, key.span
+    )
 
 
 def _no_bool(context: Context, word: Scalar) -> bool:
-    context.error("HG137", word.span, f"'{word.text}' is a boolean, not a logic value", "use type: bool for a state that is true or false")
+    context.error(
+        "HG137",
+        word.span,
+        f"'{word.text}' is a boolean, not a logic value",
+        "use type: bool for a state that is true or false",
+    )
     return False
 
 
@@ -234,7 +291,12 @@ def _timer(context: Context, key: Scalar, group: Mapping, node: Node, about: str
         return None
     top, unit = found
     if not unit.alike(SECOND):
-        context.error("HG202", node.span, f"a timer holds at a time, this is {'dimensionless' if unit.plain else f'in {unit}'}", "such as timer: 60 s")
+        context.error(
+            "HG202",
+            node.span,
+            f"a timer holds at a time, this is {'dimensionless' if unit.plain else f'in {unit}'}",
+            "such as timer: 60 s",
+        )
         return None
     if top <= 0:
         context.error("HG140", node.span, "a timer holds at a time above zero")
@@ -243,7 +305,9 @@ def _timer(context: Context, key: Scalar, group: Mapping, node: Node, about: str
     if (first := group.get("initial")) is not None:
         initial = context.value(first, unit) or Fraction(0)
         _inside(context, first, initial, (Fraction(0), top), "initial")
-    return State(key.text, StateKind.TIMER, REAL, None, unit, (), (initial,), Fraction(0), top, False, top, about, key.span)
+    return State(
+        key.text, StateKind.TIMER, REAL, None, unit, (), (initial,), Fraction(0), top, False, top, about, key.span
+    )
 
 
 def _count(context: Context, key: Scalar, group: Mapping, node: Node, about: str) -> State | None:
@@ -259,7 +323,9 @@ def _count(context: Context, key: Scalar, group: Mapping, node: Node, about: str
         _inside(context, first, initial, (Fraction(0), top), "initial")
         if initial.denominator != 1:
             context.error("HG122", first.span, "initial has to be a whole number")
-    return State(key.text, StateKind.COUNT, INT, None, ONE, (), (int(initial),), Fraction(0), top, False, top, about, key.span)
+    return State(
+        key.text, StateKind.COUNT, INT, None, ONE, (), (int(initial),), Fraction(0), top, False, top, about, key.span
+    )
 
 
 def _real(context: Context, key: Scalar, group: Mapping, about: str) -> State | None:
@@ -275,13 +341,30 @@ def _real(context: Context, key: Scalar, group: Mapping, about: str) -> State | 
             return None
         values = found[0] * (size or 1) if found[1] == () else found[0]
         if len(values) != (size or 1) or len(found[1]) > 1 or (found[1] and size is None):
-            context.error("HG208", first.span, f"initial of '{key.text}' has {len(found[0])} components, not {size or 1}")
+            context.error(
+                "HG208", first.span, f"initial of '{key.text}' has {len(found[0])} components, not {size or 1}"
+            )
             return None
     elif not ends[0] <= 0 <= ends[1]:
-        context.error("HG130", key.span, f"state '{key.text}' starts at 0, which is outside its range", "give 'initial'")
+        context.error(
+            "HG130", key.span, f"state '{key.text}' starts at 0, which is outside its range", "give 'initial'"
+        )
     for value in values:
         _inside(context, first, value, ends, "initial")
-    return State(key.text, StateKind.REAL, REAL, size, unit, (), values, *ends, context.flag(group, "limit"), None, about, key.span)
+    return State(
+        key.text,
+        StateKind.REAL,
+        REAL,
+        size,
+        unit,
+        (),
+        values,
+        *ends,
+        context.flag(group, "limit"),
+        None,
+        about,
+        key.span,
+    )
 
 
 def read_table(context: Context, key: Scalar, group: Mapping) -> Table | None:

@@ -126,20 +126,31 @@ def read_document(data: bytes, file: str) -> Mapping:
 def _text(data: bytes, file: str, findings: Findings) -> Text:
     whole = Span(file, 1, 1)
     if len(data) > MOST_BYTES:
-        findings.error("HG104", whole, f"this file has more than {MOST_BYTES} bytes: no law is that long", hint="is this the right file?")
+        findings.error(
+            "HG104",
+            whole,
+            f"this file has more than {MOST_BYTES} bytes: no law is that long",
+            hint="is this the right file?",
+        )
         raise _Stop
     try:
         text = data.decode("utf-8")
     except UnicodeDecodeError as bad:
         line = data[: bad.start].count(b"\n") + 1
-        findings.error("HG106", Span(file, line, 1), f"byte {bad.start} of this file is no UTF-8", hint="save the file as UTF-8")
+        findings.error(
+            "HG106", Span(file, line, 1), f"byte {bad.start} of this file is no UTF-8", hint="save the file as UTF-8"
+        )
         raise _Stop from None
     text = text.removeprefix("\ufeff").replace("\r\n", "\n").replace("\r", "\n")
     starts = (0, *(m.end() for m in re.finditer("\n", text)))
     source = Text(file, text, starts)
     if bad_sign := _FORBIDDEN.search(text):
-        findings.error("HG107", source.span(bad_sign.start(), 1), f"the character U+{ord(bad_sign[0]):04X} has no place in a law",
-                       hint="take it out")
+        findings.error(
+            "HG107",
+            source.span(bad_sign.start(), 1),
+            f"the character U+{ord(bad_sign[0]):04X} has no place in a law",
+            hint="take it out",
+        )
         raise _Stop
     if not text.strip():
         findings.error("HG103", whole, "this file is empty", hint="'hybgen new NAME' writes a law to start from")
@@ -170,8 +181,12 @@ class _Reader:
                 top = self.tree(events)
         if not isinstance(top, Mapping):
             span = top.span if top is not None else self.source.span(0, 1)
-            raise self.stop("HG114", span, "a law file has keys at its top: law, step, inputs, …",
-                            "'hybgen new NAME' writes a law to start from")
+            raise self.stop(
+                "HG114",
+                span,
+                "a law file has keys at its top: law, step, inputs, …",
+                "'hybgen new NAME' writes a law to start from",
+            )
         return top
 
     def events(self) -> Iterator[Any]:
@@ -229,8 +244,12 @@ class _Reader:
     def counted(self, event: Any, size: int) -> None:
         self.count += size
         if self.count > MOST_NODES:
-            raise self.stop("HG110", self.at(event), f"this file has more than {MOST_NODES} entries, aliases written out",
-                            "a law is far smaller")
+            raise self.stop(
+                "HG110",
+                self.at(event),
+                f"this file has more than {MOST_NODES} entries, aliases written out",
+                "a law is far smaller",
+            )
 
     def opened(self, event: Any, depth: int) -> None:
         self.counted(event, 1)
@@ -240,7 +259,9 @@ class _Reader:
 
     def untagged(self, event: Any) -> None:
         if event.tag is not None:
-            raise self.stop("HG109", self.at(event), f"the tag '{event.tag[:40]}' has no place in a law", "write the plain value")
+            raise self.stop(
+                "HG109", self.at(event), f"the tag '{event.tag[:40]}' has no place in a law", "write the plain value"
+            )
 
     def scalar(self, event: Any) -> Scalar:
         self.counted(event, 1)
@@ -267,8 +288,13 @@ class _Reader:
             if not isinstance(key, Scalar) or not key.text:
                 raise self.stop("HG113", key.span, "a key has to be a plain word")
             if key.text in seen:
-                self.findings.error("HG112", key.span, f"the key '{key.text[:60]}' is given twice",
-                                    hint="keep one of the two", related=((seen[key.text].span, "first given here"),))
+                self.findings.error(
+                    "HG112",
+                    key.span,
+                    f"the key '{key.text[:60]}' is given twice",
+                    hint="keep one of the two",
+                    related=((seen[key.text].span, "first given here"),),
+                )
                 raise _Stop
             seen[key.text] = key
             entries.append((key, value))

@@ -19,7 +19,9 @@ _SIDE = {ClaimKind.BETWEEN: "at_least", ClaimKind.LEAVES: "within", ClaimKind.BU
 _ANY = frozenset(RefKind) - {RefKind.LOCAL}
 
 
-def read_claim(behaviour: Behaviour, key: Scalar, group: Mapping, outputs: tuple[Output, ...], jumps: tuple[str, ...]) -> Claim | None:
+def read_claim(
+    behaviour: Behaviour, key: Scalar, group: Mapping, outputs: tuple[Output, ...], jumps: tuple[str, ...]
+) -> Claim | None:
     """One claim."""
     context = behaviour.context
     check_name(key, "a claim", context.findings, word=True)
@@ -31,7 +33,11 @@ def read_claim(behaviour: Behaviour, key: Scalar, group: Mapping, outputs: tuple
     assert node is not None
     side = _SIDE.get(kind)
     for word in ("at_least", "within", "at_most", "except"):
-        if (extra := group.key(word)) is not None and word != side and not (word == "except" and kind is ClaimKind.FALLS):
+        if (
+            (extra := group.key(word)) is not None
+            and word != side
+            and not (word == "except" and kind is ClaimKind.FALLS)
+        ):
             context.error("HG124", extra.span, f"'{word}' does not go with '{kind}'", f"take '{word}' out")
     if side is not None and group.get(side) is None:
         context.error("HG121", group.span, f"claim '{key.text}' needs '{side}'")
@@ -56,7 +62,9 @@ def read_claim(behaviour: Behaviour, key: Scalar, group: Mapping, outputs: tuple
     return Claim(key.text, kind, expr, exception, names, bound, node.span, text)
 
 
-def _expression(behaviour: Behaviour, kind: ClaimKind, node: Node, outputs: tuple[Output, ...]) -> tuple[Tree | None, str]:
+def _expression(
+    behaviour: Behaviour, kind: ClaimKind, node: Node, outputs: tuple[Output, ...]
+) -> tuple[Tree | None, str]:
     if kind is ClaimKind.FALLS:
         found = behaviour.typed(node, None, _ANY, "in a claim")
         if found is None:
@@ -76,16 +84,25 @@ def _jumps(behaviour: Behaviour, node: Node, jumps: tuple[str, ...]) -> tuple[st
     for word in words:
         if word.text not in jumps:
             close = nearest(word.text, jumps)
-            behaviour.context.error("HG201", word.span, f"'{word.text[:40]}' is no jump", f"did you mean '{close}'?" if close else None)
+            behaviour.context.error(
+                "HG201", word.span, f"'{word.text[:40]}' is no jump", f"did you mean '{close}'?" if close else None
+            )
     return tuple(w.text for w in words)
 
 
-def _bump(behaviour: Behaviour, node: Node, group: Mapping, outputs: tuple[Output, ...]) -> tuple[tuple[str, ...], Fraction | None, str]:
+def _bump(
+    behaviour: Behaviour, node: Node, group: Mapping, outputs: tuple[Output, ...]
+) -> tuple[tuple[str, ...], Fraction | None, str]:
     name = node.text if isinstance(node, Scalar) else ""
     output = next((o for o in outputs if o.name == name), None)
     if output is None or output.type != REAL:
         close = nearest(name, [o.name for o in outputs])
-        behaviour.context.error("HG201", node.span, f"'{name[:40]}' is no output that is a number", f"did you mean '{close}'?" if close else None)
+        behaviour.context.error(
+            "HG201",
+            node.span,
+            f"'{name[:40]}' is no output that is a number",
+            f"did you mean '{close}'?" if close else None,
+        )
         return (), None, ""
     bound = behaviour.context.positive(group.get("at_most"), difference_unit(output.unit), "the size", zero=True)
     return (name,), bound, f"bump of {name}"

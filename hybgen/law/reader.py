@@ -21,7 +21,7 @@ from hybgen.law.context import Context
 from hybgen.law.declarations import read_input, read_parameter, read_state, read_table
 from hybgen.law.document import MOST_BYTES, Mapping, Scalar, Sequence, read_document
 from hybgen.law.model import Input, Law, Output, Parameter, State, StateKind
-from hybgen.law.naming import LONGEST, check_law_name, check_name, free_in_c, macro_of
+from hybgen.law.naming import LONGEST, check_law_name, macro_of
 from hybgen.law.promises import read_assumptions, read_claim
 
 MOST_NAMES = 1000
@@ -89,7 +89,9 @@ class _Reader:
         tables = self.each("tables", lambda k, v: read_table(context, k, v))
         context.findings.stop()
         jumps = tuple(k.text for k, _ in self.group("jumps").entries)
-        scope = Scope(_symbols(inputs, parameters, states), {t.name: Curve(t.name, t.x_unit, t.y_unit) for t in tables}, jumps)
+        scope = Scope(
+            _symbols(inputs, parameters, states), {t.name: Curve(t.name, t.x_unit, t.y_unit) for t in tables}, jumps
+        )
         scope, terms = read_terms(context, scope, states, self.group("terms"))
         context.findings.stop()
         behaviour = Behaviour(context, scope, states)
@@ -103,9 +105,27 @@ class _Reader:
         assume = tuple(read_assumptions(behaviour, listed)) if isinstance(listed, Sequence) else ()
         context.findings.stop()
         return Law(
-            self.word("law", ""), context.text(document, "about"), step, self.word("number", "float32"),
-            self.word("thresholds", "safe"), self.word("prefer", "jump"), context.whole(document, "jumps_per_step"),
-            inputs, parameters, states, terms, tables, flow, sample, made_jumps, outputs, claims, assume, file, digest)
+            self.word("law", ""),
+            context.text(document, "about"),
+            step,
+            self.word("number", "float32"),
+            self.word("thresholds", "safe"),
+            self.word("prefer", "jump"),
+            context.whole(document, "jumps_per_step"),
+            inputs,
+            parameters,
+            states,
+            terms,
+            tables,
+            flow,
+            sample,
+            made_jumps,
+            outputs,
+            claims,
+            assume,
+            file,
+            digest,
+        )
 
     def law_span(self) -> Span:
         key = self.document.get("flow") or self.document.get("law")
@@ -127,18 +147,33 @@ class _Reader:
         for section in ("inputs", "parameters", "states", "terms", "tables", "outputs"):
             for key, _ in self.group(section).entries:
                 if (first := seen.get(key.text)) is not None:
-                    self.context.findings.error("HG503", key.span, f"the name '{key.text[:LONGEST]}' is used twice",
-                                                hint="give one of them another name", related=((first.span, "first used here"),))
+                    self.context.findings.error(
+                        "HG503",
+                        key.span,
+                        f"the name '{key.text[:LONGEST]}' is used twice",
+                        hint="give one of them another name",
+                        related=((first.span, "first used here"),),
+                    )
                 seen.setdefault(key.text, key)
                 if isinstance(law, Scalar) and macro_of(law.text, key.text):
-                    self.context.findings.error("HG502", key.span, f"'{key.text}' can't be a name here: the generated header uses it",
-                                                hint="choose another name")
+                    self.context.findings.error(
+                        "HG502",
+                        key.span,
+                        f"'{key.text}' can't be a name here: the generated header uses it",
+                        hint="choose another name",
+                    )
         if len(seen) + len(self.group("jumps").entries) > MOST_NAMES:
             self.context.error("HG139", self.document.span, f"a law has at most {MOST_NAMES} names")
 
 
-def _symbols(inputs: tuple[Input, ...], parameters: tuple[Parameter, ...], states: tuple[State, ...]) -> dict[str, Symbol]:
-    made = [_input_symbol(u) for u in inputs] + [_parameter_symbol(p) for p in parameters] + [_state_symbol(x) for x in states]
+def _symbols(
+    inputs: tuple[Input, ...], parameters: tuple[Parameter, ...], states: tuple[State, ...]
+) -> dict[str, Symbol]:
+    made = (
+        [_input_symbol(u) for u in inputs]
+        + [_parameter_symbol(p) for p in parameters]
+        + [_state_symbol(x) for x in states]
+    )
     return {s.name: s for s in made}
 
 
@@ -156,7 +191,9 @@ def _parameter_symbol(p: Parameter) -> Symbol:
 
 
 def _output_symbols(outputs: tuple[Output, ...]) -> dict[str, Symbol]:
-    return {o.name: Symbol(RefKind.OUTPUT, o.name, o.type, () if o.size is None else (o.size,), o.unit) for o in outputs}
+    return {
+        o.name: Symbol(RefKind.OUTPUT, o.name, o.type, () if o.size is None else (o.size,), o.unit) for o in outputs
+    }
 
 
 def _state_symbol(x: State) -> Symbol:
@@ -167,6 +204,13 @@ def _state_symbol(x: State) -> Symbol:
     elif x.kind is StateKind.LOGIC and x.type.kind is Kind.INT:
         whole = tuple(int(v) for v in x.values)
         bounds, values = (Fraction(min(whole)), Fraction(max(whole))), whole
-    return Symbol(RefKind.STATE, x.name, x.type, () if x.size is None else (x.size,), x.unit, bounds=bounds,
-                  timer=x.kind is StateKind.TIMER, values=values)
-
+    return Symbol(
+        RefKind.STATE,
+        x.name,
+        x.type,
+        () if x.size is None else (x.size,),
+        x.unit,
+        bounds=bounds,
+        timer=x.kind is StateKind.TIMER,
+        values=values,
+    )

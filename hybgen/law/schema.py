@@ -60,7 +60,8 @@ def _record(kind: shape.Record) -> dict[str, Any]:
     if required := [n for n, f in kind.fields.items() if f.required]:
         found["required"] = required
     excludes: dict[str, Any] = {
-        n: {"properties": {other: {"not": {}} for other in f.excludes}} for n, f in kind.fields.items() if f.excludes}
+        n: {"properties": {other: {"not": {}} for other in f.excludes}} for n, f in kind.fields.items() if f.excludes
+    }
     if excludes:
         found["dependentSchemas"] = excludes
     return found
@@ -73,8 +74,18 @@ def _values() -> dict[str, Any]:
 
 def _expression() -> dict[str, Any]:
     own = {"$ref": "#/$defs/expression"}
-    case = {"type": "object", "additionalProperties": False, "required": ["when", "is"], "properties": {"when": own, "is": own}}
-    last = {"type": "object", "additionalProperties": False, "required": ["otherwise"], "properties": {"otherwise": own}}
+    case = {
+        "type": "object",
+        "additionalProperties": False,
+        "required": ["when", "is"],
+        "properties": {"when": own, "is": own},
+    }
+    last = {
+        "type": "object",
+        "additionalProperties": False,
+        "required": ["otherwise"],
+        "properties": {"otherwise": own},
+    }
     cases = {"type": "array", "minItems": 1, "items": {"anyOf": [case, last]}, "contains": last, "maxContains": 1}
     scalar = {"type": ["string", "number", "boolean", "null"]}
     return {"anyOf": [scalar, {"type": "array", "items": {"allOf": [own, {"not": {"type": "object"}}]}}, cases]}

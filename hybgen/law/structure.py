@@ -59,14 +59,23 @@ def _record(node: Node, kind: shape.Record, what: str, findings: Findings) -> No
         check(value, field.kind, f"'{key.text}'", findings)
         for other in field.excludes:
             if other in present:
-                findings.error("HG124", key.span, f"'{key.text}' and '{other}' do not go together in {what}", hint=f"take '{other}' out")
+                findings.error(
+                    "HG124",
+                    key.span,
+                    f"'{key.text}' and '{other}' do not go together in {what}",
+                    hint=f"take '{other}' out",
+                )
     for name, field in kind.fields.items():
         if field.required and name not in present:
             findings.error("HG121", node.span, f"{what} needs '{name}': {field.about}")
 
 
 def _unknown(key: Scalar, value: Node, kind: shape.Record, findings: Findings) -> None:
-    if isinstance(value, Scalar) and not value.text and not value.span.text[value.span.column - 2 : value.span.column].strip(" ,}") == ":":
+    if (
+        isinstance(value, Scalar)
+        and not value.text
+        and not value.span.text[value.span.column - 2 : value.span.column].strip(" ,}") == ":"
+    ):
         torn = key.text[-1:] in ")]" or not key.text.isidentifier()
         if torn:
             findings.error("HG125", key.span, f"'{key.text[:40]}' looks like a piece of an expression", hint=_TORN)
@@ -90,7 +99,9 @@ def _leaf(node: Node, kind: shape.Kind, what: str, findings: Findings) -> None:
                 _wrong(node, what, "a value, a list of values or a list of such lists", findings)
         case shape.Text() | shape.Word() | shape.Flag() | shape.Whole() | shape.Value():
             if not isinstance(node, Scalar) or (not node.text and not isinstance(kind, shape.Text)):
-                _wrong(node, what, "a single value", findings, hint=_TORN if isinstance(node, Sequence | Mapping) else None)
+                _wrong(
+                    node, what, "a single value", findings, hint=_TORN if isinstance(node, Sequence | Mapping) else None
+                )
             else:
                 _word(node, kind, what, findings)
         case _:
@@ -107,17 +118,25 @@ def _numbers(node: Node, depth: int) -> bool:
     return _filled(node)
 
 
-def _word(node: Scalar, kind: shape.Text | shape.Word | shape.Flag | shape.Whole | shape.Value, what: str, findings: Findings) -> None:
+def _word(
+    node: Scalar, kind: shape.Text | shape.Word | shape.Flag | shape.Whole | shape.Value, what: str, findings: Findings
+) -> None:
     match kind:
         case shape.Word() if node.text in kind.later:
-            findings.error("HG190", node.span, f"{what}: '{node.text}' is not available yet", hint=f"use {' or '.join(kind.words)}")
+            findings.error(
+                "HG190", node.span, f"{what}: '{node.text}' is not available yet", hint=f"use {' or '.join(kind.words)}"
+            )
         case shape.Word() if node.text not in kind.words:
             close = nearest(node.text, kind.words)
             hint = f"did you mean '{close}'?" if close else f"known: {', '.join(kind.words)}"
             findings.error("HG123", node.span, f"{what} can't be '{node.text[:40]}'", hint=hint)
         case shape.Flag() if node.text not in ("true", "false"):
-            findings.error("HG123", node.span, f"{what} is true or false, not '{node.text[:40]}'",
-                           hint="only 'true' and 'false' are booleans (YAML 1.2)")
+            findings.error(
+                "HG123",
+                node.span,
+                f"{what} is true or false, not '{node.text[:40]}'",
+                hint="only 'true' and 'false' are booleans (YAML 1.2)",
+            )
         case shape.Whole() if not (node.text.isascii() and node.text.isdigit() and 0 < int(node.text[:12]) < 10**9):
             findings.error("HG122", node.span, f"{what} has to be a whole number above 0, not '{node.text[:40]}'")
         case shape.Text() | shape.Word() | shape.Flag() | shape.Whole() | shape.Value():
@@ -128,7 +147,13 @@ def _word(node: Scalar, kind: shape.Text | shape.Word | shape.Flag | shape.Whole
 
 def _expression(node: Node, what: str, findings: Findings) -> None:
     if isinstance(node, Mapping):
-        _wrong(node, what, "an expression, a list of cases or a vector", findings, hint="cases are a list: - when: … / is: …")
+        _wrong(
+            node,
+            what,
+            "an expression, a list of cases or a vector",
+            findings,
+            hint="cases are a list: - when: … / is: …",
+        )
     elif isinstance(node, Sequence):
         if any(isinstance(i, Mapping) for i in node.items):
             _cases(node, what, findings)
@@ -151,5 +176,9 @@ def _cases(node: Sequence, what: str, findings: Findings) -> None:
                 _expression(value, f"'{key.text}'", findings)
         if sorted(keys) != sorted(wanted):
             hint = "the last case is 'otherwise'" if last else "each case but the last has 'when' and 'is'"
-            findings.error("HG121" if set(keys) < {"when", "is"} or last else "HG120", item.span,
-                           f"this case of {what} has {', '.join(keys)[:60]}, not {' and '.join(wanted)}", hint=hint)
+            findings.error(
+                "HG121" if set(keys) < {"when", "is"} or last else "HG120",
+                item.span,
+                f"this case of {what} has {', '.join(keys)[:60]}, not {' and '.join(wanted)}",
+                hint=hint,
+            )

@@ -43,7 +43,9 @@ def reads(node: Node, definitions: Mapping[str, Node], memo: dict[str, frozenset
     return frozenset(found)
 
 
-def ordered(assignments: Sequence[Assignment], definitions: Mapping[str, Node], value: Callable[[Node], Value]) -> Statements:
+def ordered(
+    assignments: Sequence[Assignment], definitions: Mapping[str, Node], value: Callable[[Node], Value]
+) -> Statements:
     """The assignments in an order in which each sees the old values; locals only where there is no such order."""
     memo: dict[str, frozenset[Cell]] = {}
     left = [(a, reads(a.expr, definitions, memo)) for a in assignments if not _stays(a)]
@@ -84,9 +86,18 @@ def merged(body: Statements) -> Statements:
             pending.append(statement)
             continue
         last = made[-1] if made else None
-        if isinstance(statement, If) and isinstance(last, If) and last.condition == statement.condition and _outside(last, statement):
+        if (
+            isinstance(statement, If)
+            and isinstance(last, If)
+            and last.condition == statement.condition
+            and _outside(last, statement)
+        ):
             notes = tuple(pending)
-            made[-1] = If(last.condition, (*last.then, *_noted(notes, statement.then)), (*last.orelse, *_noted(notes, statement.orelse)))
+            made[-1] = If(
+                last.condition,
+                (*last.then, *_noted(notes, statement.then)),
+                (*last.orelse, *_noted(notes, statement.orelse)),
+            )
         else:
             made += _hung(statement, pending)
         pending = []
@@ -174,7 +185,9 @@ class Lets:
 
     def needed(self, body: Statements) -> frozenset[str]:
         """The definitions that a body uses, through others."""
-        return self._closure({v.name for s in statements(body) for o in own(s) for v in values(o) if isinstance(v, Local)})
+        return self._closure(
+            {v.name for s in statements(body) for o in own(s) for v in values(o) if isinstance(v, Local)}
+        )
 
     def _closure(self, names: set[str]) -> frozenset[str]:
         for _, let in reversed(self.lets):
@@ -186,7 +199,12 @@ class Lets:
         """The body with each definition computed once, in the innermost block that holds all its uses."""
         direct = {v.name for s in body for o in own(s) for v in values(o) if isinstance(v, Local)}
         inner = [self.needed(block) for s in body for block in blocks(s) if block]
-        shared = {n for i, names in enumerate(inner) for n in names if any(n in other for j, other in enumerate(inner) if j != i)}
+        shared = {
+            n
+            for i, names in enumerate(inner)
+            for n in names
+            if any(n in other for j, other in enumerate(inner) if j != i)
+        }
         here = self._closure(direct | shared)
         rest = Lets(tuple((note, let) for note, let in self.lets if let.name not in here))
         made: list[Statement] = []

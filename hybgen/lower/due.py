@@ -94,4 +94,3 @@ def _label(value: Value) -> Constant:
 
 def _not(condition: Node, values: Values) -> Value:
     return Apply("not", (values.of(condition),), "bool")
-

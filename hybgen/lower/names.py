@@ -7,9 +7,42 @@ from dataclasses import dataclass, field
 from hybgen.ir.model import HELPERS
 from hybgen.step.model import Status
 
-API = ("inputs", "parameters", "outputs", "defaults", "init", "step", "check_parameters", "jump_name", "now", "read", "watch", "due", "take",
-       "give", "advance")
-LOCALS = ("self", "p", "u", "y", "now", "status", "jump", "taken", "answer", "used", "double", "float", "int", "if", "for", "while", "do")
+API = (
+    "inputs",
+    "parameters",
+    "outputs",
+    "defaults",
+    "init",
+    "step",
+    "check_parameters",
+    "jump_name",
+    "now",
+    "read",
+    "watch",
+    "due",
+    "take",
+    "give",
+    "advance",
+)
+LOCALS = (
+    "self",
+    "p",
+    "u",
+    "y",
+    "now",
+    "status",
+    "jump",
+    "taken",
+    "answer",
+    "used",
+    "double",
+    "float",
+    "int",
+    "if",
+    "for",
+    "while",
+    "do",
+)
 
 
 def reserved(law: str) -> set[str]:

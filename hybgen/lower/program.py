@@ -9,7 +9,24 @@ from fractions import Fraction
 from hybgen.diag.span import Span
 from hybgen.expr.core import BOOL, INT, REAL, Node, Ref, RefKind, integer, op
 from hybgen.ir.model import (
-    HELPERS, Answer, Apply, Constant, Field, Function, If, Jump, Let, Local, Note, Program, Raise, Statement, Store, Switch, Table, Value,
+    HELPERS,
+    Answer,
+    Apply,
+    Constant,
+    Field,
+    Function,
+    If,
+    Jump,
+    Let,
+    Local,
+    Note,
+    Program,
+    Raise,
+    Statement,
+    Store,
+    Switch,
+    Table,
+    Value,
 )
 from hybgen.ir.verify import verify
 from hybgen.ir.walk import all_values, statements
@@ -46,12 +63,32 @@ class _Builder:
         functions = tuple(f for f in self._functions() if f is not None)
         defaults = tuple(tuple(parts.values.constant(v, p.type) for v in p.default) for p in made.parameters)
         return Program(
-            law.name, law.about, law.file, law.digest, VERSION, f"{float(made.step):.9g} s", made.format.name, made.method,
-            "float" if made.format.precision == 24 else "double", made.format.precision, made.format.max, parts.enums, parts.inputs,
-            parts.parameters, parts.outputs, parts.states, parts.now, defaults, tuple(r.text for r in made.rules),
-            tuple(Jump(j.number, m, j.name) for j, m in zip(made.jumps, parts.macros, strict=True)), made.jumps_per_step,
-            tuple(Table(parts.values.tables[t.name], t.x, t.y, t.slope, _place(t.span)) for t in made.tables), _helpers(functions), functions,
-            made.flow_condition is not None)
+            law.name,
+            law.about,
+            law.file,
+            law.digest,
+            VERSION,
+            f"{float(made.step):.9g} s",
+            made.format.name,
+            made.method,
+            "float" if made.format.precision == 24 else "double",
+            made.format.precision,
+            made.format.max,
+            parts.enums,
+            parts.inputs,
+            parts.parameters,
+            parts.outputs,
+            parts.states,
+            parts.now,
+            defaults,
+            tuple(r.text for r in made.rules),
+            tuple(Jump(j.number, m, j.name) for j, m in zip(made.jumps, parts.macros, strict=True)),
+            made.jumps_per_step,
+            tuple(Table(parts.values.tables[t.name], t.x, t.y, t.slope, _place(t.span)) for t in made.tables),
+            _helpers(functions),
+            functions,
+            made.flow_condition is not None,
+        )
 
     def _functions(self) -> Iterator[Function | None]:
         yield self._function("init", "the state after start", tuple(self._init()))
@@ -81,8 +118,10 @@ class _Builder:
     def _lets(self) -> Iterator[tuple[Note, Let]]:
         for d in self.made.definitions:
             value = self._value(d.expr)
-            yield self._note(d.span, d.text if " " in d.name else f"{d.name}: {d.text}"), Let(
-                self.parts.values.locals[d.name], value.type, value)
+            yield (
+                self._note(d.span, d.text if " " in d.name else f"{d.name}: {d.text}"),
+                Let(self.parts.values.locals[d.name], value.type, value),
+            )
 
     def _value(self, node: Node) -> Value:
         return self.parts.values.of(node)
@@ -157,13 +196,17 @@ class _Builder:
         low, high = (self.parts.values.constant(v, u.type) for v in (u.low, u.high))
         return Apply("and", (Apply("ge", (raw, low), "bool"), Apply("le", (raw, high), "bool")), "bool")
 
-    def _taken(self, u: StepInput, raw: Sequence[Field], seen: Sequence[Field], indexes: Sequence[int | None]) -> Statements:
+    def _taken(
+        self, u: StepInput, raw: Sequence[Field], seen: Sequence[Field], indexes: Sequence[int | None]
+    ) -> Statements:
         made: list[Statement] = [Store(n, r) for n, r in zip(seen, raw, strict=True)]
         if u.held:
             made += [Store(self._held(u, i), r) for i, r in zip(indexes, raw, strict=True)]
         return tuple(made)
 
-    def _replaced(self, u: StepInput, raw: Sequence[Field], seen: Sequence[Field], indexes: Sequence[int | None]) -> Statements:
+    def _replaced(
+        self, u: StepInput, raw: Sequence[Field], seen: Sequence[Field], indexes: Sequence[int | None]
+    ) -> Statements:
         constant = self.parts.values.constant
         made: list[Statement] = []
         for r, n, i in zip(raw, seen, indexes, strict=True):
@@ -215,13 +258,17 @@ class _Builder:
                 return self._guarded(target, value, a.clamp)
             return (Let(name, value.type, value), *self._guarded(target, Local(name, value.type), a.clamp))
 
-        return Assignment((a.state, a.index), a.expr, self._note(a.span, f"{component(a.state, a.index)}: {a.text}"), store, name)
+        return Assignment(
+            (a.state, a.index), a.expr, self._note(a.span, f"{component(a.state, a.index)}: {a.text}"), store, name
+        )
 
     def _new(self, name: str, index: int | None) -> str:
         """A local for a new value until it is stored."""
         return Namer(set(LOCALS) | set(self.parts.values.locals.values())).unique(f"new_{component(name, index)}")
 
-    def _guarded(self, target: Field, value: Local, clamp: tuple[Fraction | int | bool, Fraction | int | bool] | None) -> Statements:
+    def _guarded(
+        self, target: Field, value: Local, clamp: tuple[Fraction | int | bool, Fraction | int | bool] | None
+    ) -> Statements:
         finite = Apply("finite", (value,), "bool")
         return (If(finite, (Store(target, self._held_inside(value, clamp)),), (Raise("NON_FINITE"),)),)
 
@@ -267,8 +314,10 @@ class _Builder:
             return flowing
         due = Apply("eq", (Constant("jump", "word"), Constant(0, "word")), "bool")
         still = (*self._ordered(self.made.sample), If(due, (Raise("STUCK"),)))
-        return (self._note(self.made.law.flow.span, f"flow: {self.made.law.flow.text}"),
-                If(self._value(self.made.flow_condition), flowing, still))
+        return (
+            self._note(self.made.law.flow.span, f"flow: {self.made.law.flow.text}"),
+            If(self._value(self.made.flow_condition), flowing, still),
+        )
 
     def _timer(self, name: str, top: int, span: Span) -> Assignment:
         """One step more, holding at the top."""
@@ -276,7 +325,13 @@ class _Builder:
         plus = Apply("iadd", (field, Constant(1, "int")), "int")
         count = If(Apply("lt", (field, Constant(top, "int")), "bool"), (Store(field, plus),))
         ref = Ref(RefKind.STATE, name, INT)
-        return Assignment((name, None), op("iadd", ref, integer(1)), self._note(span, f"{name} counts steps"), lambda _: (count,), name)
+        return Assignment(
+            (name, None),
+            op("iadd", ref, integer(1)),
+            self._note(span, f"{name} counts steps"),
+            lambda _: (count,),
+            name,
+        )
 
 
 def _indexes(size: int | None) -> list[int | None]:
@@ -290,4 +345,3 @@ def _place(span: Span) -> str:
 def _helpers(functions: Iterable[Function]) -> tuple[str, ...]:
     used = {v.op for f in functions for v in all_values(f.body) if isinstance(v, Apply)} & HELPERS
     return tuple(sorted(used))
-

@@ -51,13 +51,27 @@ def structs(made: StepLaw, namer: Namer) -> Structs:
     held = {u.name: f"held_{u.name}" for u in made.inputs if u.held}
     law = made.law
     states = [Member(x.name, values.type(x.type), x.size, _state_note(law.state(x.name), made)) for x in made.states]
-    states += [Member(held[u.name], values.type(u.type), u.size, f"last good sample of {u.name}") for u in made.inputs if u.held]
+    states += [
+        Member(held[u.name], values.type(u.type), u.size, f"last good sample of {u.name}")
+        for u in made.inputs
+        if u.held
+    ]
     return Structs(
         tuple(enums),
         tuple(Member(u.name, values.type(u.type), u.size, _input_note(u)) for u in law.inputs),
-        tuple(Member(p.name, values.type(p.type), p.size, _parameter_note(law.parameter(p.name))) for p in made.parameters),
-        tuple(Member(o.name, values.type(o.type), o.size, _joined(_unit(o.unit), _range(o.low, o.high), o.about)) for o in law.outputs),
-        tuple(states), now, values, macros, held)
+        tuple(
+            Member(p.name, values.type(p.type), p.size, _parameter_note(law.parameter(p.name))) for p in made.parameters
+        ),
+        tuple(
+            Member(o.name, values.type(o.type), o.size, _joined(_unit(o.unit), _range(o.low, o.high), o.about))
+            for o in law.outputs
+        ),
+        tuple(states),
+        now,
+        values,
+        macros,
+        held,
+    )
 
 
 def _now(made: StepLaw) -> tuple[dict[tuple[RefKind, str], str], tuple[Member, ...]]:
@@ -73,7 +87,9 @@ def _now(made: StepLaw) -> tuple[dict[tuple[RefKind, str], str], tuple[Member, .
     for jump in made.jumps:
         if jump.flagged:
             names[(RefKind.JUMPED, jump.name)] = namer.unique(f"jumped_{jump.name}")
-            members.append(Member(names[(RefKind.JUMPED, jump.name)], "bool", None, f"was {jump.name} taken in this step?"))
+            members.append(
+                Member(names[(RefKind.JUMPED, jump.name)], "bool", None, f"was {jump.name} taken in this step?")
+            )
     return names, tuple(members)
 
 
@@ -130,4 +146,3 @@ def _state_note(x: State, made: StepLaw) -> str:
             return _joined(_unit(x.unit), _range(x.low, x.high), x.about)
         case _:
             return x.about
-

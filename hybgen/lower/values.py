@@ -9,7 +9,13 @@ from fractions import Fraction
 from hybgen.expr.core import Const, Kind, Node, Op, Ref, RefKind, Type
 from hybgen.ir.model import Apply, Constant, Field, Local, Value
 
-_BASES = {RefKind.INPUT: "now", RefKind.VALID: "now", RefKind.JUMPED: "now", RefKind.PARAMETER: "p", RefKind.STATE: "self"}
+_BASES = {
+    RefKind.INPUT: "now",
+    RefKind.VALID: "now",
+    RefKind.JUMPED: "now",
+    RefKind.PARAMETER: "p",
+    RefKind.STATE: "self",
+}
 
 
 @dataclass(frozen=True, slots=True)
@@ -44,4 +50,6 @@ class Values:
                 name = self.names.get((node.kind, node.name), node.name)
                 return Field(_BASES[node.kind], name, node.index, self.type(node.type))
             case Op():
-                return Apply(node.op, tuple(self.of(a) for a in node.args), self.type(node.type), self.tables.get(node.table, ""))
+                return Apply(
+                    node.op, tuple(self.of(a) for a in node.args), self.type(node.type), self.tables.get(node.table, "")
+                )

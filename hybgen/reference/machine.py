@@ -35,6 +35,7 @@ def dtype_of(type_: Type, fmt: Format) -> np.dtype[Any]:
 
 def layout(made: StepLaw, which: str) -> list[tuple[str, np.dtype[Any], tuple[int, ...]]]:
     """Names, types and component shapes of `inputs`, `parameters`, `outputs` or `state`, in the order of the C structs."""
+
     def row(name: str, type_: Type, size: int | None) -> tuple[str, np.dtype[Any], tuple[int, ...]]:
         return name, dtype_of(type_, made.format), () if size is None else (size,)
 
@@ -63,7 +64,8 @@ class Machine:
         self.parameters = self._blank("parameters")
         for p in made.parameters:
             self.parameters[p.name][...] = np.array([_number(v) for v in p.default]).reshape(
-                self.parameters[p.name].shape[1:] or ())
+                self.parameters[p.name].shape[1:] or ()
+            )
         for name, value in (parameters or {}).items():
             if name not in self.parameters:
                 raise ValueError(f"'{name}' is no tunable parameter; there {_are(self.parameters)}")
@@ -145,7 +147,10 @@ class Machine:
             found = self._series({n: a[:, None, ...] for n, a in arrays.items()}, self._steps(arrays, inputs))
             return {n: a[:, 0, ...] for n, a in found.items()}
         lanes = max(a.shape[1] for n, a in arrays.items() if a.ndim - self._rank(n) == 2)
-        wide = {n: a if a.ndim - self._rank(n) == 2 else np.repeat(a[:, None, ...], lanes, axis=1) for n, a in arrays.items()}
+        wide = {
+            n: a if a.ndim - self._rank(n) == 2 else np.repeat(a[:, None, ...], lanes, axis=1)
+            for n, a in arrays.items()
+        }
         return self._spawn(lanes)._series(wide, self._steps(arrays, inputs))
 
     def _steps(self, arrays: Fields, inputs: Mapping[str, Any]) -> int:
@@ -172,15 +177,21 @@ class Machine:
         extra = [n for n in inputs if n not in known and not (n == "steps" and not known)]
         missing = [n for n in known if n not in inputs]
         if extra or missing:
-            words = [f"unknown: {', '.join(map(str, extra))}"] * bool(extra) + [f"missing: {', '.join(missing)}"] * bool(missing)
+            words = [f"unknown: {', '.join(map(str, extra))}"] * bool(extra) + [
+                f"missing: {', '.join(missing)}"
+            ] * bool(missing)
             raise ValueError(f"the inputs of {self.law.name} are {', '.join(known) or 'none'} ({'; '.join(words)})")
-        return {n: self._sample(n, u.type, inputs[n], () if u.size is None else (u.size,), axes) for n, u in known.items()}
+        return {
+            n: self._sample(n, u.type, inputs[n], () if u.size is None else (u.size,), axes) for n, u in known.items()
+        }
 
     def _sample(self, name: str, type_: Type, value: Any, shape: tuple[int, ...], axes: int) -> Array:
         wanted = dtype_of(type_, self.step_law.format)
         try:
             raw = np.asarray(value)
-            if wanted.kind == "i" and (raw.dtype.kind not in "iub" or np.any(np.abs(raw.astype(np.int64)) > LARGEST_COUNT)):
+            if wanted.kind == "i" and (
+                raw.dtype.kind not in "iub" or np.any(np.abs(raw.astype(np.int64)) > LARGEST_COUNT)
+            ):
                 raise ValueError("whole numbers of 32 bits are needed")
             if raw.dtype.kind not in "iufb":
                 raise ValueError(f"{raw.dtype} is no number")

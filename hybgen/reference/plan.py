@@ -66,7 +66,9 @@ class Planner:
         slots = tuple(building.slot(r) for r in roots)
         watch = tuple(building.slot(w) for w in watched)
         loaded = frozenset(at for at, _ in building.loads)
-        made = Plan(tuple(building.constants), tuple(building.loads), tuple(building.work), slots, building.size, loaded)
+        made = Plan(
+            tuple(building.constants), tuple(building.loads), tuple(building.work), slots, building.size, loaded
+        )
         return made, watch
 
 

@@ -50,9 +50,17 @@ def _plans(made: StepLaw) -> _Plans:
     def plan(nodes: Sequence[Node]) -> Plan:
         return planner.plan(nodes)[0]
 
-    return _Plans(plan([r.condition for r in made.rules]), plan(made.alarms), due,
-                  tuple(plan([a.expr for a in j.assigns]) for j in made.jumps), plan([o.expr for o in made.outputs]),
-                  plan([a.expr for a in made.flow]), plan([a.expr for a in made.sample]), tuple(watched), watch)
+    return _Plans(
+        plan([r.condition for r in made.rules]),
+        plan(made.alarms),
+        due,
+        tuple(plan([a.expr for a in j.assigns]) for j in made.jumps),
+        plan([o.expr for o in made.outputs]),
+        plan([a.expr for a in made.flow]),
+        plan([a.expr for a in made.sample]),
+        tuple(watched),
+        watch,
+    )
 
 
 class Reference(Machine):
@@ -63,8 +71,16 @@ class Reference(Machine):
     of the flow, whether it was ever true and ever false (while `recording`); `taken` counts the jumps.
     """
 
-    def __init__(self, law: Law | StepLaw, parameters: Mapping[str, Any] | None = None, *, step: Fraction | None = None,
-                 number: str | None = None, lanes: int = 1, plans: _Plans | None = None) -> None:
+    def __init__(
+        self,
+        law: Law | StepLaw,
+        parameters: Mapping[str, Any] | None = None,
+        *,
+        step: Fraction | None = None,
+        number: str | None = None,
+        lanes: int = 1,
+        plans: _Plans | None = None,
+    ) -> None:
         made = build(law, step=step, number=number) if isinstance(law, Law) else law
         self._plans = plans or _plans(made)
         self.recording = False
@@ -117,7 +133,9 @@ class Reference(Machine):
             if ref.kind in sources:
                 array = sources[ref.kind][ref.name]
             else:
-                name = {RefKind.VALID: f"valid {ref.name}", RefKind.JUMPED: f"jumped {ref.name}"}.get(ref.kind, ref.name)
+                name = {RefKind.VALID: f"valid {ref.name}", RefKind.JUMPED: f"jumped {ref.name}"}.get(
+                    ref.kind, ref.name
+                )
                 array = self.snapshot[name]
             array = array if ref.index is None else array[:, ref.index]
             return array if lanes is None else array[lanes]
@@ -150,7 +168,9 @@ class Reference(Machine):
 
     def _sampled(self, u: StepInput, raw: Array, status: Array) -> None:
         dtype = raw.dtype.type
-        low, high, substitute = (dtype(float(v) if isinstance(v, Fraction) else v) for v in (u.low, u.high, u.substitute))
+        low, high, substitute = (
+            dtype(float(v) if isinstance(v, Fraction) else v) for v in (u.low, u.high, u.substitute)
+        )
         good = (raw >= low) & (raw <= high)
         whole = good if u.size is None else good.all(axis=1)
         each = good if u.size is None or u.invalid == "clamp" else whole[:, None]
@@ -277,6 +297,3 @@ class Reference(Machine):
             return np.arange(self.lanes)
         holds = self._plans.due.run(self._load(None))[0][-1]
         return np.flatnonzero(np.broadcast_to(holds, (self.lanes,)))
-
-
-

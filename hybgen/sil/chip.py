@@ -73,7 +73,9 @@ class Library:
     """(C type, array) -> a pointer to the array's memory."""
 
 
-def load_many(laws: Sequence[StepLaw], flags: Sequence[str] = FLAGS, files: Mapping[str, str] | None = None) -> list[Library]:
+def load_many(
+    laws: Sequence[StepLaw], flags: Sequence[str] = FLAGS, files: Mapping[str, str] | None = None
+) -> list[Library]:
     """Compiles the C of laws with different names into one shared object. `files` replaces generated ones."""
     import cffi  # only where C is loaded
 
@@ -91,8 +93,10 @@ def load_many(laws: Sequence[StepLaw], flags: Sequence[str] = FLAGS, files: Mapp
     ffi = cffi.FFI()
     for made, values in zip(laws, expected, strict=True):
         name = made.law.name
-        ffi.cdef(f"void hybgen_{name}_lanes(void *, const void *, const void *, void *, uint32_t *, size_t, size_t);"
-                 f"extern const uint32_t hybgen_{name}_places[{len(values)}];")
+        ffi.cdef(
+            f"void hybgen_{name}_lanes(void *, const void *, const void *, void *, uint32_t *, size_t, size_t);"
+            f"extern const uint32_t hybgen_{name}_places[{len(values)}];"
+        )
     with tempfile.TemporaryDirectory(prefix="hybgen-") as place:
         library = ffi.dlopen(str(shared_object(texts, "all.c", Path(place), flags)))
     found = []
@@ -106,9 +110,18 @@ def load_many(laws: Sequence[StepLaw], flags: Sequence[str] = FLAGS, files: Mapp
 class Chip(Machine):
     """The law as its generated C. Raises toolchain.NoCompiler, toolchain.CompilerRefused."""
 
-    def __init__(self, law: Law | StepLaw, parameters: Mapping[str, Any] | None = None, *, step: Fraction | None = None,
-                 number: str | None = None, lanes: int = 1, library: Library | None = None, flags: Sequence[str] = FLAGS,
-                 files: Mapping[str, str] | None = None) -> None:
+    def __init__(
+        self,
+        law: Law | StepLaw,
+        parameters: Mapping[str, Any] | None = None,
+        *,
+        step: Fraction | None = None,
+        number: str | None = None,
+        lanes: int = 1,
+        library: Library | None = None,
+        flags: Sequence[str] = FLAGS,
+        files: Mapping[str, str] | None = None,
+    ) -> None:
         made = build(law, step=step, number=number) if isinstance(law, Law) else law
         self._library = library or load_many([made], flags, files)[0]
         self._structs: dict[str, Array] = {}
@@ -128,7 +141,10 @@ class Chip(Machine):
         return other
 
     def _call(self, u: Array, y: Array, status: Array, steps: int) -> None:
-        pointers = [self._library.buffer("unsigned char[]", a) for a in (self._structs["state"], self._structs["parameters"], u, y)]
+        pointers = [
+            self._library.buffer("unsigned char[]", a)
+            for a in (self._structs["state"], self._structs["parameters"], u, y)
+        ]
         self._library.lanes(*pointers, self._library.buffer("uint32_t[]", status), self.lanes, steps)
 
     def _advance(self, inputs: Fields) -> Fields:
@@ -155,7 +171,12 @@ class Chip(Machine):
         return y, status
 
 
-def compile(law: Law | StepLaw, parameters: Mapping[str, Any] | None = None, *, step: Fraction | None = None,
-            number: str | None = None) -> Chip:
+def compile(
+    law: Law | StepLaw,
+    parameters: Mapping[str, Any] | None = None,
+    *,
+    step: Fraction | None = None,
+    number: str | None = None,
+) -> Chip:
     """The law's C, built for this host and loaded. Raises toolchain.NoCompiler with the install command."""
     return Chip(law, parameters, step=step, number=number)

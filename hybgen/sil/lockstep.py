@@ -47,8 +47,15 @@ class Difference:
 
     def to_json(self) -> dict[str, Any]:
         """JSON-ready data, without the replay log."""
-        return {"campaign": self.campaign, "step": self.step, "lane": self.lane, "field": self.field,
-                "reference": self.reference, "c": self.c, "where": self.where}
+        return {
+            "campaign": self.campaign,
+            "step": self.step,
+            "lane": self.lane,
+            "field": self.field,
+            "reference": self.reference,
+            "c": self.c,
+            "where": self.where,
+        }
 
 
 @dataclass(frozen=True, slots=True)
@@ -74,9 +81,17 @@ class SilReport:
 
     def to_json(self) -> dict[str, Any]:
         """JSON-ready data."""
-        return {"law": self.law, "target": self.target, "equal": self.equal, "lanes": self.lanes, "steps": self.steps,
-                "first_difference": self.first_difference.to_json() if self.first_difference else None,
-                "conditions": {"covered": self.covered, "total": self.conditions}, "jumps": dict(self.jumps), "mutants": None}
+        return {
+            "law": self.law,
+            "target": self.target,
+            "equal": self.equal,
+            "lanes": self.lanes,
+            "steps": self.steps,
+            "first_difference": self.first_difference.to_json() if self.first_difference else None,
+            "conditions": {"covered": self.covered, "total": self.conditions},
+            "jumps": dict(self.jumps),
+            "mutants": None,
+        }
 
 
 def bits(array: Array) -> Array:
@@ -102,8 +117,16 @@ def compared(reference: Reference, chip: Chip, outputs: Fields, given: Fields) -
     return None
 
 
-def run(law: Law | StepLaw, *, lanes: int = LANES, steps: int = STEPS, step: Fraction | None = None, number: str | None = None,
-        chip: Chip | None = None, progress: Progress | None = None) -> SilReport:
+def run(
+    law: Law | StepLaw,
+    *,
+    lanes: int = LANES,
+    steps: int = STEPS,
+    step: Fraction | None = None,
+    number: str | None = None,
+    chip: Chip | None = None,
+    progress: Progress | None = None,
+) -> SilReport:
     """The whole comparison: long runs from the start, then injected states.
 
     `chip` replaces the C (for negative controls); it has to have `lanes` lanes. Raises toolchain.NoCompiler.
@@ -154,7 +177,9 @@ def _place(reference: Reference, chip: Chip, states: Fields) -> None:
         chip.fields[name][...] = array
 
 
-def _rounds(reference: Reference, chip: Chip, history: list[Fields], campaign: str, start: Fields) -> tuple[Difference | None, int]:
+def _rounds(
+    reference: Reference, chip: Chip, history: list[Fields], campaign: str, start: Fields
+) -> tuple[Difference | None, int]:
     """Lock-step over the last part of the history."""
     inputs = history[-1]
     steps = len(next(iter(inputs.values()))) if inputs else CHUNK
@@ -168,14 +193,24 @@ def _rounds(reference: Reference, chip: Chip, history: list[Fields], campaign: s
     return None, steps * reference.lanes
 
 
-def _difference(reference: Reference, found: tuple[int, str, Array, Array], history: list[Fields], k: int, campaign: str,
-                start: Fields) -> Difference:
+def _difference(
+    reference: Reference,
+    found: tuple[int, str, Array, Array],
+    history: list[Fields],
+    k: int,
+    campaign: str,
+    start: Fields,
+) -> Difference:
     lane, name, one, other = found
     before = sum(len(next(iter(h.values()))) if h else CHUNK for h in history[:-1])
-    inputs = {n: np.concatenate([h[n][:, lane] for h in history[:-1]] + [history[-1][n][: k + 1, lane]]) for n in history[-1]}
+    inputs = {
+        n: np.concatenate([h[n][:, lane] for h in history[:-1]] + [history[-1][n][: k + 1, lane]]) for n in history[-1]
+    }
     parameters = {n: a[lane] for n, a in reference.parameters.items()}
     replay = recording(reference.step_law, inputs, before + k + 1, parameters, {n: a[lane] for n, a in start.items()})
-    return Difference(campaign, before + k, lane, name, _hex(one[lane]), _hex(other[lane]), _where(reference.step_law, name), replay)
+    return Difference(
+        campaign, before + k, lane, name, _hex(one[lane]), _hex(other[lane]), _where(reference.step_law, name), replay
+    )
 
 
 def _hex(value: Any) -> str:
@@ -196,6 +231,18 @@ def _where(made: StepLaw, name: str) -> str:
 def _report(made: StepLaw, reference: Reference, lanes: int, total: int, difference: Difference | None) -> SilReport:
     seen = reference.seen
     names = [f"{who}: {expression(a, made)}" for who, a in reference.conditions]
-    open_ = tuple(f"{n} (never {'true' if not s[1] else 'false'})" for n, s in zip(names, seen, strict=True) if not s.all())
+    open_ = tuple(
+        f"{n} (never {'true' if not s[1] else 'false'})" for n, s in zip(names, seen, strict=True) if not s.all()
+    )
     jumps = {j.name: int(n) for j, n in zip(made.jumps, reference.taken, strict=True)}
-    return SilReport(made.law.name, "host", lanes, total, difference, int(seen.all(axis=1).sum()) if len(seen) else 0, len(seen), jumps, open_)
+    return SilReport(
+        made.law.name,
+        "host",
+        lanes,
+        total,
+        difference,
+        int(seen.all(axis=1).sum()) if len(seen) else 0,
+        len(seen),
+        jumps,
+        open_,
+    )

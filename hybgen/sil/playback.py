@@ -71,7 +71,9 @@ def play(law: Law | StepLaw, log: Log, *, step: Fraction | None = None, number: 
             break
     seen = reference.seen
     jumps = {j.name: int(n) for j, n in zip(made.jumps, reference.taken, strict=True)}
-    report = SilReport(made.law.name, "host", 1, done, difference, int(seen.all(axis=1).sum()) if len(seen) else 0, len(seen), jumps)
+    report = SilReport(
+        made.law.name, "host", 1, done, difference, int(seen.all(axis=1).sum()) if len(seen) else 0, len(seen), jumps
+    )
     return Playback(report, tuple(events))
 
 
@@ -101,8 +103,16 @@ def _tune(reference: Reference, chip: Chip, log: Log, k: int) -> None:
 
 def _events(reference: Reference, before: dict[str, Any], made: StepLaw, k: int) -> list[Event]:
     """The jumps of one step, in the order in which they were taken."""
-    return [Event(float(k * made.step), k, made.jumps[n - 1].name, made.jumps[n - 1].text, _values(reference, before, made.jumps[n - 1]))
-            for n in reference.trail]
+    return [
+        Event(
+            float(k * made.step),
+            k,
+            made.jumps[n - 1].name,
+            made.jumps[n - 1].text,
+            _values(reference, before, made.jumps[n - 1]),
+        )
+        for n in reference.trail
+    ]
 
 
 def _values(reference: Reference, before: dict[str, Any], jump: StepJump) -> dict[str, Any]:

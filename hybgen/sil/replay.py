@@ -41,7 +41,9 @@ class Log:
     start: Mapping[str, float]
 
 
-def recording(made: StepLaw, inputs: Fields, steps: int, parameters: Mapping[str, Any], start: Mapping[str, Any]) -> str:
+def recording(
+    made: StepLaw, inputs: Fields, steps: int, parameters: Mapping[str, Any], start: Mapping[str, Any]
+) -> str:
     """A log of one lane as CSV text; numbers are written so that reading gives the same bits."""
     columns: list[tuple[str, list[Any]]] = []
     for name, array in inputs.items():
@@ -88,7 +90,12 @@ def read_log(text: str, file: str, made: StepLaw) -> Log:
     rows = list(csv.reader(io.StringIO(text)))
     lines = [i + 1 for i, row in enumerate(rows) if row and any(c.strip() for c in row)]
     if len(lines) < 2:
-        findings.error("HG610", Span(file, 1, 1), "this log has no rows", hint="the first row names the columns, the others hold samples")
+        findings.error(
+            "HG610",
+            Span(file, 1, 1),
+            "this log has no rows",
+            hint="the first row names the columns, the others hold samples",
+        )
         findings.stop()
     header = rows[lines[0] - 1]
     columns = [_column(cell, i, file, lines[0], made, findings) for i, cell in enumerate(header)]
@@ -115,13 +122,21 @@ def _column(cell: str, number: int, file: str, line: int, made: StepLaw, finding
         return _Column("t", "t", None, known_real(), _factor(rest, SECOND, where, findings))
     if name not in known:
         close = nearest(name, known)
-        findings.error("HG611", where, f"column {number + 1}, '{text[:40]}', is no input or parameter of {made.law.name}",
-                       hint=f"did you mean '{close}'?" if close else f"known: {', '.join(known)}")
+        findings.error(
+            "HG611",
+            where,
+            f"column {number + 1}, '{text[:40]}', is no input or parameter of {made.law.name}",
+            hint=f"did you mean '{close}'?" if close else f"known: {', '.join(known)}",
+        )
         return None
     kind, type_, unit, size = known[name]
     if (size is None) != (index is None) or (size is not None and index is not None and index >= size):
-        findings.error("HG611", where, f"column {number + 1}: '{name}' has {size or 1} component{'s' if size else ''}",
-                       hint=f"write {name}[0] for the first" if size else None)
+        findings.error(
+            "HG611",
+            where,
+            f"column {number + 1}: '{name}' has {size or 1} component{'s' if size else ''}",
+            hint=f"write {name}[0] for the first" if size else None,
+        )
         return None
     return _Column(kind, name, index, type_, _factor(rest, unit, where, findings))
 
@@ -150,7 +165,9 @@ def _factor(rest: str, unit: Unit, where: Span, findings: Findings) -> Fraction:
         findings.error("HG214", where, f"the header's unit: {bad.message}")
         return Fraction(1)
     if not written.alike(unit):
-        findings.error("HG202", where, f"the column is in {written}, the law has {unit if not unit.plain else 'no unit'}")
+        findings.error(
+            "HG202", where, f"the column is in {written}, the law has {unit if not unit.plain else 'no unit'}"
+        )
         return Fraction(1)
     return factor(written, unit)
 
@@ -162,10 +179,16 @@ def _complete(columns: list[_Column | None], file: str, made: StepLaw, findings:
     for u in made.inputs:
         for index in [None] if u.size is None else range(u.size):
             if ("input", u.name, index) not in have:
-                findings.error("HG612", Span(file, 1, 1), f"there is no column for the input '{u.name}{'' if index is None else f'[{index}]'}'")
+                findings.error(
+                    "HG612",
+                    Span(file, 1, 1),
+                    f"there is no column for the input '{u.name}{'' if index is None else f'[{index}]'}'",
+                )
 
 
-def _row(row: list[str], values: Array, columns: list[_Column | None], file: str, line: int, findings: Findings) -> None:
+def _row(
+    row: list[str], values: Array, columns: list[_Column | None], file: str, line: int, findings: Findings
+) -> None:
     if len(row) != len(columns):
         findings.error("HG613", Span(file, line, 1), f"this row has {len(row)} cells, the header has {len(columns)}")
         return
@@ -200,7 +223,10 @@ def _gathered(values: Array, columns: list[_Column | None], made: StepLaw, file:
             if np.isnan(times).any() or (np.diff(times) < 0).any():
                 findings.error("HG614", Span(file, 1, i + 1), "the times have to be there and rise from row to row")
                 findings.stop()
-            grid = np.arange(int(np.floor((times[-1] - times[0]) / float(made.step) + 1e-9)) + 1) * float(made.step) + times[0]
+            grid = (
+                np.arange(int(np.floor((times[-1] - times[0]) / float(made.step) + 1e-9)) + 1) * float(made.step)
+                + times[0]
+            )
             rows = values[np.searchsorted(times, grid + 1e-9 * float(made.step), side="right") - 1]
     inputs: Fields = {}
     for u in made.inputs:

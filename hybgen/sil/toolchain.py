@@ -13,7 +13,16 @@ from collections.abc import Mapping, Sequence
 from pathlib import Path
 
 FLAGS = ("-std=c99", "-O2", "-ffp-contract=off", "-fPIC", "-shared")
-WARNINGS = ("-Wall", "-Wextra", "-Wconversion", "-Wshadow", "-Wdouble-promotion", "-Wfloat-equal", "-pedantic", "-Werror")
+WARNINGS = (
+    "-Wall",
+    "-Wextra",
+    "-Wconversion",
+    "-Wshadow",
+    "-Wdouble-promotion",
+    "-Wfloat-equal",
+    "-pedantic",
+    "-Werror",
+)
 
 
 class NoCompiler(Exception):
@@ -38,11 +47,24 @@ def compiler() -> tuple[str, ...]:
 
 def run(command: Sequence[str], folder: Path) -> None:
     """Runs a compiler in a folder. Raises CompilerRefused with what it said."""
-    environment = {**os.environ, "ZIG_GLOBAL_CACHE_DIR": os.environ.get(
-        "ZIG_GLOBAL_CACHE_DIR", str(Path(tempfile.gettempdir()) / "hybgen-zig-cache"))}
+    environment = {
+        **os.environ,
+        "ZIG_GLOBAL_CACHE_DIR": os.environ.get(
+            "ZIG_GLOBAL_CACHE_DIR", str(Path(tempfile.gettempdir()) / "hybgen-zig-cache")
+        ),
+    }
     try:
-        done = subprocess.run(command, cwd=folder, env=environment, capture_output=True, text=True, errors="replace",
-                              check=False, stdin=subprocess.DEVNULL, timeout=600)
+        done = subprocess.run(
+            command,
+            cwd=folder,
+            env=environment,
+            capture_output=True,
+            text=True,
+            errors="replace",
+            check=False,
+            stdin=subprocess.DEVNULL,
+            timeout=600,
+        )
     except OSError as error:
         raise NoCompiler(f"the C compiler '{command[0]}' can't be started: {error.strerror}") from None
     if done.returncode != 0:

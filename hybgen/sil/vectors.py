@@ -165,11 +165,16 @@ class Stimulus:
         chance = np.where(profile == PROFILES - 1, 0.15, np.where(profile == 2, 0.01, 0.0))
         bad = self.random.random(values.shape) < chance
         if dtype.kind == "i":
-            beyond = np.clip(np.array([ends[0] - 1, ends[1] + 1, -LARGEST - 1, LARGEST]), -LARGEST - 1, LARGEST).astype(dtype)
+            beyond = np.clip(np.array([ends[0] - 1, ends[1] + 1, -LARGEST - 1, LARGEST]), -LARGEST - 1, LARGEST).astype(
+                dtype
+            )
         else:
             edge = ends.astype(dtype)
             top = np.array(np.inf, dtype)
-            beyond = np.array([np.nan, np.inf, -np.inf, np.nextafter(edge[1], top), np.nextafter(edge[0], -top), np.finfo(dtype).max], dtype)
+            beyond = np.array(
+                [np.nan, np.inf, -np.inf, np.nextafter(edge[1], top), np.nextafter(edge[0], -top), np.finfo(dtype).max],
+                dtype,
+            )
         return np.where(bad, self.random.choice(beyond, values.shape), values)
 
     def parameters(self, lanes: int) -> Fields:
@@ -191,7 +196,10 @@ class Stimulus:
         default = np.full(lanes, float(p.default[i]) if isinstance(p.default[i], Fraction) else p.default[i], dtype)
         if p.type.kind is Kind.BOOL:
             return np.where(style < 4, default, self.random.random(lanes) < 0.5)
-        low, high = (float(v) for v in (p.low if p.low is not None else p.default[i], p.high if p.high is not None else p.default[i]))
+        low, high = (
+            float(v)
+            for v in (p.low if p.low is not None else p.default[i], p.high if p.high is not None else p.default[i])
+        )
         marks = around([low, high, *self.marks.get((RefKind.PARAMETER, p.name), [])], dtype)
         inner = self.random.uniform(low, high, lanes)
         between = (np.rint(inner) if dtype.kind == "i" else inner).astype(dtype)
@@ -230,9 +238,17 @@ class Stimulus:
                 return self.random.choice(np.array(codes, np.int32), lanes)
             case "timer" | "count":
                 top = x.maximum or 0
-                near = np.clip(np.concatenate([around([*marks, 0.0, float(top)], np.dtype(np.int32)), [top - 1, top - 2, top - 5]]), 0, top)
+                near = np.clip(
+                    np.concatenate(
+                        [around([*marks, 0.0, float(top)], np.dtype(np.int32)), [top - 1, top - 2, top - 5]]
+                    ),
+                    0,
+                    top,
+                )
                 spread = self.random.integers(0, top + 1, lanes)
-                return np.where(self.random.random(lanes) < 0.7, self.random.choice(near, lanes), spread).astype(np.int32)
+                return np.where(self.random.random(lanes) < 0.7, self.random.choice(near, lanes), spread).astype(
+                    np.int32
+                )
             case _:
                 return self._real(x, marks, lanes)
 

@@ -235,7 +235,13 @@ class _Stage:
 
         def change(here: Node) -> Node:
             if isinstance(here, Ref) and (here.name, here.index) in self.group and here.kind is RefKind.STATE:
-                return Ref(RefKind.LOCAL, f"{component(here.name, here.index)} at{self.number}{self.tag}", REAL, None, here.span)
+                return Ref(
+                    RefKind.LOCAL,
+                    f"{component(here.name, here.index)} at{self.number}{self.tag}",
+                    REAL,
+                    None,
+                    here.span,
+                )
             if isinstance(here, Ref) and here.kind is RefKind.TERM and (here.name, here.index) in self.flow.moving:
                 return self._term(here)
             return here

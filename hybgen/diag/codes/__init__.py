@@ -12,6 +12,8 @@ from hybgen.diag.codes.reading import READING
 from hybgen.diag.codes.syntax import SYNTAX
 from hybgen.diag.codes.types import TYPES
 
-CODES: dict[str, Code] = {c.code: c for c in (*READING, *SYNTAX, *TYPES, *HYBRID, *NUMBERS, *NAMES, *EQUIVALENCE, *FAULTS)}
+CODES: dict[str, Code] = {
+    c.code: c for c in (*READING, *SYNTAX, *TYPES, *HYBRID, *NUMBERS, *NAMES, *EQUIVALENCE, *FAULTS)
+}
 
 __all__ = ["CODES", "Code"]
