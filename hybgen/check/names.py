@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterator
 
 from hybgen.check.report import warning
@@ -14,12 +15,20 @@ from hybgen.law.model import Law
 
 def questions(law: Law) -> list[Finding]:
     """A warning for each declared name that nothing reads."""
-    used = {name for reader, node in _expressions(law) for name in read_names(law, node) if name != reader}
+    used = _constants_written(law)
+    used |= {name for reader, node in _expressions(law) for name in read_names(law, node) if name != reader}
     return [
         warning("HG305", "names", span, name, f"{what} '{name}' is never used", "use it, or take it out")
         for what, name, span in _declared(law)
         if name not in used
     ]
+
+
+def _constants_written(law: Law) -> set[str]:
+    """Constants that stand in an expression's text: folded into whole numbers they leave no trace in its tree."""
+    texts = [j.text for j in law.jumps] + [a.text for j in law.jumps for a in j.assigns] + [law.flow.text]
+    texts += [x.text for x in (*law.flow.rates, *law.sample, *law.terms, *law.outputs, *law.claims, *law.assume)]
+    return {p.name for p in law.parameters if not p.tunable} & set(re.findall(r"\w+", " ".join(texts)))
 
 
 def _declared(law: Law) -> Iterator[tuple[str, str, Span]]:

@@ -44,7 +44,7 @@ class Typed:
     def whole(self) -> bool:
         """Dimensionless constants that may stand as integers."""
         if self.const is None and self.type == REAL and self.unit.plain:
-            return all(isinstance(n, Op) and _as_integer(n, False) is not None for n in self.nodes)
+            return all(isinstance(n, Op) and _as_integer(n) is not None for n in self.nodes)
         return (
             self.const is not None
             and self.unit.plain
@@ -104,22 +104,14 @@ def unit_words(unit: Unit) -> str:
     return "dimensionless" if unit.plain else f"in {unit}"
 
 
-_WHOLE = {"add": "iadd", "sub": "isub", "mul": "imul", "neg": "ineg"}
-
-
-def _as_integer(node: Node, constant: bool) -> Node | None:
-    """The same expression on integers, where every part of it is whole; `constant`: names are known to be constants."""
+def _as_integer(node: Node) -> Node | None:
+    """Whole constants, and choices of them, as integers."""
     match node:
         case Const():
             return integer(int(node.value), node.span) if Fraction(node.value).denominator == 1 else None
-        case Ref():
-            return Ref(node.kind, node.name, INT, node.index, node.span) if constant else None
         case Op(op="select"):
-            parts = [_as_integer(a, constant) for a in node.args[1:]]
+            parts = [_as_integer(a) for a in node.args[1:]]
             return op("select", node.args[0], *[p for p in parts if p], span=node.span) if all(parts) else None
-        case Op() if node.op in _WHOLE and constant:
-            args = [_as_integer(a, constant) for a in node.args]
-            return op(_WHOLE[node.op], *[a for a in args if a], span=node.span) if all(args) else None
         case _:
             return None
 
@@ -139,11 +131,12 @@ def to_integers(found: Typed) -> Typed:
         return found
     assert found.whole
     if found.const is None:
-        nodes = tuple(n for n in (_as_integer(n, False) for n in found.nodes) if n is not None)
+        nodes = tuple(n for n in (_as_integer(n) for n in found.nodes) if n is not None)
         ends = [_ends(n) for n in nodes]
         return replace(found, nodes=nodes, type=INT, bounds=(min(e[0] for e in ends), max(e[1] for e in ends)))
     nodes = tuple(
-        _as_integer(n, True) or integer(int(c), found.span) for n, c in zip(found.nodes, found.const, strict=True)
+        Ref(n.kind, n.name, INT, n.index, n.span) if isinstance(n, Ref) else integer(int(c), found.span)
+        for n, c in zip(found.nodes, found.const, strict=True)
     )
     return replace(found, nodes=nodes, type=INT, bounds=(min(found.const), max(found.const)))
 

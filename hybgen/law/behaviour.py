@@ -304,7 +304,7 @@ def _ordered(context: Context, drafts: dict[str, Draft]) -> list[str]:
                 circle = [n for n, _ in trail[[n for n, _ in trail].index(used) :]]
                 context.error(
                     "HG134",
-                    drafts[name].value.span,
+                    drafts[used].value.span,
                     f"these terms need each other in a circle: {' -> '.join([*circle, used])}",
                     "put a state in between, or write one of them without the other",
                 )

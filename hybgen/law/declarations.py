@@ -39,10 +39,9 @@ def _range(
         context.error("HG132", key.span, f"{what} needs a range", "such as range: [0, 1]")
         return None
     found = context.pair(node, unit)
-    if found is not None and type_ == INT:
-        if any(v.denominator != 1 or abs(v) > LARGEST for v in found):
-            context.error("HG131", node.span, "the ends of a whole number's range are whole numbers of 32 bits")
-            return None
+    if found is not None and type_ == INT and any(v.denominator != 1 or abs(v) > LARGEST for v in found):
+        context.error("HG131", node.span, "the ends of a whole number's range are whole numbers of 32 bits")
+        return None
     return found
 
 
@@ -234,15 +233,7 @@ def _logic(context: Context, key: Scalar, group: Mapping, node: Node, about: str
     if words and all(n is not None for n in whole):
         values, type_ = tuple(n for n in whole if n is not None), INT
     else:
-        good = all(
-            [
-                check_name(w, "a logic value", context.findings, word=True)
-                and free_in_c(w, "a logic value", context.findings)
-                if w.text not in ("true", "false")
-                else _no_bool(context, w)
-                for w in words
-            ]
-        )
+        good = not [w for w in words if not _value_name(context, w)]  # every mistake is reported
         if not good:
             return None
         values = tuple(w.text for w in words)
@@ -268,6 +259,13 @@ def _logic(context: Context, key: Scalar, group: Mapping, node: Node, about: str
     return State(
         key.text, StateKind.LOGIC, type_, None, ONE, values, (initial,), None, None, False, None, about, key.span
     )
+
+
+def _value_name(context: Context, word: Scalar) -> bool:
+    if word.text in ("true", "false"):
+        return _no_bool(context, word)
+    what = "a logic value"
+    return check_name(word, what, context.findings, word=True) and free_in_c(word, what, context.findings)
 
 
 def _no_bool(context: Context, word: Scalar) -> bool:

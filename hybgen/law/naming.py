@@ -14,13 +14,22 @@ _IDENTIFIER = re.compile(r"[A-Za-z][A-Za-z0-9_]*\Z")
 
 # ISO C99/C11 6.4.1, C++20 [lex.key], and macros of <stdint.h> <stdbool.h> <stddef.h>, <errno.h>, <iso646.h>; from memory
 _C = frozenset(
-    ["auto", "break", "case", "char", "const", "continue", "default", "do", "double", "else", "enum", "extern", "float", "for", "goto", "if", "inline", "int", "long", "register", "restrict", "return", "short", "signed", "sizeof", "static", "struct", "switch", "typedef", "union", "unsigned", "void", "volatile", "while", "alignas", "alignof", "and", "and_eq", "asm", "bitand", "bitor", "bool", "catch", "char8_t", "char16_t", "char32_t", "class", "co_await", "co_return", "co_yield", "compl", "concept", "consteval", "constexpr", "constinit", "const_cast", "decltype", "delete", "dynamic_cast", "explicit", "export", "false", "friend", "mutable", "namespace", "new", "noexcept", "not", "not_eq", "nullptr", "operator", "or", "or_eq", "private", "protected", "public", "reinterpret_cast", "requires", "static_assert", "static_cast", "template", "this", "thread_local", "throw", "true", "try", "typeid", "typename", "using", "virtual", "wchar_t", "xor", "xor_eq", "typeof", "NULL", "offsetof", "size_t", "ptrdiff_t", "max_align_t", "errno", "EOF", "main", "assert", "interrupt", "near", "far", "huge", "linux", "unix", "I", "complex", "imaginary"]
+    """
+    auto break case char const continue default do double else enum extern float for goto if inline int long register
+    restrict return short signed sizeof static struct switch typedef union unsigned void volatile while
+    alignas alignof and and_eq asm bitand bitor bool catch char8_t char16_t char32_t class co_await co_return co_yield
+    compl concept consteval constexpr constinit const_cast decltype delete dynamic_cast explicit export false friend
+    mutable namespace new noexcept not not_eq nullptr operator or or_eq private protected public reinterpret_cast
+    requires static_assert static_cast template this thread_local throw true try typeid typename using virtual wchar_t
+    xor xor_eq typeof NULL offsetof size_t ptrdiff_t max_align_t errno EOF main assert interrupt near far huge linux
+    unix I complex imaginary
+    """.split()
 )
 _MACRO = re.compile(
     r"(U?INT|u?int)(_?(FAST|LEAST|fast|least))?(\d+|MAX|max|PTR|ptr)(_(MIN|MAX|C|t))?\Z|(SIZE|PTRDIFF|WCHAR|WINT|SIG_ATOMIC)_(MIN|MAX)\Z"
 )
 _OURS = frozenset({"self", "last_jump", "jumps", "none"})
-_LOCALS = frozenset(["p", "u", "y", "now", "status", "jump", "taken", "used", "answer", "text", "steps", "a", "b", "x", "i", "low", "high", "down"])
+_LOCALS = frozenset("p u y now status jump taken used answer text steps a b x i low high down".split())
 """Local names of the generated code: a law of that name would be hidden by them."""
 
 

@@ -22,7 +22,8 @@ def check(node: Node, kind: shape.Kind, what: str, findings: Findings) -> None:
         case shape.Named():
             if isinstance(node, Mapping):
                 for key, value in node.entries:
-                    check(value, kind.item, f"'{key.text}'", findings)
+                    if not _torn(key, value, findings):
+                        check(value, kind.item, f"'{key.text}'", findings)
             elif not (isinstance(node, Scalar) and not node.text):
                 _wrong(node, what, "a group of keys", findings)
         case shape.Listed():
@@ -70,16 +71,17 @@ def _record(node: Node, kind: shape.Record, what: str, findings: Findings) -> No
             findings.error("HG121", node.span, f"{what} needs '{name}': {field.about}")
 
 
+def _torn(key: Scalar, value: Node, findings: Findings) -> bool:
+    """Is this key the rest of an expression that YAML has cut at a comma?"""
+    if isinstance(value, Scalar) and not value.text and (key.text[-1:] in ")]" or not key.text.isidentifier()):
+        findings.error("HG125", key.span, f"'{key.text[:40]}' looks like a piece of an expression", hint=_TORN)
+        return True
+    return False
+
+
 def _unknown(key: Scalar, value: Node, kind: shape.Record, findings: Findings) -> None:
-    if (
-        isinstance(value, Scalar)
-        and not value.text
-        and not value.span.text[value.span.column - 2 : value.span.column].strip(" ,}") == ":"
-    ):
-        torn = key.text[-1:] in ")]" or not key.text.isidentifier()
-        if torn:
-            findings.error("HG125", key.span, f"'{key.text[:40]}' looks like a piece of an expression", hint=_TORN)
-            return
+    if _torn(key, value, findings):
+        return
     close = nearest(key.text, kind.fields)
     hint = f"did you mean '{close}'?" if close else f"known here: {', '.join(kind.fields)}"
     findings.error("HG120", key.span, f"unknown key '{key.text[:40]}'", hint=hint)

@@ -60,7 +60,8 @@ def _places(made: StepLaw) -> tuple[str, list[int]]:
         values.append(dtype.itemsize)
         for field in dtype.names or ():
             texts.append(f"(uint32_t)offsetof({type_}, {field})")
-            values.append(int((dtype.fields or {})[field][1]))
+            assert dtype.fields is not None
+            values.append(int(dtype.fields[field][1]))
     return ", ".join(texts), values
 
 

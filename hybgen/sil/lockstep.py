@@ -102,7 +102,7 @@ def bits(array: Array) -> Array:
 def differs(one: Array, other: Array) -> Array:
     """Which lanes differ in a bit."""
     found: Array = bits(one) != bits(other)
-    return found if found.ndim == 1 else found.any(axis=1)
+    return found if found.ndim == 1 else np.any(found, axis=1)
 
 
 def compared(reference: Reference, chip: Chip, outputs: Fields, given: Fields) -> tuple[int, str, Array, Array] | None:
@@ -122,6 +122,7 @@ def run(
     *,
     lanes: int = LANES,
     steps: int = STEPS,
+    injections: int = INJECTIONS,
     step: Fraction | None = None,
     number: str | None = None,
     chip: Chip | None = None,
@@ -136,7 +137,7 @@ def run(
     reference = Reference(made, lanes=lanes)
     chip = chip if chip is not None else Chip(made, lanes=lanes)
     reference.recording = True
-    rounds = -(-steps // CHUNK) + INJECTIONS
+    rounds = -(-steps // CHUNK) + injections
     total = 0
     difference = None
     _tune(reference, chip, stimulus.parameters(lanes))
@@ -151,7 +152,7 @@ def run(
             break
         if progress:
             progress(k + 1, rounds)
-    for k in range(INJECTIONS if difference is None else 0):
+    for k in range(injections if difference is None else 0):
         _tune(reference, chip, stimulus.parameters(lanes))
         start = stimulus.states(lanes)
         _place(reference, chip, start)
@@ -160,7 +161,7 @@ def run(
         if difference is not None:
             break
         if progress:
-            progress(rounds - INJECTIONS + k + 1, rounds)
+            progress(rounds - injections + k + 1, rounds)
     return _report(made, reference, lanes, total, difference)
 
 

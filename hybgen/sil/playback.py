@@ -46,10 +46,17 @@ class Playback:
     events: tuple[Event, ...]
 
 
-def play(law: Law | StepLaw, log: Log, *, step: Fraction | None = None, number: str | None = None) -> Playback:
-    """Replays a log. Events are those of the reference; where C differs the report says so."""
+def play(
+    law: Law | StepLaw,
+    log: Log,
+    *,
+    step: Fraction | None = None,
+    number: str | None = None,
+    chip: Chip | None = None,
+) -> Playback:
+    """Replays a log. Events are those of the reference; where C differs the report says so. `chip` replaces the C."""
     made = build(law, step=step, number=number) if isinstance(law, Law) else law
-    reference, chip = Reference(made), Chip(made)
+    reference, chip = Reference(made), chip if chip is not None else Chip(made)
     reference.recording = True
     for machine in (reference, chip):
         _set_start(machine, log)

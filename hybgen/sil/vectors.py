@@ -76,7 +76,8 @@ def around(values: list[float], dtype: np.dtype[Any]) -> Array:
     if dtype.kind == "i":
         whole = np.array(values, np.float64)
         near = np.concatenate([np.floor(whole), np.ceil(whole), np.floor(whole) - 1, np.ceil(whole) + 1])
-        return np.clip(near, -LARGEST, LARGEST).astype(np.int32)
+        whole_marks: Array = np.clip(near, -LARGEST, LARGEST).astype(np.int32)
+        return whole_marks
     exact = np.array(values, dtype)
     top = np.array(np.inf, dtype)
     return np.concatenate([exact, np.nextafter(exact, top), np.nextafter(exact, -top)])
@@ -112,7 +113,8 @@ class Stimulus:
         chance = self.random.choice([0.5, 0.1, 0.02, 0.005, 0.001], lanes)
         flips = self.random.random((steps, lanes)) < chance
         flips[0] = self.random.random(lanes) < 0.5
-        return np.logical_xor.accumulate(flips, axis=0)
+        found: Array = np.logical_xor.accumulate(flips, axis=0)
+        return found
 
     def _numbers(self, u: StepInput, steps: int, lanes: int) -> Array:
         dtype = dtype_of(u.type, self.made.format)
@@ -139,7 +141,8 @@ class Stimulus:
         phase = self.random.random(lanes)
         match kind:
             case 0:
-                return low + width * np.abs(2 * np.mod(t / period + phase, 1) - 1)
+                saw: Array = low + width * np.abs(2 * np.mod(t / period + phase, 1) - 1)
+                return saw
             case 1 | 6:
                 length = 40 if kind == 1 else max(50, steps // 3)
                 change = self.random.random((steps, lanes)) < 1 / length
@@ -152,7 +155,8 @@ class Stimulus:
                 return np.clip(wave + width * 0.02 * self.random.standard_normal((steps, lanes)), low, high)
             case 3:
                 walk_ = np.cumsum(self.random.standard_normal((steps, lanes)), axis=0) * width * 0.03 + width * phase
-                return low + width * np.abs(np.mod(walk_ / width, 2) - 1)
+                folded: Array = low + width * np.abs(np.mod(walk_ / width, 2) - 1)
+                return folded
             case _:
                 return self.random.uniform(low, high, (steps, lanes))
 

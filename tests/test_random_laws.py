@@ -1,0 +1,72 @@
+"""Random whole laws: the C compiles without a warning and equals the reference in every bit.
+
+The default run takes 2,000 laws; `pytest -m campaign tests/test_random_laws.py` takes 50,000 (HYBGEN_LAWS sets another number).
+"""
+
+from __future__ import annotations
+
+import os
+import random
+
+import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
+
+from hybgen.diag.finding import LawError
+from hybgen.law import read
+from hybgen.sil import lockstep
+from hybgen.sil.chip import Chip, load_many
+from hybgen.sil.toolchain import FLAGS, WARNINGS
+from hybgen.step import StepLaw, build
+from tests.strategies import law_text, laws
+
+BATCH = 20
+LANES = 48
+
+
+def built(seeds: range) -> list[StepLaw]:
+    """The laws that are good ones; a random law may break a rule, which is no matter here."""
+    found = []
+    for seed in seeds:
+        name = f"law_{seed}"
+        try:
+            found.append(build(read(law_text(random.Random(seed), name).encode(), f"{name}.yaml")))
+        except LawError as error:
+            assert {f.code for f in error.findings} <= {"HG204", "HG211", "HG401"}, (seed, error)
+    return found
+
+
+def check_batch(seeds: range) -> int:
+    """Compiles a batch as one object and compares each law; how many laws there were."""
+    made = built(seeds)
+    libraries = load_many(made, (*FLAGS[:1], "-O1", *FLAGS[2:], *WARNINGS))
+    for law, library in zip(made, libraries, strict=True):
+        chip = Chip(law, lanes=LANES, library=library)
+        report = lockstep.run(law, lanes=LANES, steps=40, injections=3, chip=chip)
+        assert report.equal, (law.law.name, report.first_difference)
+    return len(made)
+
+
+@pytest.mark.parametrize("part", range(10))
+def test_random_laws_equal_their_reference_in_every_bit(part: int) -> None:
+    count = sum(check_batch(range(first, first + BATCH)) for first in range(part * 200, (part + 1) * 200, BATCH))
+    assert count >= 190
+
+
+@pytest.mark.campaign
+def test_fifty_thousand_random_laws() -> None:
+    total = int(os.environ.get("HYBGEN_LAWS", "50000"))
+    first = int(os.environ.get("HYBGEN_FIRST", "100000"))
+    count = sum(check_batch(range(k, k + BATCH)) for k in range(first, first + total, BATCH))
+    print(f"{count} laws, 0 differences")
+    assert count >= 0.95 * total
+
+
+@settings(max_examples=60)
+@given(laws(), st.sampled_from(["float32", "float64"]))
+def test_a_law_found_by_hypothesis_equals_its_reference(text: str, number: str) -> None:
+    try:
+        made = build(read(text.encode(), "random_law.yaml"), number=number)
+    except LawError:
+        return
+    assert lockstep.run(made, lanes=16, steps=20, injections=2).equal
