@@ -257,7 +257,7 @@ def bits(array: Any, like: np.dtype[Any]) -> Array:
     if like.kind != "f":
         return array
     clean = np.where(np.isnan(array), like.type(np.nan), array)
-    return clean.view(np.uint32 if like.itemsize == 4 else np.uint64)
+    return np.asarray(clean.view(np.uint32 if like.itemsize == 4 else np.uint64))
 
 
 def first_difference(found: Array, wanted: Array, values: Lanes, op: Node) -> str:
