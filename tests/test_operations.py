@@ -252,11 +252,11 @@ def meaning(op: Op, fmt: Format, tables: dict[str, StepTable]) -> Callable[..., 
 
 def bits(array: Any, like: np.dtype[Any]) -> Array:
     """Comparable bits; all values that are no number alike."""
-    array = np.asarray(array)
-    assert array.dtype == like, (array.dtype, like)
+    found: Array = np.asarray(array)
+    assert found.dtype == like, (found.dtype, like)
     if like.kind != "f":
-        return array
-    clean = np.where(np.isnan(array), like.type(np.nan), array)
+        return found
+    clean = np.where(np.isnan(found), like.type(np.nan), found)
     return np.asarray(clean.view(np.uint32 if like.itemsize == 4 else np.uint64))
 
 
