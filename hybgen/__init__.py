@@ -11,10 +11,10 @@ from typing import TYPE_CHECKING, Any
 from hybgen.version import VERSION as __version__
 
 if TYPE_CHECKING:
-    from hybgen.check import Report, check
+    from hybgen.checks import Report, check
     from hybgen.diag.finding import Finding, LawError
-    from hybgen.generate import generate
     from hybgen.law import Law, load
+    from hybgen.pipeline import generate
     from hybgen.reference import Reference
     from hybgen.sil import Chip, compile
 
@@ -24,10 +24,10 @@ _HOMES = {
     "Law": "hybgen.law",
     "LawError": "hybgen.diag.finding",
     "Reference": "hybgen.reference",
-    "Report": "hybgen.check",
-    "check": "hybgen.check",
+    "Report": "hybgen.checks",
+    "check": "hybgen.checks",
     "compile": "hybgen.sil",
-    "generate": "hybgen.generate",
+    "generate": "hybgen.pipeline",
     "load": "hybgen.law",
 }
 

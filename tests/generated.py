@@ -7,8 +7,8 @@ from collections.abc import Mapping
 from functools import cache
 from pathlib import Path
 
-from hybgen.generate import generate
 from hybgen.law import Law, load, read
+from hybgen.pipeline import generate
 from tests.conftest import ROOT, SPECS, law_of
 from tests.strategies import law_text
 

@@ -65,12 +65,22 @@ def test_the_readme_example() -> None:
 
 
 def test_values_by_name(machine: hybgen.Reference) -> None:
-    assert dict(machine.state) == {"mode": "run", "side": -1, "flag": False, "since": 1.3, "n": 0, "x": 0.25, "w": [1.0, 2.0]}
+    assert dict(machine.state) == {
+        "mode": "run",
+        "side": -1,
+        "flag": False,
+        "since": 1.3,
+        "n": 0,
+        "x": 0.25,
+        "w": [1.0, 2.0],
+    }
     y = machine.step(SAMPLE)
     assert y == {"mode_out": "run", "busy": True, "total": 3.25, "both": [1.0, 2.0], "count_out": 0, "side_out": -1}
     assert machine.last_jump is None and machine.jumps == 0
     y = machine.step({**SAMPLE, "level": 0.9, "go": False})
-    assert y["mode_out"] == "rest" and y["side_out"] == 1 and machine.last_jump == "end" and machine.state["flag"] is True
+    assert (
+        y["mode_out"] == "rest" and y["side_out"] == 1 and machine.last_jump == "end" and machine.state["flag"] is True
+    )
     machine.step(SAMPLE)
     assert machine.last_jump == "begin" and machine.jumps == 2 and machine.state["n"] == 1
     assert math.isclose(machine.state["since"], 0.1)
@@ -89,9 +99,17 @@ def test_the_state_can_be_written(machine: hybgen.Reference) -> None:
             machine.state[name] = value
 
 
-@pytest.mark.parametrize(("change", "words"), [
-    ({"level": None}, "level"), ({"lvl": 1}, "unknown: lvl"), ({"go": 2}, "true or false"), ({"ticks": 1.5}, "whole"),
-    ({"pull": [1, 2, 3]}, "shape"), ({"level": "high"}, "number")])
+@pytest.mark.parametrize(
+    ("change", "words"),
+    [
+        ({"level": None}, "level"),
+        ({"lvl": 1}, "unknown: lvl"),
+        ({"go": 2}, "true or false"),
+        ({"ticks": 1.5}, "whole"),
+        ({"pull": [1, 2, 3]}, "shape"),
+        ({"level": "high"}, "number"),
+    ],
+)
 def test_wrong_samples_are_refused(machine: hybgen.Reference, change: dict[str, object], words: str) -> None:
     with pytest.raises(ValueError, match=words):
         machine.step({**SAMPLE, **change})

@@ -8,7 +8,7 @@ from pathlib import Path
 
 import pytest
 
-from hybgen.check import check
+from hybgen.checks import check
 from hybgen.diag.codes import CODES
 from hybgen.diag.finding import Finding, LawError
 from hybgen.diag.render import render
@@ -44,7 +44,16 @@ def test_every_code_is_shown_by_a_bad_law_or_by_a_test() -> None:
     shown = {p.stem.split("_")[0] for p in BAD}
     here = {"HG101", "HG102", "HG103", "HG104", "HG106", "HG107", "HG110", "HG111", "HG113", "HG114", "HG153", "HG403"}
     elsewhere = {  # test_sil.py, test_log.py, test_cli.py
-        "HG601", "HG602", "HG603", "HG610", "HG611", "HG612", "HG613", "HG614", "HG901"}
+        "HG601",
+        "HG602",
+        "HG603",
+        "HG610",
+        "HG611",
+        "HG612",
+        "HG613",
+        "HG614",
+        "HG901",
+    }
     assert set(CODES) - shown - here - elsewhere == QUIET
 
 
@@ -56,26 +65,44 @@ def codes(data: bytes) -> list[str]:
 
 
 BOMB = "a: &a [x, x, x, x, x, x, x, x, x]\n" + "".join(
-    f"{b}: &{b} [{', '.join([f'*{a}'] * 9)}]\n" for a, b in zip("abcdefgh", "bcdefghi", strict=True))
+    f"{b}: &{b} [{', '.join([f'*{a}'] * 9)}]\n" for a, b in zip("abcdefgh", "bcdefghi", strict=True)
+)
 
 
-@pytest.mark.parametrize(("data", "code"), [
-    (b"", "HG103"), (b"  \n# nothing\n", "HG114"), (b"x" * (10 << 20), "HG104"), (b"law: caf\xe9", "HG106"),
-    (b"law: a\x07b", "HG107"), (b"law: a\xe2\x80\xa8b", "HG107"), (BOMB.encode(), "HG110"), (b"a: " + b"[" * 40 + b"]" * 40, "HG111"),
-    (b"{a: " * 100, "HG111"), (b"? [a, b]\n: 1\n", "HG113"), (b"- law\n", "HG114"), (b"law", "HG114"), (b"a: *b\n", "HG108"),
-    (b"law: a\n---\nlaw: b\n", "HG109")])
+@pytest.mark.parametrize(
+    ("data", "code"),
+    [
+        (b"", "HG103"),
+        (b"  \n# nothing\n", "HG114"),
+        (b"x" * (10 << 20), "HG104"),
+        (b"law: caf\xe9", "HG106"),
+        (b"law: a\x07b", "HG107"),
+        (b"law: a\xe2\x80\xa8b", "HG107"),
+        (BOMB.encode(), "HG110"),
+        (b"a: " + b"[" * 40 + b"]" * 40, "HG111"),
+        (b"{a: " * 100, "HG111"),
+        (b"? [a, b]\n: 1\n", "HG113"),
+        (b"- law\n", "HG114"),
+        (b"law", "HG114"),
+        (b"a: *b\n", "HG108"),
+        (b"law: a\n---\nlaw: b\n", "HG109"),
+    ],
+)
 def test_files_that_are_no_law(data: bytes, code: str) -> None:
     assert codes(data) == [code]
 
 
 def test_long_expressions_are_refused() -> None:
-    head = "law: tank\nstep: 1 s\noutputs:\n  y: {value: \""
+    head = 'law: tank\nstep: 1 s\noutputs:\n  y: {value: "'
     assert codes((head + "(" * 80 + "1" + ")" * 80 + '"}\n').encode()) == ["HG153"]
     assert codes((head + "1 + " * 3000 + '1"}\n').encode()) == ["HG153"]
 
 
 def test_a_flow_that_is_too_fast_for_any_number() -> None:
-    law = read(b'law: tank\nstep: 1 s\nstates: {x: {range: [0, 1]}}\nflow: {map: {x: "1e9 /s * x"}}\noutputs: {y: {value: x}}\n', "a.yaml")
+    law = read(
+        b'law: tank\nstep: 1 s\nstates: {x: {range: [0, 1]}}\nflow: {map: {x: "1e9 /s * x"}}\noutputs: {y: {value: x}}\n',
+        "a.yaml",
+    )
     assert [f.code for f in check(law).findings if f.severity == "error"] == ["HG403"]
 
 

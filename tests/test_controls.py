@@ -37,7 +37,9 @@ def difference(law: Law, files: dict[str, str], flags: tuple[str, ...] = FLAGS) 
 @pytest.mark.parametrize("number", ["float32", "float64"])
 def test_contraction_is_caught(number: str) -> None:
     """With fused multiply-add and without the pragma that forbids it, the comparison fails; with the pragma it holds."""
-    assert "fma" in Path("/proc/cpuinfo").read_text(), "this machine has no fused multiply-add: no control is possible here"
+    assert "fma" in Path("/proc/cpuinfo").read_text(), (
+        "this machine has no fused multiply-add: no control is possible here"
+    )
     law = law_of(FILTER.format(number=number))
     flags = (*(f for f in FLAGS if "contract" not in f), "-mfma", "-ffp-contract=fast")
     text = emit(lower(build(law)))["blend.c"]
@@ -48,8 +50,15 @@ def test_contraction_is_caught(number: str) -> None:
     assert difference(law, {}, flags) is None
 
 
-@pytest.mark.parametrize("flag", ["-ffast-math", "-ffinite-math-only", "-fassociative-math -fno-signed-zeros -fno-trapping-math",
-                                  "-freciprocal-math"])
+@pytest.mark.parametrize(
+    "flag",
+    [
+        "-ffast-math",
+        "-ffinite-math-only",
+        "-fassociative-math -fno-signed-zeros -fno-trapping-math",
+        "-freciprocal-math",
+    ],
+)
 def test_fast_math_is_refused_by_the_preprocessor(flag: str) -> None:
     law = law_of(FILTER.format(number="float32"))
     with pytest.raises(CompilerRefused, match="blend: compile without"):
@@ -57,9 +66,13 @@ def test_fast_math_is_refused_by_the_preprocessor(flag: str) -> None:
 
 
 PLANTED = [
-    ("now->a * now->b", "now->a + now->b"), ("(now->a * now->b) + self->x", "(now->a * now->b) - self->x"),
-    ("u->a <= 10.0f", "u->a < 10.0f"), ("self->held_a = u->a;", ""), ("p->k <= 1.0f", "p->k < 1.0f"),
-    ("used = &blend_defaults;", ""), ("status |= BLEND_STATUS_INVALID_INPUT;", "status |= 0u;"),
+    ("now->a * now->b", "now->a + now->b"),
+    ("(now->a * now->b) + self->x", "(now->a * now->b) - self->x"),
+    ("u->a <= 10.0f", "u->a < 10.0f"),
+    ("self->held_a = u->a;", ""),
+    ("p->k <= 1.0f", "p->k < 1.0f"),
+    ("used = &blend_defaults;", ""),
+    ("status |= BLEND_STATUS_INVALID_INPUT;", "status |= 0u;"),
 ]
 
 

@@ -15,8 +15,8 @@ from hypothesis import strategies as st
 
 from hybgen.diag.finding import LawError
 from hybgen.emit.text import comment
-from hybgen.generate import generate
 from hybgen.law import load, read
+from hybgen.pipeline import generate
 from hybgen.sil import lockstep
 from hybgen.sil.toolchain import WARNINGS, CompilerRefused, run
 from hybgen.step import build
@@ -43,6 +43,7 @@ def code(text: str) -> str:
 
 # ---------------------------------------------------------------------------------------------------- compilers
 
+
 @pytest.mark.parametrize("number", ["float32", "float64"])
 @pytest.mark.parametrize("compiler", COMPILERS)
 def test_no_compiler_has_a_warning(compiler: str, number: str, tmp_path: Path) -> None:
@@ -55,17 +56,31 @@ def test_no_compiler_has_a_warning(compiler: str, number: str, tmp_path: Path) -
 
 
 def test_clang_has_nothing_to_say_with_all_its_warnings_on(tmp_path: Path) -> None:
-    style = ("unknown-warning-option", "padded", "declaration-after-statement", "covered-switch-default", "switch-default",
-             "switch-enum", "bad-function-cast", "unsafe-buffer-usage")
+    style = (
+        "unknown-warning-option",
+        "padded",
+        "declaration-after-statement",
+        "covered-switch-default",
+        "switch-default",
+        "switch-enum",
+        "bad-function-cast",
+        "unsafe-buffer-usage",
+    )
     sources = written(generated("float32"), tmp_path)
-    run(["clang", "-std=c99", "-O2", "-Weverything", "-Werror", *(f"-Wno-{s}" for s in style), "-c", *sources], tmp_path)
+    run(
+        ["clang", "-std=c99", "-O2", "-Weverything", "-Werror", *(f"-Wno-{s}" for s in style), "-c", *sources], tmp_path
+    )
     assert len(list(tmp_path.glob("*.o"))) == len(laws())
 
 
 def test_a_warning_would_be_seen(tmp_path: Path) -> None:
     """The control: each of these lines has to be refused."""
-    planted = ("float bad(float a) { return a * 2.5; }", "int bad(double a, double b) { return a == b; }",
-               "int bad(long long a) { return a; }", "static int bad(void) { return 0; }")
+    planted = (
+        "float bad(float a) { return a * 2.5; }",
+        "int bad(double a, double b) { return a == b; }",
+        "int bad(long long a) { return a; }",
+        "static int bad(void) { return 0; }",
+    )
     for line in planted:
         for compiler in ("gcc c99", "clang c99"):
             (tmp_path / "bad.c").write_text(f"{line}\n", encoding="ascii")
@@ -73,10 +88,19 @@ def test_a_warning_would_be_seen(tmp_path: Path) -> None:
                 run([*COMPILERS[compiler], "-O2", *WARNINGS, "-c", "bad.c"], tmp_path)
 
 
-@pytest.mark.parametrize(("compiler", "flags"), [
-    ("gcc", "-ffast-math"), ("gcc", "-Ofast"), ("gcc", "-ffinite-math-only"), ("gcc", "-funsafe-math-optimizations"),
-    ("gcc", "-freciprocal-math"), ("gcc", "-fno-signed-zeros"), ("clang", "-ffast-math"), ("clang", "-ffinite-math-only"),
-])
+@pytest.mark.parametrize(
+    ("compiler", "flags"),
+    [
+        ("gcc", "-ffast-math"),
+        ("gcc", "-Ofast"),
+        ("gcc", "-ffinite-math-only"),
+        ("gcc", "-funsafe-math-optimizations"),
+        ("gcc", "-freciprocal-math"),
+        ("gcc", "-fno-signed-zeros"),
+        ("clang", "-ffast-math"),
+        ("clang", "-ffinite-math-only"),
+    ],
+)
 def test_flags_that_change_results_are_refused(compiler: str, flags: str, tmp_path: Path) -> None:
     sources = written(bilge_pump(), tmp_path)
     with pytest.raises(CompilerRefused, match="bilge_pump: compile without"):
@@ -91,6 +115,7 @@ def test_excess_precision_is_refused(tmp_path: Path) -> None:
 
 
 # ---------------------------------------------------------------------------------------------------- symbols
+
 
 def symbols(folder: Path, name: str) -> tuple[set[str], set[str]]:
     """(global symbols, missing symbols) of an object file."""
@@ -218,8 +243,14 @@ def test_the_header_says_what_it_is() -> None:
     law = load(ROOT / "specs" / "bilge_pump.yaml")
     for text in bilge_pump().values():
         flowing = re.sub(r"\n \* +", " ", text)
-        for words in ("from bilge_pump.yaml, SHA-256 " + law.digest, "Made by hybgen ", "step 0.1 s, numbers float32", "integration none",
-                      "with -ffp-contract=off, without -ffast-math", "simulation is not a safety case"):
+        for words in (
+            "from bilge_pump.yaml, SHA-256 " + law.digest,
+            "Made by hybgen ",
+            "step 0.1 s, numbers float32",
+            "integration none",
+            "with -ffp-contract=off, without -ffast-math",
+            "simulation is not a safety case",
+        ):
             assert words in flowing
         assert not re.search(r"20\d\d-\d\d|/home|/root|/tmp|/work|\\", text)
 
@@ -253,6 +284,7 @@ def test_dead_conditions_are_gone_in_each_mode() -> None:
 
 # ---------------------------------------------------------------------------------------------------- names, comments
 
+
 def test_names_that_collide_change_no_value() -> None:
     for number in ("float32", "float64"):
         report = lockstep.run(law_of(COLLIDING), lanes=64, steps=400, number=number)
@@ -284,14 +316,16 @@ def test_a_hostile_file_name_stays_in_its_comment(tmp_path: Path) -> None:
     law = read(HOSTILE.replace("\n    ", "\n").lstrip().encode(), "*/x/*??/\\.yaml")
     sources = written(generate(law), tmp_path)
     run(["gcc", "-std=c99", "-trigraphs", *WARNINGS, "-c", *sources], tmp_path)
-    assert symbols(tmp_path, "hostile")[0] == {f"hostile_{w}" for w in ("defaults", "init", "step", "check_parameters", "jump_name")}
+    assert symbols(tmp_path, "hostile")[0] == {
+        f"hostile_{w}" for w in ("defaults", "init", "step", "check_parameters", "jump_name")
+    }
 
 
 # ---------------------------------------------------------------------------------------------------- same bytes
 
 AGAIN = """
 import sys
-from hybgen.generate import generate
+from hybgen.pipeline import generate
 from hybgen.law import load
 for path in sys.argv[1:]:
     for name, text in generate(load(path)).items():
@@ -303,8 +337,14 @@ def test_same_law_same_bytes_whatever_the_hash_seed_and_folder(tmp_path: Path) -
     here = "".join(n + t for path in SPECS for n, t in generate(load(path)).items())
     for seed, folder in (("1", tmp_path), ("77", ROOT)):
         environment = {**os.environ, "PYTHONHASHSEED": seed, "PYTHONPATH": str(ROOT), "TZ": f"UTC+{seed[0]}"}
-        done = subprocess.run([sys.executable, "-c", AGAIN, *map(str, SPECS)], cwd=folder, env=environment,
-                              capture_output=True, text=True, check=True)
+        done = subprocess.run(
+            [sys.executable, "-c", AGAIN, *map(str, SPECS)],
+            cwd=folder,
+            env=environment,
+            capture_output=True,
+            text=True,
+            check=True,
+        )
         assert done.stdout == here
 
 

@@ -11,7 +11,7 @@ import time
 
 import pytest
 
-from hybgen.check import check
+from hybgen.checks import check
 from hybgen.diag.finding import LawError
 from hybgen.diag.render import render
 from hybgen.law import read
@@ -20,9 +20,65 @@ from tests.strategies import law_text
 
 SEEDS = [p.read_text(encoding="utf-8") for p in SPECS]
 SEEDS += [p.read_text(encoding="utf-8") for p in sorted((ROOT / "tests" / "bad").glob("*.yaml"))]
-PIECES = ["{", "}", "[", "]", ",", ":", ": ", "- ", "\n", "  ", "\t", '"', "'", "#", "&a ", "*a", "!!x ", "|", ">", "%", "@", "`", "(", ")", "**", "<=", "==",
-          " and ", " or ", "not ", "0", "1e308", "1e-400", "nan", ".inf", "999999999999999999999", " m", " s", "/s", "degC", "true", "on", "pi", "é", "\x00",
-          "valid(", "jumped(", "choose(", "timer: 1 s", "logic: [a]", "count: 3", "vector: 3", "range: [0, 1]", "limit: true", "is:", "when:", "otherwise:"]
+PIECES = [
+    "{",
+    "}",
+    "[",
+    "]",
+    ",",
+    ":",
+    ": ",
+    "- ",
+    "\n",
+    "  ",
+    "\t",
+    '"',
+    "'",
+    "#",
+    "&a ",
+    "*a",
+    "!!x ",
+    "|",
+    ">",
+    "%",
+    "@",
+    "`",
+    "(",
+    ")",
+    "**",
+    "<=",
+    "==",
+    " and ",
+    " or ",
+    "not ",
+    "0",
+    "1e308",
+    "1e-400",
+    "nan",
+    ".inf",
+    "999999999999999999999",
+    " m",
+    " s",
+    "/s",
+    "degC",
+    "true",
+    "on",
+    "pi",
+    "é",
+    "\x00",
+    "valid(",
+    "jumped(",
+    "choose(",
+    "timer: 1 s",
+    "logic: [a]",
+    "count: 3",
+    "vector: 3",
+    "range: [0, 1]",
+    "limit: true",
+    "is:",
+    "when:",
+    "otherwise:",
+]
 
 
 def mutant(dice: random.Random) -> bytes:
@@ -92,5 +148,7 @@ def test_mutants_give_findings_or_a_law(part: int) -> None:
 @pytest.mark.campaign
 def test_a_hundred_thousand_mutants() -> None:
     longest, good = survive(range(100_000, 200_000))
-    print(f"100000 mutants, {good} still laws, longest {longest:.2f} s, {resource.getrusage(resource.RUSAGE_SELF).ru_maxrss // 1024} MB")
+    print(
+        f"100000 mutants, {good} still laws, longest {longest:.2f} s, {resource.getrusage(resource.RUSAGE_SELF).ru_maxrss // 1024} MB"
+    )
     assert longest < 2.0

@@ -15,7 +15,7 @@ from hybgen.diag.finding import Finding, LawError, Severity
 from hybgen.diag.render import render, summary
 
 if TYPE_CHECKING:
-    from hybgen.check import Report
+    from hybgen.checks import Report
     from hybgen.law import Law
 
 
@@ -64,7 +64,7 @@ def law_command(run: Callable[[argparse.Namespace, Law, Console], int]) -> Calla
 
 def checked(options: argparse.Namespace, law: Law) -> Report:
     """The findings about a law, at the step and number format of the options."""
-    from hybgen.check import check
+    from hybgen.checks import check
 
     return check(law, step=options.step, number=options.number)
 
@@ -89,7 +89,7 @@ def check_command(options: argparse.Namespace, law: Law, console: Console) -> in
 
 def generate_command(options: argparse.Namespace, law: Law, console: Console) -> int:
     """hybgen generate: a law with errors gives no C."""
-    from hybgen.generate import generate
+    from hybgen.pipeline import generate
 
     report = checked(options, law)
     if report.failing(options.fail_on):

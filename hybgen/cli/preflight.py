@@ -9,13 +9,13 @@ from collections.abc import Callable, Mapping
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from hybgen.check import Report, check
+from hybgen.checks import Report, check
 from hybgen.cli.console import Console
 from hybgen.cli.files import write_all
 from hybgen.cli.main import FINDINGS, OK
 from hybgen.diag.finding import Verdict
 from hybgen.diag.render import render, summary
-from hybgen.generate import generate
+from hybgen.pipeline import generate
 from hybgen.sil import lockstep, toolchain
 from hybgen.sil.lockstep import SilReport
 from hybgen.version import VERSION

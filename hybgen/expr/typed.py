@@ -7,7 +7,7 @@ whole-number functions as long as 32 bits are shown to hold the result; they bec
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, field, replace
 from fractions import Fraction
 from typing import assert_never
 
@@ -16,6 +16,7 @@ from hybgen.diag.span import NOWHERE, Span
 from hybgen.diag.suggest import nearest
 from hybgen.expr import algebra, functions, relations
 from hybgen.expr.core import BOOL, REAL, Const, Kind, Ref, RefKind, op, truth
+from hybgen.expr.extent import DEEPEST, LARGEST, Extent
 from hybgen.expr.quantity import Stop, Typed, Want, coerce, enum_value
 from hybgen.expr.scope import Scope, Symbol
 from hybgen.expr.tree import Binary, Call, Cases, Chain, Expr, Item, Logic, Name, Number, Truth, Unary, Vector
@@ -83,6 +84,7 @@ class _Checker:
 
     scope: Scope
     findings: Findings
+    extent: Extent = field(default_factory=Extent)
 
     def stop(self, code: str, span: Span, message: str, hint: str | None = None) -> Stop:
         self.findings.error(code, span, message, hint=hint)
@@ -95,6 +97,18 @@ class _Checker:
         return found
 
     def check(self, expr: Expr, want: Want | None = None) -> Typed:
+        """The checked value of a piece, which may not grow beyond all reason when vectors and powers are written out."""
+        found = self.checked(expr, want)
+        if not self.extent.fits(found.nodes):
+            raise self.stop(
+                "HG153",
+                expr.span,
+                f"written out, this has more than {LARGEST} operations, or {DEEPEST} above one another",
+                "name pieces of it under 'terms', or use fewer components",
+            )
+        return found
+
+    def checked(self, expr: Expr, want: Want | None) -> Typed:
         match expr:
             case Number():
                 return self.number(expr)

@@ -4,13 +4,15 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
+from fractions import Fraction
 
 from hybgen.diag.span import Span
 from hybgen.diag.suggest import nearest
-from hybgen.expr.core import BOOL, INT, REAL, Kind, RefKind
+from hybgen.expr.core import BOOL, INT, REAL, Kind, RefKind, Type
 from hybgen.expr.core import Node as Tree
+from hybgen.expr.extent import children
 from hybgen.expr.scope import Scope, Symbol
-from hybgen.expr.tree import Binary, Call, Cases, Chain, Expr, Item, Logic, Name, Unary, Vector
+from hybgen.expr.tree import Expr, Name
 from hybgen.expr.typed import Typed, Want, typed
 from hybgen.expr.units import ONE, SECOND, Unit
 from hybgen.law.context import Context
@@ -38,7 +40,10 @@ class Behaviour:
         if expr is None:
             return None
         found = typed(expr, replace(self.scope, allow=allow, place=place), want, self.context.findings)
-        return None if found is None else (found, self.context.written(node, expr))
+        if found is None:
+            return None
+        self.context.spend(found.nodes, node.span)
+        return found, self.context.written(node, expr)
 
     def condition(self, node: Node, place: str, allow: frozenset[RefKind] = _BEFORE) -> tuple[Tree, str] | None:
         """A checked condition and its text."""
@@ -79,7 +84,7 @@ class Behaviour:
         if state.kind is not StateKind.LOGIC or state.type != INT:
             return
         logic = [s for s in self.states if s.kind is StateKind.LOGIC]
-        values = possible(found.nodes[0], logic)
+        values = possible(found.nodes[0], logic, spend=lambda n: self.context.work.spend(n // 4, node.span))
         allowed = set(state.values)
         if values is None or any(v.value not in allowed for v in values):
             words = ", ".join(map(str, state.values))
@@ -193,19 +198,7 @@ class Behaviour:
             return None
         typed_value, text = found
         unit = typed_value.unit if typed_value.type == REAL else ONE
-        ends = None
-        if (range_node := group.get("range")) is not None:
-            if typed_value.type not in (REAL, INT):
-                context.error(
-                    "HG124", range_node.span, f"output '{key.text}' is no number: it has no range", "take 'range' out"
-                )
-            else:
-                ends = context.pair(range_node, unit)
-        limit = context.flag(group, "limit")
-        if limit and ends is None and (key_node := group.key("limit")) is not None:
-            context.error(
-                "HG132", key_node.span, f"output '{key.text}' needs a range to be limited to", "such as range: [0, 1]"
-            )
+        ends, limit = self._output_range(key, group, typed_value.type, unit)
         low, high = ends if ends is not None else (None, None)
         size = typed_value.shape[0] if typed_value.shape else None
         return Output(
@@ -221,6 +214,23 @@ class Behaviour:
             value.span,
             text,
         )
+
+    def _output_range(
+        self, key: Scalar, group: Mapping, type_: Type, unit: Unit
+    ) -> tuple[tuple[Fraction, Fraction] | None, bool]:
+        """The declared range of an output, and whether it is limited to it."""
+        context, ends = self.context, None
+        if (node := group.get("range")) is not None:
+            if type_ in (REAL, INT):
+                ends = context.pair(node, unit)
+            else:
+                message = f"output '{key.text}' is no number: it has no range"
+                context.error("HG124", node.span, message, "take 'range' out")
+        limit = context.flag(group, "limit")
+        if limit and group.get("range") is None and (word := group.key("limit")) is not None:
+            message = f"output '{key.text}' needs a range to be limited to"
+            context.error("HG132", word.span, message, "such as range: [0, 1]")
+        return ends, limit
 
     def _output_value(self, key: Scalar, group: Mapping, value: Node) -> tuple[Typed, str] | None:
         node = group.get("type")
@@ -287,32 +297,37 @@ def _draft(context: Context, key: Scalar, node: Node) -> Draft | None:
 
 
 def _ordered(context: Context, drafts: dict[str, Draft]) -> list[str]:
-    """The names in order of use; a finding for a circle, whose members are left out."""
-    order: list[str] = []
-    state = dict.fromkeys(drafts, 0)
+    """The names in order of use; a finding for each circle, whose members (and what needs them) are left out."""
+    uses = {name: [n for n in names_in(d.expr) if n in drafts] for name, d in drafts.items()}
+    order: dict[str, None] = {}
+    trail: dict[str, Iterator[str]] = {}
+    broken: set[str] = set()
     for first in drafts:
-        trail: list[tuple[str, Iterator[str]]] = [] if state[first] else [(first, iter(names_in(drafts[first].expr)))]
-        state[first] = state[first] or 1
+        if first not in order and first not in broken:
+            trail[first] = iter(uses[first])
         while trail:
-            name, uses = trail[-1]
-            used = next((u for u in uses if u in drafts and state[u] != 2), None)
+            name = next(reversed(trail))
+            used = next((u for u in trail[name] if u not in order), None)
             if used is None:
-                state[name] = 2
-                order.append(name)
-                trail.pop()
-            elif state[used] == 1:
-                circle = [n for n, _ in trail[[n for n, _ in trail].index(used) :]]
-                context.error(
-                    "HG134",
-                    drafts[used].value.span,
-                    f"these terms need each other in a circle: {' -> '.join([*circle, used])}",
-                    "put a state in between, or write one of them without the other",
-                )
-                return order
+                order[name] = None
+                del trail[name]
+            elif used in trail or used in broken:
+                if used in trail:
+                    _circle(context, drafts, [*list(trail)[list(trail).index(used) :], used])
+                broken |= trail.keys()
+                trail.clear()
             else:
-                state[used] = 1
-                trail.append((used, iter(names_in(drafts[used].expr))))
-    return order
+                trail[used] = iter(uses[used])
+    return list(order)
+
+
+def _circle(context: Context, drafts: dict[str, Draft], names: list[str]) -> None:
+    context.error(
+        "HG134",
+        drafts[names[0]].value.span,
+        f"these terms need each other in a circle: {' -> '.join(names)}",
+        "put a state in between, or write one of them without the other",
+    )
 
 
 def names_in(expr: Expr) -> list[str]:
@@ -321,25 +336,9 @@ def names_in(expr: Expr) -> list[str]:
     todo: list[Expr] = [expr]
     while todo:
         here = todo.pop()
-        match here:
-            case Name():
-                found.append(here.name)
-            case Unary():
-                todo.append(here.operand)
-            case Binary():
-                todo += [here.right, here.left]
-            case Chain() | Logic():
-                todo += reversed(here.operands)
-            case Item():
-                todo.append(here.base)
-            case Call():
-                todo += reversed(here.args)
-            case Vector():
-                todo += reversed(here.items)
-            case Cases():
-                todo += [here.otherwise, *(e for b in here.branches for e in b)]
-            case _:
-                pass
+        if isinstance(here, Name):
+            found.append(here.name)
+        todo += reversed(children(here))
     return list(dict.fromkeys(found))
 
 
@@ -351,6 +350,7 @@ def _term(context: Context, scope: Scope, states: tuple[State, ...], draft: Draf
         found = typed(draft.expr, inner, want, context.findings)
     if found is None:
         return None, None
+    context.spend(found.nodes, draft.value.span)
     if found.type.kind is Kind.ENUM or len(found.shape) > 1:
         context.error(
             "HG204", draft.value.span, f"term '{draft.key.text}' has to be a number, a vector, or true or false"

@@ -3,22 +3,29 @@
 from __future__ import annotations
 
 import re
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from fractions import Fraction
 
 from hybgen.diag.finding import Findings
 from hybgen.diag.span import Span
 from hybgen.diag.suggest import nearest
 from hybgen.expr import units
-from hybgen.expr.constant import value_in
+from hybgen.expr.constant import convert, value_in
+from hybgen.expr.core import Node as Tree
+from hybgen.expr.extent import DEEPEST_TEXT, Extent, too_deep
 from hybgen.expr.parser import parse
 from hybgen.expr.show import show
 from hybgen.expr.tree import Cases, Expr, Number, Vector
-from hybgen.expr.units import ONE, BadUnit, Unit
+from hybgen.expr.units import ONE, SECOND, BadUnit, Unit
 from hybgen.law.document import Mapping, Node, Scalar, Sequence
 
 MOST_COMPONENTS = 64
-
+MOST_TEXT = 10000
+"""Characters of one expression."""
+MOST_LETTERS = 200000
+"""Characters of all expressions and constants of a law together."""
+MOST_WORK = 60000
+"""Operations of all expressions of a law together, vectors and powers written out."""
 
 _MEASURED = re.compile(
     r"\s*(-?)([0-9]{1,30}(?:\.[0-9]{0,30})?(?:[eE][+-]?[0-9]{1,3})?)\s*([A-Za-zµ%/].*?)\s*\Z", re.DOTALL
@@ -27,7 +34,7 @@ _MEASURED = re.compile(
 
 def _measured(node: Scalar) -> Number | None:
     """A number with all the rest as its unit: in a declaration `8 V*s/m` needs no parentheses."""
-    found = _MEASURED.match(node.text)
+    found = _MEASURED.match(node.text) if len(node.text) <= MOST_TEXT else None
     if found is None or (found[3][0] == "/" and not node.text[: found.start(3)].endswith(" ")):
         return None
     try:
@@ -38,11 +45,45 @@ def _measured(node: Scalar) -> Number | None:
     return Number(value, unit, node.text.strip(), node.span)
 
 
+class Work:
+    """Counts what a law costs to read, and stops where that is beyond any law."""
+
+    def __init__(self, findings: Findings) -> None:
+        self.findings = findings
+        self.operations = MOST_WORK
+        self.letters = MOST_LETTERS
+
+    def spend(self, amount: int, span: Span) -> None:
+        """Count operations; raises LawError with all findings so far when there are too many."""
+        self.operations -= amount
+        if self.operations < 0:
+            message = f"written out, the expressions up to here have more than {MOST_WORK} operations"
+            self.findings.error("HG139", span, message, hint="use fewer or smaller vectors and matrices")
+            self.findings.stop()
+
+    def read(self, letters: int, span: Span) -> None:
+        """Count characters of expressions; raises LawError with all findings so far when there are too many."""
+        self.letters -= letters
+        if self.letters < 0:
+            message = f"the expressions up to here have more than {MOST_LETTERS} characters: no law is that long"
+            self.findings.error("HG139", span, message)
+            self.findings.stop()
+
+
 @dataclass(frozen=True, slots=True)
 class Context:
     """Reads pieces of a document, adding findings."""
 
     findings: Findings
+    work: Work = field(init=False, repr=False, compare=False)
+
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "work", Work(self.findings))
+
+    def spend(self, nodes: tuple[Tree, ...], span: Span) -> None:
+        """Count the operations of trees."""
+        extent = Extent()
+        self.work.spend(sum(extent.of(n)[0] for n in nodes), span)
 
     def error(self, code: str, span: Span, message: str, hint: str | None = None) -> None:
         """Add an error."""
@@ -91,12 +132,29 @@ class Context:
         return n
 
     def expression(self, node: Node) -> Expr | None:
-        """The tree of an expression: text, cases, or a vector."""
+        """The tree of an expression: text, cases, or a vector; None after adding findings."""
+        expr = self._expression(node)
+        if expr is not None and (part := too_deep(expr)) is not None:
+            message = f"this expression is nested deeper than {DEEPEST_TEXT} operations"
+            self.error("HG153", part.span, message, "name pieces of it under 'terms'")
+            return None
+        return expr
+
+    def parsed(self, node: Scalar) -> Expr | None:
+        """The tree of a text."""
+        if len(node.text) > MOST_TEXT:
+            message = f"this expression has more than {MOST_TEXT} characters"
+            self.error("HG153", node.span, message, "name pieces of it under 'terms'")
+            return None
+        self.work.read(len(node.text), node.span)
+        return parse(node.text, node.locator(), self.findings)
+
+    def _expression(self, node: Node) -> Expr | None:
         if isinstance(node, Scalar):
-            return parse(node.text, node.locate, self.findings)
+            return self.parsed(node)
         assert isinstance(node, Sequence)
         if not any(isinstance(i, Mapping) for i in node.items):
-            items = [self.expression(i) for i in node.items]
+            items = [self._expression(i) for i in node.items]
             return (
                 None if any(i is None for i in items) else Vector(tuple(i for i in items if i is not None), node.span)
             )
@@ -104,7 +162,7 @@ class Context:
         good, otherwise = True, None
         for item in node.items:
             assert isinstance(item, Mapping)
-            parts = {k.text: self.expression(v) for k, v in item.entries}
+            parts = {k.text: self._expression(v) for k, v in item.entries}
             good = good and all(v is not None for v in parts.values())
             when, value = parts.get("when"), parts.get("is")
             if when is not None and value is not None:
@@ -120,7 +178,11 @@ class Context:
         """The exact value of a constant, in a unit (None: the written one)."""
         if not isinstance(node, Scalar):
             return None
-        expr = _measured(node) or parse(node.text, node.locate, self.findings)
+        self.work.read(len(node.text), node.span)
+        expr = _measured(node) or self.parsed(node)
+        if expr is not None and too_deep(expr) is not None:
+            self.error("HG153", node.span, "this constant is nested too deep")
+            return None
         return None if expr is None else value_in(expr, unit, self.findings, difference)
 
     def value(self, node: Node | None, unit: Unit, difference: bool = False) -> Fraction | None:
@@ -137,6 +199,21 @@ class Context:
             self.error("HG140", node.span, f"{what} has to be {'zero or more' if zero else 'above zero'}")
             return None
         return found
+
+    def time(self, node: Node | None, what: str) -> Fraction | None:
+        """A time above zero in seconds; a bare number is none."""
+        found = self.number(node, None)
+        if found is None or node is None:
+            return None
+        value, unit = found
+        if not unit.alike(SECOND):
+            written = "a bare number" if unit.plain else f"in {unit}"
+            self.error("HG202", node.span, f"{what} is a time, this is {written}", "give its unit, such as 100 ms")
+            return None
+        if value <= 0:
+            self.error("HG140", node.span, f"{what} has to be above zero")
+            return None
+        return convert(value, unit, SECOND)
 
     def pair(self, node: Node | None, unit: Unit) -> tuple[Fraction, Fraction] | None:
         """A range."""

@@ -7,8 +7,9 @@ followed, counted as if they were written out.
 from __future__ import annotations
 
 import bisect
+import itertools
 import re
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field
 from typing import Any
 
@@ -20,6 +21,8 @@ from hybgen.diag.span import Span
 MOST_BYTES = 1 << 20
 MOST_NODES = 20000
 DEEPEST = 24
+FARTHEST = 400
+"""So far apart may two neighbours of a value stand in the file (a line end, a comment's worth of blanks)."""
 
 _LOADER: Any = getattr(yaml, "CSafeLoader", yaml.SafeLoader)
 _FORBIDDEN = re.compile("[\x00-\x08\x0b\x0c\x0e-\x1f\x7f\x80-\x9f\u2028\u2029\ufeff\ud800-\udfff\ufffe\uffff]")
@@ -27,19 +30,20 @@ _FORBIDDEN = re.compile("[\x00-\x08\x0b\x0c\x0e-\x1f\x7f\x80-\x9f\u2028\u2029\uf
 
 @dataclass(frozen=True, slots=True)
 class Text:
-    """A file's text (line ends are `\\n`) and where its lines start."""
+    """A file's text (line ends are `\\n`), its lines, and where they start."""
 
     file: str
     text: str
+    lines: tuple[str, ...]
     starts: tuple[int, ...]
 
     def span(self, index: int, length: int) -> Span:
         """The place of `length` characters from an index of the text, cut at the end of the line."""
         index = min(max(index, 0), len(self.text))
         line = bisect.bisect_right(self.starts, index) - 1
-        start = self.starts[line]
-        end = self.starts[line + 1] - 1 if line + 1 < len(self.starts) else len(self.text)
-        return Span(self.file, line + 1, index - start + 1, max(1, min(length, end - index)), self.text[start:end])
+        start, text = self.starts[line], self.lines[line]
+        end = start + len(text)
+        return Span(self.file, line + 1, index - start + 1, max(1, min(length, end - index)), text)
 
 
 @dataclass(frozen=True, slots=True)
@@ -55,21 +59,31 @@ class Scalar:
 
     def locate(self, offset: int, length: int) -> Span:
         """The place of a piece of this scalar's value."""
-        places = self._places()
-        if not places:
-            return self.source.span(self.begin, length)
-        first = places[min(offset, len(places) - 1)] + max(0, offset - len(places) + 1)
-        last = places[min(max(offset, offset + length - 1), len(places) - 1)]
-        return self.source.span(first, max(1, last - first + 1))
+        return self.locator()(offset, length)
 
-    def _places(self) -> list[int]:
-        """For each character of the value its index in the file, found by walking both side by side."""
+    def locator(self) -> Callable[[int, int], Span]:
+        """`locate` for many pieces: the walk through the text is made once."""
+        places = self._places()
+
+        def locate(offset: int, length: int) -> Span:
+            if not places:
+                return self.source.span(self.begin, length)
+            first = places[min(offset, len(places) - 1)] + max(0, offset - len(places) + 1)
+            last = places[min(max(offset, offset + length - 1), len(places) - 1)]
+            return self.source.span(first, max(1, last - first + 1))
+
+        return locate
+
+    def _places(self) -> list[int] | range:
+        """For each character of the value its index in the file, found by walking both side by side.
+
+        A character that stands there as an escape has the place of the one before it.
+        """
         raw = self.source.text[self.begin : self.end]
-        at = 0
-        if raw[:1] in ("|", ">"):
-            at = raw.find("\n") + 1
-        elif not self.plain and raw[:1] in ("'", '"'):
-            at = 1
+        quoted = not self.plain and raw[:1] in ("'", '"')
+        if raw[quoted : quoted + len(self.text)] == self.text:
+            return range(self.begin + quoted, self.begin + quoted + len(self.text))
+        at = raw.find("\n") + 1 if raw[:1] in ("|", ">") else int(quoted)
         places = []
         for sign in self.text:
             if sign.isspace():
@@ -77,7 +91,7 @@ class Scalar:
                 while at < len(raw) and raw[at].isspace():
                     at += 1
                 continue
-            found = raw.find(sign, at)
+            found = raw.find(sign, at, at + FARTHEST)
             at = found + 1 if found >= 0 else at
             places.append(self.begin + max(0, at - 1))
         return places
@@ -142,8 +156,8 @@ def _text(data: bytes, file: str, findings: Findings) -> Text:
         )
         raise _Stop from None
     text = text.removeprefix("\ufeff").replace("\r\n", "\n").replace("\r", "\n")
-    starts = (0, *(m.end() for m in re.finditer("\n", text)))
-    source = Text(file, text, starts)
+    lines = tuple(text.split("\n"))
+    source = Text(file, text, lines, (0, *itertools.accumulate(len(line) + 1 for line in lines[:-1])))
     if bad_sign := _FORBIDDEN.search(text):
         findings.error(
             "HG107",
@@ -210,6 +224,10 @@ class _Reader:
         hint = "inside { } and [ ] put an expression with , [ ] { } or ': ' in quotes"
         if "mapping values are not allowed" in problem:
             hint = "check the indentation, and put a text with ': ' in quotes"
+        elif "block" in (error.context or ""):
+            hint = "check the indentation: the keys of one group start in one column"
+        elif "flow" in (error.context or "") and error.context_mark is not None:
+            hint += f", and close what line {error.context_mark.line + 1} opens"
         return self.stop("HG108", span, f"this is no YAML: {problem}", hint)
 
     def at(self, event: Any) -> Span:

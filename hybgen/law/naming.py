@@ -43,7 +43,7 @@ def check_name(key: Scalar, what: str, findings: Findings, word: bool = False) -
             "HG501",
             key.span,
             f"'{name[:60]}' can't name {what}: it is no C identifier",
-            hint=f"write '{fixed}'" if _IDENTIFIER.match(fixed) and len(fixed) <= LONGEST else hint,
+            hint=f"write '{fixed}'" if name.isascii() and _IDENTIFIER.match(fixed) and len(fixed) <= LONGEST else hint,
         )
         return False
     if len(name) > LONGEST:

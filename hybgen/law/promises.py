@@ -8,7 +8,6 @@ from fractions import Fraction
 from hybgen.diag.suggest import nearest
 from hybgen.expr.core import REAL, Kind, RefKind
 from hybgen.expr.core import Node as Tree
-from hybgen.expr.units import SECOND
 from hybgen.law.behaviour import Behaviour
 from hybgen.law.declarations import difference_unit
 from hybgen.law.document import Mapping, Node, Scalar, Sequence
@@ -31,35 +30,40 @@ def read_claim(
         return None
     node = group.get(kind)
     assert node is not None
-    side = _SIDE.get(kind)
-    for word in ("at_least", "within", "at_most", "except"):
-        if (
-            (extra := group.key(word)) is not None
-            and word != side
-            and not (word == "except" and kind is ClaimKind.FALLS)
-        ):
-            context.error("HG124", extra.span, f"'{word}' does not go with '{kind}'", f"take '{word}' out")
-    if side is not None and group.get(side) is None:
-        context.error("HG121", group.span, f"claim '{key.text}' needs '{side}'")
+    if not _sides_fit(behaviour, key, group, kind):
         return None
     names: tuple[str, ...] = ()
     expr, bound, text = None, None, ""
     match kind:
         case ClaimKind.BETWEEN:
             names = _jumps(behaviour, node, jumps)
-            bound = context.positive(group.get("at_least"), SECOND, "the time")
+            bound = context.time(group.get("at_least"), "'at_least'")
             text = f"between {' and '.join(names)}"
         case ClaimKind.BUMP:
             names, bound, text = _bump(behaviour, node, group, outputs)
         case _:
             expr, text = _expression(behaviour, kind, node, outputs)
             if kind is ClaimKind.LEAVES:
-                bound = context.positive(group.get("within"), SECOND, "the time")
+                bound = context.time(group.get("within"), "'within'")
     exception = None
     if kind is ClaimKind.FALLS and (extra_node := group.get("except")) is not None:
         found = behaviour.condition(extra_node, "in a claim", _ANY)
         exception = found[0] if found else None
     return Claim(key.text, kind, expr, exception, names, bound, node.span, text)
+
+
+def _sides_fit(behaviour: Behaviour, key: Scalar, group: Mapping, kind: ClaimKind) -> bool:
+    """Is there the key that the claim needs, and none that it can't have?"""
+    side = _SIDE.get(kind)
+    allowed = {side, "except"} if kind is ClaimKind.FALLS else {side}
+    for word in ("at_least", "within", "at_most", "except"):
+        if (extra := group.key(word)) is not None and word not in allowed:
+            message = f"'{word}' does not go with '{kind}'"
+            behaviour.context.error("HG124", extra.span, message, f"take '{word}' out")
+    if side is not None and group.get(side) is None:
+        behaviour.context.error("HG121", group.span, f"claim '{key.text}' needs '{side}'")
+        return False
+    return True
 
 
 def _expression(

@@ -14,13 +14,12 @@ from hybgen.diag.finding import Findings, LawError
 from hybgen.diag.span import Span
 from hybgen.expr.core import Kind, RefKind
 from hybgen.expr.scope import Curve, Scope, Symbol
-from hybgen.expr.units import SECOND
 from hybgen.law import shape, structure
 from hybgen.law.behaviour import Behaviour, read_terms
 from hybgen.law.context import Context
 from hybgen.law.declarations import read_input, read_parameter, read_state, read_table
 from hybgen.law.document import MOST_BYTES, Mapping, Scalar, Sequence, read_document
-from hybgen.law.model import Input, Law, Output, Parameter, State, StateKind
+from hybgen.law.model import Flow, Input, Law, Output, Parameter, State, StateKind
 from hybgen.law.naming import LONGEST, check_law_name, macro_of
 from hybgen.law.promises import read_assumptions, read_claim
 
@@ -79,52 +78,59 @@ class _Reader:
         return node.text if isinstance(node, Scalar) else default
 
     def law(self, file: str, digest: str) -> Law:
-        context, document = self.context, self.document
         self.header()
         self.unique_names()
-        step = context.positive(document.get("step"), SECOND, "the step") or Fraction(1)
-        inputs = self.each("inputs", lambda k, v: read_input(context, k, v))
-        parameters = self.each("parameters", lambda k, v: read_parameter(context, k, v))
-        states = self.each("states", lambda k, v: read_state(context, k, v))
-        tables = self.each("tables", lambda k, v: read_table(context, k, v))
-        context.findings.stop()
-        jumps = tuple(k.text for k, _ in self.group("jumps").entries)
-        scope = Scope(
-            _symbols(inputs, parameters, states), {t.name: Curve(t.name, t.x_unit, t.y_unit) for t in tables}, jumps
+        law = self.declared(file, digest)
+        self.context.findings.stop()
+        return self.behaving(law)
+
+    def declared(self, file: str, digest: str) -> Law:
+        """The law with its declarations; it does nothing yet."""
+        context, document = self.context, self.document
+        return Law(
+            name=self.word("law", ""),
+            about=context.text(document, "about"),
+            step=context.time(document.get("step"), "the step") or Fraction(1),
+            number=self.word("number", "float32"),
+            thresholds=self.word("thresholds", "safe"),
+            prefer=self.word("prefer", "jump"),
+            jumps_per_step=context.whole(document, "jumps_per_step"),
+            inputs=self.each("inputs", lambda k, v: read_input(context, k, v)),
+            parameters=self.each("parameters", lambda k, v: read_parameter(context, k, v)),
+            states=self.each("states", lambda k, v: read_state(context, k, v)),
+            tables=self.each("tables", lambda k, v: read_table(context, k, v)),
+            terms=(),
+            flow=Flow(None, "", self.law_span(), (), "auto"),
+            sample=(),
+            jumps=(),
+            outputs=(),
+            claims=(),
+            assume=(),
+            file=file,
+            digest=digest,
         )
-        scope, terms = read_terms(context, scope, states, self.group("terms"))
+
+    def behaving(self, law: Law) -> Law:
+        """The law with all its expressions."""
+        context = self.context
+        names = tuple(k.text for k, _ in self.group("jumps").entries)
+        curves = {t.name: Curve(t.name, t.x_unit, t.y_unit) for t in law.tables}
+        scope = Scope(_symbols(law.inputs, law.parameters, law.states), curves, names)
+        scope, terms = read_terms(context, scope, law.states, self.group("terms"))
         context.findings.stop()
-        behaviour = Behaviour(context, scope, states)
+        behaviour = Behaviour(context, scope, law.states)
         flow = behaviour.flow(self.group("flow"), self.law_span())
         sample = behaviour.sample(self.group("sample"), flow)
-        made_jumps = self.each("jumps", behaviour.jump)
+        jumps = self.each("jumps", behaviour.jump)
         outputs = self.each("outputs", behaviour.output)
-        promising = Behaviour(context, replace(scope, symbols={**_output_symbols(outputs), **scope.symbols}), states)
-        claims = self.each("claims", lambda k, v: read_claim(promising, k, v, outputs, jumps))
-        listed = document.get("assume")
+        wider = replace(scope, symbols={**_output_symbols(outputs), **scope.symbols})
+        promising = Behaviour(context, wider, law.states)
+        claims = self.each("claims", lambda k, v: read_claim(promising, k, v, outputs, names))
+        listed = self.document.get("assume")
         assume = tuple(read_assumptions(behaviour, listed)) if isinstance(listed, Sequence) else ()
         context.findings.stop()
-        return Law(
-            self.word("law", ""),
-            context.text(document, "about"),
-            step,
-            self.word("number", "float32"),
-            self.word("thresholds", "safe"),
-            self.word("prefer", "jump"),
-            context.whole(document, "jumps_per_step"),
-            inputs,
-            parameters,
-            states,
-            terms,
-            tables,
-            flow,
-            sample,
-            made_jumps,
-            outputs,
-            claims,
-            assume,
-            file,
-            digest,
+        return replace(
+            law, terms=terms, flow=flow, sample=sample, jumps=jumps, outputs=outputs, claims=claims, assume=assume
         )
 
     def law_span(self) -> Span:
@@ -164,6 +170,7 @@ class _Reader:
                     )
         if len(seen) + len(self.group("jumps").entries) > MOST_NAMES:
             self.context.error("HG139", self.document.span, f"a law has at most {MOST_NAMES} names")
+            self.context.findings.stop()
 
 
 def _symbols(

@@ -40,7 +40,8 @@ def _of(kind: shape.Kind) -> dict[str, Any]:
         case shape.Later():
             return {"not": {}}
         case shape.Named():
-            return {"type": ["object", "null"], "additionalProperties": _of(kind.item)}
+            cut = {"patternProperties": {shape.PIECE: {"not": {"enum": [None, ""]}}}}
+            return {"type": ["object", "null"], "additionalProperties": _of(kind.item), "allOf": [cut]}
         case shape.Listed():
             return {"type": "array", "items": _of(kind.item)}
         case shape.Either():

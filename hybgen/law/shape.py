@@ -5,6 +5,10 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 
+PIECE = r"[\[\](){}<>=!+*/,.@ ]|^[0-9-]"
+"""A key that looks so and has no value is a piece of an expression that YAML has cut at a comma (the same in Python and
+in ECMA 262, for the schema)."""
+
 
 @dataclass(frozen=True, slots=True)
 class Text:

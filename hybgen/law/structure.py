@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from typing import assert_never
 
 from hybgen.diag.finding import Findings
@@ -73,7 +74,7 @@ def _record(node: Node, kind: shape.Record, what: str, findings: Findings) -> No
 
 def _torn(key: Scalar, value: Node, findings: Findings) -> bool:
     """Is this key the rest of an expression that YAML has cut at a comma?"""
-    if isinstance(value, Scalar) and not value.text and (key.text[-1:] in ")]" or not key.text.isidentifier()):
+    if isinstance(value, Scalar) and not value.text and re.search(shape.PIECE, key.text):
         findings.error("HG125", key.span, f"'{key.text[:40]}' looks like a piece of an expression", hint=_TORN)
         return True
     return False

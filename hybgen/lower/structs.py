@@ -33,14 +33,7 @@ class Structs:
 def structs(made: StepLaw, namer: Namer) -> Structs:
     """The structs of a law."""
     prefix = made.law.name
-    enums: list[Enum] = []
-    known: dict[str, tuple[str, tuple[str, ...]]] = {}
-    for state in made.states:
-        if state.type.kind is Kind.ENUM:
-            name = namer.unique(f"{prefix}_{state.name}")
-            words = tuple(namer.unique(f"{prefix}_{state.name}_{v}".upper()) for v in state.values)
-            known[state.name] = (name, words)
-            enums.append(Enum(name, words, f"values of {state.name}"))
+    enums, known = _enums(made, namer)
     fields = Namer(namer.taken | _fields(made))
     macros = tuple(fields.unique(f"{prefix}_JUMP_{j.name}".upper()) for j in made.jumps)
     namer.taken.update(macros)
@@ -72,6 +65,19 @@ def structs(made: StepLaw, namer: Namer) -> Structs:
         macros,
         held,
     )
+
+
+def _enums(made: StepLaw, namer: Namer) -> tuple[list[Enum], dict[str, tuple[str, tuple[str, ...]]]]:
+    """The enumeration types, and for each logic variable its type's name and enumerators."""
+    enums: list[Enum] = []
+    known: dict[str, tuple[str, tuple[str, ...]]] = {}
+    for state in made.states:
+        if state.type.kind is Kind.ENUM:
+            name = namer.unique(f"{made.law.name}_{state.name}")
+            words = tuple(namer.unique(f"{made.law.name}_{state.name}_{v}".upper()) for v in state.values)
+            known[state.name] = (name, words)
+            enums.append(Enum(name, words, f"values of {state.name}"))
+    return enums, known
 
 
 def _now(made: StepLaw) -> tuple[dict[tuple[RefKind, str], str], tuple[Member, ...]]:

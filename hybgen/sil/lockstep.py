@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 from fractions import Fraction
+from functools import partial
 from typing import Any
 
 import numpy as np
@@ -137,32 +138,45 @@ def run(
     reference = Reference(made, lanes=lanes)
     chip = chip if chip is not None else Chip(made, lanes=lanes)
     reference.recording = True
-    rounds = -(-steps // CHUNK) + injections
     total = 0
     difference = None
-    _tune(reference, chip, stimulus.parameters(lanes))
-    history: list[Fields] = []
-    start = {n: a.copy() for n, a in reference.fields.items()}
-    for k in range(-(-steps // CHUNK)):
-        length = min(CHUNK, steps - k * CHUNK)
-        history.append(stimulus.inputs(length, lanes))
-        difference, done = _rounds(reference, chip, history, "run", start)
+    parts = list(_campaign(reference, chip, stimulus, steps, injections))
+    for k, part in enumerate(parts):
+        difference, done = part()
         total += done
         if difference is not None:
             break
         if progress:
-            progress(k + 1, rounds)
-    for k in range(injections if difference is None else 0):
+            progress(k + 1, len(parts))
+    return _report(made, reference, lanes, total, difference)
+
+
+Part = Callable[[], tuple[Difference | None, int]]
+
+
+def _campaign(reference: Reference, chip: Chip, stimulus: Stimulus, steps: int, injections: int) -> Iterator[Part]:
+    """Long runs from the start in chunks, then rounds of a few steps from any state, to be done in order."""
+    lanes = reference.lanes
+    history: list[Fields] = []
+    first: Fields = {}
+
+    def chunk(number: int) -> tuple[Difference | None, int]:
+        if number == 0:
+            _tune(reference, chip, stimulus.parameters(lanes))
+            first.update({n: a.copy() for n, a in reference.fields.items()})
+        history.append(stimulus.inputs(min(CHUNK, steps - number * CHUNK), lanes))
+        return _rounds(reference, chip, history, "run", first)
+
+    def injected() -> tuple[Difference | None, int]:
         _tune(reference, chip, stimulus.parameters(lanes))
         start = stimulus.states(lanes)
         _place(reference, chip, start)
-        difference, done = _rounds(reference, chip, [stimulus.inputs(INJECTED_STEPS, lanes)], "injected state", start)
-        total += done
-        if difference is not None:
-            break
-        if progress:
-            progress(rounds - injections + k + 1, rounds)
-    return _report(made, reference, lanes, total, difference)
+        return _rounds(reference, chip, [stimulus.inputs(INJECTED_STEPS, lanes)], "injected state", start)
+
+    for number in range(-(-steps // CHUNK)):
+        yield partial(chunk, number)
+    for _ in range(injections):
+        yield injected
 
 
 def _tune(reference: Reference, chip: Chip, parameters: Fields) -> None:

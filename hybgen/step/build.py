@@ -62,31 +62,14 @@ class _Builder:
         law = self.law
         flowing = integrate(law, self.translator)
         leaves = self._leaves()
-        terms = [
-            Definition(
-                self.translator.local[(t.name, i if t.size is not None else None)],
-                self.translator.translate(e),
-                t.span,
-                t.text,
-            )
-            for t in law.terms
-            for i, e in enumerate(t.exprs)
-        ]
         bounds = Bounds(self.format, leaves, self._table_ranges())
-        definitions, opposites = self._normalized([*terms, *flowing.definitions], bounds, leaves)
+        definitions, opposites = self._normalized([*self._terms(), *flowing.definitions], bounds, leaves)
         normalizer = Normalizer(bounds, opposites)
         jumps = self._jumps(normalizer, bounds)
-        condition = (
-            None if law.flow.condition is None else normalizer.normal(self.translator.translate(law.flow.condition))
-        )
+        condition = self._condition(normalizer)
         outputs = tuple(o for output in law.outputs for o in self._output(output, bounds))
         flow = tuple(self._assign(a, e, bounds) for a, e in flowing.updates)
         sample = tuple(self._assign(a, self._value(a), bounds) for a in law.sample)
-        alarms = tuple(
-            dict.fromkeys(
-                n for c in [*(j.condition for j in jumps), *([condition] if condition else [])] for n in watched(c)
-            )
-        )
         most = law.jumps_per_step or longest(jumps, definitions) or max(1, len(jumps))
         made = StepLaw(
             law,
@@ -100,7 +83,7 @@ class _Builder:
             declare.states(law, self.translator),
             declare.tables(law, self.translator),
             tuple(definitions),
-            alarms,
+            _alarms([*(j.condition for j in jumps), *([condition] if condition else [])]),
             jumps,
             condition,
             outputs,
@@ -109,6 +92,18 @@ class _Builder:
             (),
         )
         return _flagged(_pruned(made))
+
+    def _terms(self) -> list[Definition]:
+        local = self.translator.local
+        return [
+            Definition(local[(t.name, i if t.size is not None else None)], self.translator.translate(e), t.span, t.text)
+            for t in self.law.terms
+            for i, e in enumerate(t.exprs)
+        ]
+
+    def _condition(self, normalizer: Normalizer) -> Node | None:
+        condition = self.law.flow.condition
+        return None if condition is None else normalizer.normal(self.translator.translate(condition))
 
     def _leaves(self) -> dict[Key, Range]:
         leaves: dict[Key, Range] = {}
@@ -223,6 +218,11 @@ def _stays(expr: Node, ends: tuple[Value, Value], state: State, bounds: Bounds) 
     if not isinstance(expr, Ref | Op):
         return bool(ends[0] <= expr.value <= ends[1])
     return False
+
+
+def _alarms(conditions: list[Node]) -> tuple[Node, ...]:
+    """The expressions whose finiteness conditions ask, each once."""
+    return tuple(dict.fromkeys(n for c in conditions for n in watched(c)))
 
 
 def _roots(made: StepLaw) -> Iterable[Node]:

@@ -10,7 +10,7 @@ import pytest
 from scipy.linalg import expm
 from scipy.signal import cont2discrete
 
-from hybgen.check import check
+from hybgen.checks import check
 from hybgen.expr.core import Const, Op, walk
 from hybgen.sil import Chip
 from hybgen.step import build

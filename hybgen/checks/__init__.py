@@ -4,8 +4,8 @@ from __future__ import annotations
 
 from fractions import Fraction
 
-from hybgen.check import names, numeric, pending, reach, reset
-from hybgen.check.report import Report
+from hybgen.checks import names, numeric, pending, reach, reset
+from hybgen.checks.report import Report
 from hybgen.diag.finding import Finding, LawError
 from hybgen.law.model import Law
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 from fractions import Fraction
 
-from hybgen.check.report import error
+from hybgen.checks.report import error
 from hybgen.diag.finding import Finding, Severity, Verdict
 from hybgen.expr.core import FALSE, Const, Node, Ref, RefKind
 from hybgen.expr.fold import fold

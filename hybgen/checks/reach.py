@@ -11,8 +11,8 @@ import itertools
 from collections.abc import Iterator
 from dataclasses import dataclass
 
-from hybgen.check.report import error, warning
-from hybgen.check.view import View, logic_states, value_name, view
+from hybgen.checks.report import error, warning
+from hybgen.checks.view import View, logic_states, value_name, view
 from hybgen.diag.finding import Finding
 from hybgen.expr.core import COMPARISONS, OPPOSITE, Const, Kind, Node, Op, Ref, truth
 from hybgen.expr.fold import fold

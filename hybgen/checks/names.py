@@ -5,8 +5,8 @@ from __future__ import annotations
 import re
 from collections.abc import Iterator
 
-from hybgen.check.report import warning
-from hybgen.check.view import read_names
+from hybgen.checks.report import warning
+from hybgen.checks.view import read_names
 from hybgen.diag.finding import Finding
 from hybgen.diag.span import Span
 from hybgen.expr.core import Node
@@ -26,8 +26,10 @@ def questions(law: Law) -> list[Finding]:
 
 def _constants_written(law: Law) -> set[str]:
     """Constants that stand in an expression's text: folded into whole numbers they leave no trace in its tree."""
-    texts = [j.text for j in law.jumps] + [a.text for j in law.jumps for a in j.assigns] + [law.flow.text]
-    texts += [x.text for x in (*law.flow.rates, *law.sample, *law.terms, *law.outputs, *law.claims, *law.assume)]
+    texts = [law.flow.text]
+    for items in (law.jumps, law.flow.rates, law.sample, law.terms, law.outputs, law.claims, law.assume):
+        texts += [item.text for item in items]
+    texts += [a.text for j in law.jumps for a in j.assigns]
     return {p.name for p in law.parameters if not p.tunable} & set(re.findall(r"\w+", " ".join(texts)))
 
 

@@ -4,8 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
-from hybgen.check.report import warning
-from hybgen.check.view import View, logic_states, view
+from hybgen.checks.report import warning
+from hybgen.checks.view import View, logic_states, view
 from hybgen.diag.finding import Finding
 from hybgen.expr.core import FALSE, Const, Kind, Node, Op, Ref, RefKind, refs
 from hybgen.expr.fold import facts, fold

@@ -1,0 +1,80 @@
+"""The rooms of DEVELOPERS.md: who may import whom, who may read YAML, start processes, print."""
+
+from __future__ import annotations
+
+import ast
+from pathlib import Path
+
+import pytest
+
+from tests.conftest import ROOT
+
+MAY = {
+    "version": set(), "diag": set(), "expr": {"diag"}, "law": {"diag", "expr"}, "numbers": {"expr"},
+    "step": {"diag", "expr", "law", "numbers"}, "reference": {"expr", "law", "numbers", "step"}, "ir": {"diag"},
+    "lower": {"diag", "expr", "law", "numbers", "step", "ir", "version"}, "emit": {"ir"},
+    "checks": {"diag", "expr", "law", "numbers", "step"}, "pipeline": {"law", "step", "lower", "emit"},
+    "sil": {"diag", "expr", "law", "numbers", "step", "reference", "lower", "emit"},
+}  # fmt: skip
+EVERYTHING = {"cli", "__init__", "__main__"}
+ONLY = {
+    "yaml": {"law"},
+    "subprocess": {"sil"},
+    "cffi": {"sil"},
+    "jinja2": {"emit"},
+    "mpmath": {"numbers"},
+    "sympy": set(),
+    "argparse": {"cli"},
+}
+FILES = sorted((ROOT / "hybgen").rglob("*.py"))
+
+
+def room(path: Path) -> str:
+    return path.relative_to(ROOT / "hybgen").parts[0].removesuffix(".py")
+
+
+def imports(path: Path) -> set[str]:
+    found: set[str] = set()
+    for node in ast.walk(ast.parse(path.read_text())):
+        if isinstance(node, ast.Import):
+            found |= {a.name for a in node.names}
+        elif isinstance(node, ast.ImportFrom):
+            assert node.level == 0 and all(a.name != "*" for a in node.names), path
+            found.add(str(node.module))
+            if node.module == "hybgen":
+                found |= {f"hybgen.{a.name}" for a in node.names}
+    return found
+
+
+@pytest.mark.parametrize("path", FILES, ids=lambda p: str(p.relative_to(ROOT)))
+def test_imports_follow_the_table(path: Path) -> None:
+    own = room(path)
+    for name in imports(path):
+        top, _, rest = name.partition(".")
+        if top == "hybgen" and rest and own not in EVERYTHING:
+            assert rest.split(".")[0] in MAY[own] | {own}, f"{path} may not import {name}"
+        if top in ONLY:
+            assert own in ONLY[top], f"{path} may not import {name}"
+
+
+def test_only_the_command_line_prints() -> None:
+    for path in FILES:
+        if room(path) not in EVERYTHING:
+            names = {n.id for n in ast.walk(ast.parse(path.read_text())) if isinstance(n, ast.Name)}
+            assert not names & {"print", "input", "eval", "exec"}, path
+
+
+def test_files_and_functions_stay_small() -> None:
+    for path in FILES:
+        text = path.read_text()
+        assert len(text.splitlines()) <= 400, path
+        for node in ast.walk(ast.parse(text)):
+            if isinstance(node, ast.FunctionDef):
+                length = (node.end_lineno or 0) - node.lineno + 1
+                assert length <= 40, f"{path}: {node.name} has {length} lines"
+
+
+def test_templates_compute_nothing() -> None:
+    for path in (ROOT / "templates").rglob("*.jinja"):
+        for piece in path.read_text().split("{{")[1:]:
+            assert piece.split("}}")[0].strip().replace(".", "").replace("_", "").isalnum(), (path, piece[:40])
