@@ -5,12 +5,14 @@
 
 from __future__ import annotations
 
-from importlib import import_module
-from typing import TYPE_CHECKING, Any
-
 from hybgen.version import VERSION as __version__
 
+TYPE_CHECKING = False
+"""For type checkers, which take it as true; importing it would double the time that `hybgen --help` takes."""
+
 if TYPE_CHECKING:
+    from typing import Any
+
     from hybgen.checks import Report, check
     from hybgen.diag.finding import Finding, LawError
     from hybgen.law import Law, load
@@ -49,6 +51,8 @@ __all__ = [
 def __getattr__(name: str) -> Any:
     if name not in _HOMES:
         raise AttributeError(f"module 'hybgen' has no attribute '{name}'")
+    from importlib import import_module
+
     found = getattr(import_module(_HOMES[name]), name)
     globals()[name] = found
     return found

@@ -42,3 +42,8 @@ def run_both(law: Law, inputs: Mapping[str, Any], **options: Any) -> tuple[dict[
 def both() -> Callable[..., tuple[dict[str, Any], Reference, Chip]]:
     """`run_both` as a fixture."""
     return run_both
+
+
+def pytest_addoption(parser: pytest.Parser) -> None:
+    """--update-golden writes the golden C anew instead of comparing with it."""
+    parser.addoption("--update-golden", action="store_true", help="write tests/golden anew")

@@ -3,9 +3,12 @@
 from __future__ import annotations
 
 import argparse
-from fractions import Fraction
 
 from hybgen.version import VERSION
+
+TYPE_CHECKING = False
+if TYPE_CHECKING:
+    from fractions import Fraction
 
 SHAPES = ("two-point", "modes", "pi", "empty")
 STAGES = ("law", "step", "program", "c")

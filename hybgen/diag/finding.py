@@ -67,6 +67,10 @@ class LawError(Exception):
         super().__init__("; ".join(f"{f.where.place}: {f.code}: {f.message}" for f in self.findings))
 
 
+MOST = 100
+"""So many findings of one stage are enough: more are a wrong file, not a wrong law."""
+
+
 class Findings:
     """Collects the findings of one stage, so that a stage reports all it sees and then stops."""
 
@@ -83,7 +87,10 @@ class Findings:
         hint: str | None = None,
         related: tuple[tuple[Span, str], ...] = (),
     ) -> None:
-        """Add a refuted finding of severity error; the property is that of the code's table row."""
+        """Add a refuted finding of severity error; the property is that of the code's table row.
+
+        Raises LawError when there are MOST of them.
+        """
         self._found.append(
             Finding(
                 code,
@@ -97,6 +104,8 @@ class Findings:
                 related=related,
             )
         )
+        if len(self._found) >= MOST:
+            self.stop()
 
     def add(self, finding: Finding) -> None:
         """Add a finding made elsewhere."""

@@ -111,7 +111,8 @@ class Writer:
     def block(self, body: Sequence[Statement], depth: int) -> Iterator[str]:
         """The lines of a body."""
         for statement in body:
-            yield from self.statement(statement, depth)
+            for line in self.statement(statement, depth):
+                yield from wrapped(line)
 
     def statement(self, statement: Statement, depth: int) -> Iterator[str]:
         """The lines of one statement."""
@@ -174,6 +175,36 @@ class Writer:
             yield f"{INDENT * (depth + 1)}}}"
         else:
             yield from self.block(body, depth + 1)
+
+
+_BREAKS = (" || ", " && ", " ? ", " : ", " + ", " - ", " * ", ", ")
+
+
+def wrapped(line: str) -> Iterator[str]:
+    """A long line of code in pieces, broken before an operator (or after a comma) where the parentheses are fewest."""
+    pad = " " * (len(line) - len(line.lstrip())) + INDENT
+    while len(line) > WIDTH and not line.lstrip().startswith(("/*", "#")):
+        cut = _cut(line)
+        if cut is None:
+            break
+        yield line[:cut].rstrip()
+        line = pad + line[cut:].lstrip()
+    yield line
+
+
+def _cut(line: str) -> int | None:
+    """Where to break: the last place before the width with the fewest open parentheses."""
+    first = len(line) - len(line.lstrip()) + 8
+    best: tuple[int, int] | None = None
+    depth = 0
+    for i, sign in enumerate(line[:WIDTH]):
+        depth += (sign == "(") - (sign == ")")
+        mark = next((b for b in _BREAKS if line.startswith(b, i)), None)
+        if mark is not None and i > first:
+            at = i + 2 if mark == ", " else i + 1
+            if best is None or depth <= best[0]:
+                best = depth, at
+    return best[1] if best is not None else None
 
 
 def comment(text: str) -> str:

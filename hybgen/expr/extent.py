@@ -7,7 +7,7 @@ from __future__ import annotations
 
 from collections.abc import Iterable
 
-from hybgen.expr.core import Node, Op
+from hybgen.expr.core import TRUE, Node, Op
 from hybgen.expr.tree import Binary, Call, Cases, Chain, Expr, Item, Logic, Unary, Vector
 
 LARGEST = 20000
@@ -39,16 +39,23 @@ class Extent:
         todo = [node]
         while todo:
             here = todo[-1]
-            args = here.args if isinstance(here, Op) else ()
-            new = [a for a in args if id(a) not in self._known]
+            if not isinstance(here, Op) or id(here) in self._known:
+                todo.pop()
+                continue
+            new = [a for a in here.args if isinstance(a, Op) and id(a) not in self._known]
             if new:
                 todo += new
                 continue
             todo.pop()
-            parts = [self._known[id(a)] for a in args]
-            size, depth = 1 + sum(p[1] for p in parts), 1 + max((p[2] for p in parts), default=0)
+            size, depth = 1, 1
+            for arg in here.args:
+                _, more, deep = self._known.get(id(arg), _LEAF)
+                size, depth = size + more, max(depth, deep + 1)
             self._known[id(here)] = here, size, depth
-        return self._known[id(node)][1:]
+        return self._known.get(id(node), _LEAF)[1:]
+
+
+_LEAF: tuple[Node, int, int] = (TRUE, 1, 1)
 
 
 def children(expr: Expr) -> tuple[Expr, ...]:

@@ -22,9 +22,9 @@ from hybgen.law.document import Mapping, Node, Scalar, Sequence
 MOST_COMPONENTS = 64
 MOST_TEXT = 10000
 """Characters of one expression."""
-MOST_LETTERS = 200000
+MOST_LETTERS = 100000
 """Characters of all expressions and constants of a law together."""
-MOST_WORK = 60000
+MOST_WORK = 40000
 """Operations of all expressions of a law together, vectors and powers written out."""
 
 _MEASURED = re.compile(

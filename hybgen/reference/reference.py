@@ -18,6 +18,8 @@ from hybgen.step import build
 from hybgen.step.model import Status, StepAssign, StepInput, StepLaw, StepOutput
 
 Array = NDArray[Any]
+Lanes = Array | slice
+"""Numbers of lanes, or all of them."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -175,20 +177,20 @@ class Reference(Machine):
         whole = good if u.size is None else good.all(axis=1)
         each = good if u.size is None or u.invalid == "clamp" else whole[:, None]
         held = self.fields.get(f"held_{u.name}")
+        if held is not None:
+            np.copyto(held, raw, where=each)
         match u.invalid:
             case "hold":
                 assert held is not None
-                seen = np.where(each, raw, held)
+                seen = held  # the last good sample is this one, where it is good
             case "value":
                 seen = np.where(each, raw, substitute)
             case _:
                 inside = np.where(raw < low, low, np.where(raw > high, high, raw))
                 seen = inside if held is None else np.where(np.isfinite(raw), inside, held)
-        if held is not None:
-            held[...] = np.where(each, raw, held)
         self.snapshot[u.name] = seen
         self.snapshot[f"valid {u.name}"] = whole
-        status[~whole] |= np.uint32(Status.INVALID_INPUT)
+        np.bitwise_or(status, np.uint32(Status.INVALID_INPUT), out=status, where=~whole)
 
     def _due(self, lanes: Array | None) -> Array:
         """The number of the jump that is due in each lane, 0 if none."""
@@ -196,27 +198,29 @@ class Reference(Machine):
         found, watched = self._plans.due.run(self._load(lanes), self._plans.watch if self.recording else ())
         for i, values in enumerate(watched):
             self.seen[i] |= (not np.all(values), bool(np.any(values)))
-        due = np.zeros(count, np.uint32)
+        due = np.zeros(count, np.uint16)
         for number in range(len(self.step_law.jumps), 0, -1):
-            due = np.where(found[number - 1], np.uint32(number), due)
+            np.copyto(due, np.uint16(number), where=found[number - 1])
         if self.step_law.law.prefer == "flow" and self.step_law.flow_condition is not None:
-            due = np.where(found[-1], np.uint32(0), due)
-        return np.broadcast_to(due, (count,))
+            np.copyto(due, np.uint16(0), where=found[-1])
+        return due
 
     def _jump(self, status: Array) -> Array:
         """Jumps while one is due; the jump still due in each lane."""
         if not self.step_law.jumps:
-            return np.zeros(self.lanes, np.uint32)
-        due = self._due(None).copy()
+            return np.zeros(self.lanes, np.uint16)
+        due = self._due(None)
         lanes = np.flatnonzero(due)
         self.trail = []
         for _ in range(self.step_law.jumps_per_step):
             if not len(lanes):
                 break
-            for number in np.unique(due[lanes]):
-                self._take(int(number), lanes[due[lanes] == number], status)
-            due[lanes] = self._due(lanes)
-            lanes = lanes[due[lanes] != 0]
+            asked = due[lanes]
+            for number in np.flatnonzero(np.bincount(asked)):
+                self._take(int(number), lanes[asked == number], status)
+            again = self._due(lanes)
+            due[lanes] = again
+            lanes = lanes[again != 0]
         status[lanes] |= np.uint32(Status.JUMP_LIMIT)
         return due
 
@@ -233,13 +237,15 @@ class Reference(Machine):
         if lanes[0] == 0:
             self.trail.append(number)
 
-    def _store(self, a: StepAssign, value: Array, lanes: Array, status: Array) -> None:
+    def _store(self, a: StepAssign, value: Array, lanes: Lanes, status: Array) -> None:
         """A new value into some lanes, if it is finite, held inside its range."""
-        value = np.broadcast_to(value, lanes.shape)
         if a.guarded:
+            numbers = np.arange(self.lanes) if isinstance(lanes, slice) else lanes
+            value = np.broadcast_to(value, numbers.shape)
             good = np.isfinite(value)
-            status[lanes[~good]] |= np.uint32(Status.NON_FINITE)
-            lanes, value = lanes[good], value[good]
+            if not good.all():
+                status[numbers[~good]] |= np.uint32(Status.NON_FINITE)
+                lanes, value = numbers[good], value[good]
         if a.clamp is not None:
             value = self._clamped(value, a.clamp)
         target = self.fields[a.state]
@@ -250,7 +256,10 @@ class Reference(Machine):
 
     def _clamped(self, value: Array, clamp: tuple[Any, Any]) -> Array:
         low, high = (value.dtype.type(float(c) if isinstance(c, Fraction) else c) for c in clamp)
-        return np.where(value < low, low, np.where(value > high, high, value))
+        held = value.copy()
+        np.copyto(held, low, where=value < low)
+        np.copyto(held, high, where=value > high)
+        return held
 
     def _give(self, status: Array) -> Fields:
         outputs = self._blank("outputs")
@@ -271,12 +280,10 @@ class Reference(Machine):
 
     def _flow(self, due: Array, status: Array) -> None:
         """Flow and sample: all values from the old state, then stored."""
-        load = self._load(None)
         flowing = self._flows()
-        everyone = np.arange(self.lanes)
-        sampled, _ = self._plans.sample.run(load)
-        if len(flowing) == self.lanes:
-            flowed, _ = self._plans.flow.run(load)
+        sampled, _ = self._plans.sample.run(self._load(None))
+        if isinstance(flowing, slice):
+            flowed, _ = self._plans.flow.run(self._load(None))
         else:
             still = np.ones(self.lanes, bool)
             still[flowing] = False
@@ -285,15 +292,16 @@ class Reference(Machine):
         for a, value in zip(self.step_law.flow, flowed, strict=True):
             self._store(a, value, flowing, status)
         for a, value in zip(self.step_law.sample, sampled, strict=True):
-            self._store(a, value, everyone, status)
+            self._store(a, value, slice(None), status)
         for x in self.step_law.states:
             if x.kind == "timer":
                 timer = self.fields[x.name]
-                timer[flowing] += (timer[flowing] < np.int32(x.maximum or 0)).astype(np.int32)
+                timer[flowing] += timer[flowing] < np.int32(x.maximum or 0)
 
-    def _flows(self) -> Array:
+    def _flows(self) -> Lanes:
         """The lanes that flow in this step."""
         if self.step_law.flow_condition is None:
-            return np.arange(self.lanes)
+            return slice(None)
         holds = self._plans.due.run(self._load(None))[0][-1]
-        return np.flatnonzero(np.broadcast_to(holds, (self.lanes,)))
+        found = np.flatnonzero(np.broadcast_to(holds, (self.lanes,)))
+        return slice(None) if len(found) == self.lanes else found
