@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from dataclasses import replace
 from fractions import Fraction
 
 from hybgen.checks.report import error
 from hybgen.diag.finding import Finding, Severity, Verdict
-from hybgen.expr.core import FALSE, Const, Node, Ref, RefKind
+from hybgen.expr.core import FALSE, Const, Node, Ref, RefKind, walk
 from hybgen.expr.fold import fold
 from hybgen.law.model import Law
 from hybgen.step import StepLaw, build
@@ -27,7 +28,7 @@ def fits(law: Law) -> list[Finding]:
 def questions(law: Law, step: Fraction | None, number: str | None) -> list[Finding]:
     """Findings of the step law; raises LawError where there is none."""
     made = build(law, step=step, number=number)
-    return [*made.notes, *_defaults(made), _chain(made)]
+    return [*made.notes, *_defaults(made), *_moved(law, made), _chain(made)]
 
 
 def _defaults(made: StepLaw) -> Iterator[Finding]:
@@ -46,6 +47,30 @@ def _defaults(made: StepLaw) -> Iterator[Finding]:
                 f"the default values break '{rule.text}'",
                 "change a value, or the rule",
             )
+
+
+def _moved(law: Law, made: StepLaw) -> Iterator[Finding]:
+    """What `thresholds: nearest` costs: constants that rounding moves to the side where the law does not jump."""
+    if law.thresholds != "nearest":
+        return
+    safe = build(replace(law, thresholds="safe"), step=made.step, number=made.format.name)
+    for jump, other in zip(made.jumps, safe.jumps, strict=True):
+        for near, far in zip(walk(jump.condition), walk(other.condition), strict=True):
+            if isinstance(near, Const) and isinstance(far, Const) and near != far:
+                least, most = (made.format.dtype.type(float(c.value)) for c in (near, far))
+                message = (
+                    f"'{jump.name}' compares with {least} in C, where the law needs {most}: rounding can cause a jump"
+                )
+                yield Finding(
+                    "HG411",
+                    "rounding",
+                    Verdict.REFUTED,
+                    Severity.NOTE,
+                    jump.span,
+                    jump.name,
+                    message,
+                    hint="leave out thresholds: nearest",
+                )
 
 
 def _chain(made: StepLaw) -> Finding:

@@ -66,4 +66,13 @@ NUMBERS = (
         "rest: 0.25 s    # step: 100 ms",
         "rest: 0.3 s",
     ),
+    Code(
+        "HG411",
+        "rounding",
+        "note",
+        "a threshold that rounding moves towards the jump",
+        "With thresholds: nearest a constant may be rounded to the side on which the law does not jump yet.",
+        "thresholds: nearest",
+        "thresholds: safe",
+    ),
 )
