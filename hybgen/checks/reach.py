@@ -20,18 +20,27 @@ from hybgen.law.members import logic_ref, possible, values_of
 from hybgen.law.model import Jump, Law, State
 
 MOST_CASES = 4096
+"""Cases looked at for one condition; and for a law:"""
+MOST_IN_ALL = 10000
+
+
+@dataclass(slots=True)
+class Budget:
+    """How many cases may still be looked at; a condition beyond it counts as undecided."""
+
+    left: int = MOST_IN_ALL
 
 
 def questions(law: Law) -> list[Finding]:
     """All findings on reachability that constants decide."""
-    seen = view(law)
-    return [*_conditions(law, seen), *_values(law, seen)]
+    seen, budget = view(law), Budget()
+    return [*_conditions(law, seen, budget), *_values(law, seen, budget)]
 
 
-def _conditions(law: Law, seen: View) -> Iterator[Finding]:
+def _conditions(law: Law, seen: View, budget: Budget) -> Iterator[Finding]:
     states = logic_states(law)
     for jump in law.jumps:
-        answers = outcomes(seen.of(jump.condition), states)
+        answers = outcomes(seen.of(jump.condition), states, budget)
         if answers == {False}:
             yield error(
                 "HG301",
@@ -50,11 +59,11 @@ def _conditions(law: Law, seen: View) -> Iterator[Finding]:
                 f"the condition of jump '{jump.name}' always holds",
                 "compare each alternative with the variable: x == a or x == b",
             )
-    if law.flow.condition is not None and outcomes(seen.of(law.flow.condition), states) == {False}:
+    if law.flow.condition is not None and outcomes(seen.of(law.flow.condition), states, budget) == {False}:
         yield error("HG301", "reach", law.flow.span, "flow", "the flow condition is always false: the law never flows")
 
 
-def outcomes(condition: Node, states: list[State]) -> set[bool]:
+def outcomes(condition: Node, states: list[State], budget: Budget) -> set[bool]:
     """The truth values that a condition can take as a proposition; both where there are too many cases."""
     axes: list[list[dict[Node, Const]]] = []
     cases = 1
@@ -65,10 +74,11 @@ def outcomes(condition: Node, states: list[State]) -> set[bool]:
     for atom in dict.fromkeys(_atoms(condition, states)):
         axes.append([_decided(atom, False), _decided(atom, True)])
         cases *= 2
-    if cases > MOST_CASES:
+    if cases > min(MOST_CASES, budget.left):
         return {False, True}
     found: set[bool] = set()
     for case in itertools.product(*axes):
+        budget.left -= 1
         answer = fold(condition, {k: v for part in case for k, v in part.items()})
         found |= {bool(answer.value)} if isinstance(answer, Const) else {False, True}
         if len(found) == 2:
@@ -116,7 +126,7 @@ class _Change:
     values: list[Const] | None
 
 
-def _values(law: Law, seen: View) -> Iterator[Finding]:
+def _values(law: Law, seen: View, budget: Budget) -> Iterator[Finding]:
     states = logic_states(law)
     for state in states:
         changes = [
@@ -137,7 +147,7 @@ def _values(law: Law, seen: View) -> Iterator[Finding]:
                     f"'{name}' of {state.name} is never entered: no jump sets it",
                     "set it in a jump's map, or take it out",
                 )
-            elif len(state.values) > 1 and not any(_leaves(c, state, value, states) for c in changes):
+            elif len(state.values) > 1 and not any(_leaves(c, state, value, states, budget) for c in changes):
                 yield warning(
                     "HG304",
                     "reach",
@@ -148,8 +158,8 @@ def _values(law: Law, seen: View) -> Iterator[Finding]:
                 )
 
 
-def _leaves(change: _Change, state: State, value: Const, states: list[State]) -> bool:
+def _leaves(change: _Change, state: State, value: Const, states: list[State], budget: Budget) -> bool:
     """May this jump be taken at this value, and change it?"""
     if change.values is not None and all(v == value for v in change.values):
         return False
-    return outcomes(fold(change.condition, {logic_ref(state): value}), states) != {False}
+    return outcomes(fold(change.condition, {logic_ref(state): value}), states, budget) != {False}

@@ -6,17 +6,20 @@ from collections.abc import Iterator
 
 from hybgen.checks.report import warning
 from hybgen.checks.view import View, logic_states, view
-from hybgen.diag.finding import Finding
+from hybgen.diag.finding import Finding, Severity, Verdict
 from hybgen.expr.core import FALSE, Const, Kind, Node, Op, Ref, RefKind, refs
 from hybgen.expr.fold import facts, fold
 from hybgen.law.model import Jump, Law, State, StateKind
 
+MOST_JUMPS = 64
 _MODES = (StateKind.LOGIC, StateKind.BOOL)
 _MEMORY = (StateKind.TIMER, StateKind.COUNT, StateKind.REAL)
 
 
 def questions(law: Law) -> list[Finding]:
     """A warning for each jump and each timer, count or integrator it neither sets nor keeps although it is read then."""
+    if len(law.jumps) > MOST_JUMPS:
+        return [_undecided(law)]
     seen = view(law)
     sampled = {a.state for a in law.sample}
     memory = [s for s in law.states if s.kind in _MEMORY and s.name not in sampled]
@@ -28,6 +31,11 @@ def questions(law: Law) -> list[Finding]:
         read = _read_after(law, seen, jump)
         found += [_finding(law, jump, s, read[s.name]) for s in memory if s.name not in done and s.name in read]
     return found
+
+
+def _undecided(law: Law) -> Finding:
+    message = f"'reset' is not decided for a law of more than {MOST_JUMPS} jumps"
+    return Finding("HG390", "reset", Verdict.OPEN, Severity.NOTE, law.flow.span, law.name, message)
 
 
 def _finding(law: Law, jump: Jump, state: State, where: str) -> Finding:

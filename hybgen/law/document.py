@@ -22,7 +22,11 @@ MOST_BYTES = 1 << 20
 MOST_NODES = 20000
 DEEPEST = 24
 FARTHEST = 400
-"""So far apart may two neighbours of a value stand in the file (a line end, a comment's worth of blanks)."""
+"""So far apart may two neighbours of a value stand in the file (a line end and blanks between them)."""
+_BLANK = re.compile(r"\s*")
+_CUT = re.compile(r"(\\\n\s*)+")
+_ESCAPES = {"x": 4, "u": 6, "U": 10}
+"""Length of an escape in double quotes, if not 2."""
 
 _LOADER: Any = getattr(yaml, "CSafeLoader", yaml.SafeLoader)
 _FORBIDDEN = re.compile("[\x00-\x08\x0b\x0c\x0e-\x1f\x7f\x80-\x9f\u2028\u2029\ufeff\ud800-\udfff\ufffe\uffff]")
@@ -75,26 +79,34 @@ class Scalar:
         return locate
 
     def _places(self) -> list[int] | range:
-        """For each character of the value its index in the file, found by walking both side by side.
-
-        A character that stands there as an escape has the place of the one before it.
-        """
+        """For each character of the value its index in the file, found by walking both side by side."""
         raw = self.source.text[self.begin : self.end]
-        quoted = not self.plain and raw[:1] in ("'", '"')
-        if raw[quoted : quoted + len(self.text)] == self.text:
-            return range(self.begin + quoted, self.begin + quoted + len(self.text))
-        at = raw.find("\n") + 1 if raw[:1] in ("|", ">") else int(quoted)
+        quote = raw[:1] if not self.plain and raw[:1] in ("'", '"') else ""
+        first = len(quote)
+        if raw[first : first + len(self.text)] == self.text:
+            return range(self.begin + first, self.begin + first + len(self.text))
+        at = raw.find("\n") + 1 if raw[:1] in ("|", ">") else first
         places = []
         for sign in self.text:
-            if sign.isspace():
-                places.append(self.begin + min(at, len(raw)))
-                while at < len(raw) and raw[at].isspace():
-                    at += 1
-                continue
-            found = raw.find(sign, at, at + FARTHEST)
-            at = found + 1 if found >= 0 else at
-            places.append(self.begin + max(0, at - 1))
+            place, at = _walked(raw, at, sign, quote)
+            places.append(self.begin + place)
         return places
+
+
+def _walked(raw: str, at: int, sign: str, quote: str) -> tuple[int, int]:
+    """Where a sign of a value stands in the raw text, from `at` on, and where the next one may stand."""
+    if quote == '"' and (cut := _CUT.match(raw, at)):
+        at = cut.end()
+    if quote == '"' and raw[at : at + 1] == "\\":
+        return at, at + _ESCAPES.get(raw[at + 1 : at + 2], 2)
+    if sign.isspace():
+        run = _BLANK.match(raw, at)
+        assert run is not None
+        return min(at, len(raw)), run.end() if "\n" in run[0] else min(at + 1, run.end())
+    found = raw.find(sign, at, at + FARTHEST)
+    if found < 0:
+        return max(0, at - 1), at
+    return found, found + (2 if sign == quote else 1)
 
 
 @dataclass(frozen=True, slots=True)

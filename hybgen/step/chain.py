@@ -13,6 +13,8 @@ from hybgen.expr.core import FALSE, Const, Node, Ref, RefKind, rebuild, refs
 from hybgen.expr.fold import facts, fold
 from hybgen.step.model import Definition, StepJump
 
+MOST_JUMPS = 64
+
 
 def followers(jumps: Sequence[StepJump], definitions: Sequence[Definition]) -> dict[int, tuple[int, ...]]:
     """For each jump (by position) the jumps that may be due right after it."""
@@ -24,7 +26,9 @@ def followers(jumps: Sequence[StepJump], definitions: Sequence[Definition]) -> d
 
 
 def longest(jumps: Sequence[StepJump], definitions: Sequence[Definition]) -> int | None:
-    """The longest chain of jumps in one step, or None where a cycle is not excluded."""
+    """The longest chain of jumps in one step, or None where a cycle is not excluded (or there are too many jumps to ask)."""
+    if len(jumps) > MOST_JUMPS:
+        return None
     next_ = followers(jumps, definitions)
     length: dict[int, int] = {}
     for _ in range(len(jumps)):
