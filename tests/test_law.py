@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 import time
 from fractions import Fraction
 from pathlib import Path
@@ -11,13 +12,17 @@ import yaml
 from hypothesis import given
 from hypothesis import strategies as st
 
+from hybgen.diag.codes import CODES
 from hybgen.diag.finding import MOST, Finding, Findings, LawError, Severity, Verdict
 from hybgen.diag.render import render, summary
 from hybgen.diag.span import Span
 from hybgen.diag.suggest import nearest
-from hybgen.law import Law, document, read
+from hybgen.expr import extent
+from hybgen.law import Law, context, document, read
+from hybgen.law.declarations import MOST_ENTRIES
 from hybgen.law.document import Mapping, Scalar, read_document
 from hybgen.law.model import StateKind
+from hybgen.law.reader import MOST_NAMES
 from tests.conftest import ROOT, SPECS, law_of
 
 HEAD = "law: tank\nstep: 100 ms\n"
@@ -360,3 +365,10 @@ def test_a_stage_stops_at_very_many_findings() -> None:
         for line in range(1, 1000):
             findings.error("HG120", Span("a.yaml", line, 1), "unknown")
     assert len(caught.value.findings) == MOST
+
+
+def test_what_the_codes_say_of_limits_is_so() -> None:
+    said = CODES["HG139"].meaning + CODES["HG153"].meaning
+    limits = (context.MOST_LETTERS, context.MOST_WORK, context.MOST_TEXT, extent.LARGEST, extent.DEEPEST_TEXT)
+    numbers = {int(n) for n in re.findall(r"\d+", said)}
+    assert {*limits, MOST_NAMES, context.MOST_COMPONENTS, MOST_ENTRIES} == numbers

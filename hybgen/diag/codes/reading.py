@@ -158,7 +158,8 @@ READING = (
     _row(
         "HG139",
         "too many or too large",
-        "A law has at most 1000 names, vectors of 64, matrices of 4096 entries.",
+        "A law has at most 1000 names, vectors of 64, matrices of 4096 entries; all its expressions together have at most "
+        "100000 characters and, written out for each component, 40000 operations.",
         "vector: 100000",
         "vector: 3",
     ),

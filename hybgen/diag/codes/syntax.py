@@ -35,7 +35,8 @@ SYNTAX = (
         "language",
         "error",
         "an expression is too long or nested too deep",
-        "Long expressions are hard to review. Name the pieces under 'terms'.",
+        "Long expressions are hard to review. One has at most 10000 characters, 100 operators inside one another and, "
+        "with vectors and powers written out, 20000 operations. Name the pieces under 'terms'.",
         "value: ((((((((((…))))))))))",
         "terms: {error: …}",
     ),
