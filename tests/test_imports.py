@@ -22,7 +22,7 @@ ONLY = {
     "subprocess": {"sil"},
     "cffi": {"sil"},
     "jinja2": {"emit"},
-    "mpmath": {"numbers"},
+    "flint": {"numbers"},
     "sympy": set(),
     "argparse": {"cli"},
 }

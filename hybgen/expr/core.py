@@ -56,6 +56,9 @@ class RefKind(StrEnum):
     """A definition of a step law."""
 
 
+# The hash of each node is computed once, when it is made: trees are keys in many places.
+
+
 @dataclass(frozen=True, slots=True)
 class Const:
     """A constant: a Fraction (real), int (int), bool (bool), or the code of an enumeration's value (enum)."""
@@ -63,6 +66,13 @@ class Const:
     value: Fraction | int | bool
     type: Type
     span: Span = field(default=NOWHERE, compare=False, repr=False)
+    hashed: int = field(init=False, compare=False, repr=False)
+
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "hashed", hash((self.value, self.type)))
+
+    def __hash__(self) -> int:
+        return self.hashed
 
 
 @dataclass(frozen=True, slots=True)
@@ -74,6 +84,13 @@ class Ref:
     type: Type
     index: int | None = None
     span: Span = field(default=NOWHERE, compare=False, repr=False)
+    hashed: int = field(init=False, compare=False, repr=False)
+
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "hashed", hash((self.kind, self.name, self.type, self.index)))
+
+    def __hash__(self) -> int:
+        return self.hashed
 
 
 @dataclass(frozen=True, slots=True)
@@ -85,6 +102,13 @@ class Op:
     type: Type
     table: str = ""
     span: Span = field(default=NOWHERE, compare=False, repr=False)
+    hashed: int = field(init=False, compare=False, repr=False)
+
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "hashed", hash((self.op, self.args, self.type, self.table)))
+
+    def __hash__(self) -> int:
+        return self.hashed
 
 
 Node = Const | Ref | Op

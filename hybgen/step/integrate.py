@@ -21,6 +21,7 @@ from hybgen.step.model import Definition
 from hybgen.step.translate import Translator, component
 
 MOST_CASES = 64
+MOST_SPLITS = 8
 MOST_TOGETHER = 24
 
 
@@ -65,7 +66,7 @@ def integrate(law: Law, translator: Translator) -> Integrated:
             if method == "exact":
                 _refuse_exact(flow, group)
             method = "rk4"
-        news.update(_explicit(flow, group, method, definitions))
+        news.update(_explicit(flow, group, method, definitions, [MOST_SPLITS]))
         methods.add(method)
     updates = tuple((flow.assigns[k], news[k]) for k in flow.rates)
     return Integrated(updates, tuple(definitions), "+".join(sorted(methods)) or "none")
@@ -275,19 +276,23 @@ class _Stage:
         return _Stage(self.flow, number, self.group, self.definitions, self.tag)
 
 
-def _explicit(flow: _Flow, group: list[Key], method: str, definitions: list[Definition]) -> dict[Key, Node]:
-    """New values by an explicit formula; where the rates have cases that do not move, each case for itself."""
+def _explicit(
+    flow: _Flow, group: list[Key], method: str, definitions: list[Definition], budget: list[int]
+) -> dict[Key, Node]:
+    """New values by an explicit formula; where the rates have cases that do not move, each case for itself (a few
+    of them: beyond that the choices stay inside the stages)."""
     if method == "euler" or not any(flow.acts[k] for k in group):
         return {k: _along(flow, k) for k in group}
     asked = next((c for k in group if (c := _held_choice(flow, flow.rates[k])) is not None), None)
-    if asked is None:
+    if asked is None or budget[0] <= 0:
         return _staged(flow, group, method, definitions)
+    budget[0] -= 1
     branches = []
     for value in (True, False):
         known = decided({}, asked, value)
         rates = {k: fold(r, known) if k in group else r for k, r in flow.rates.items()}
         acts = {k: flow.acts[k] if k not in group or _moves(flow, rates[k]) else frozenset[Key]() for k in rates}
-        branches.append(_explicit(replace(flow, rates=rates, acts=acts), group, method, definitions))
+        branches.append(_explicit(replace(flow, rates=rates, acts=acts), group, method, definitions, budget))
     yes, no = branches
     condition = flow.translator.translate(asked)
     return {k: yes[k] if yes[k] == no[k] else op("select", condition, yes[k], no[k]) for k in group}
