@@ -256,7 +256,7 @@ class Reference(Machine):
 
     def _clamped(self, value: Array, clamp: tuple[Any, Any]) -> Array:
         low, high = (value.dtype.type(float(c) if isinstance(c, Fraction) else c) for c in clamp)
-        held = value.copy()
+        held = np.array(value)
         np.copyto(held, low, where=value < low)
         np.copyto(held, high, where=value > high)
         return held
