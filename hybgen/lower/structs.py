@@ -2,11 +2,10 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
 from dataclasses import dataclass
 from fractions import Fraction
 
-from hybgen.expr.core import Kind, Node, RefKind, refs
+from hybgen.expr.core import Kind, RefKind, refs
 from hybgen.expr.units import Unit
 from hybgen.ir.model import Enum, Member
 from hybgen.law.model import Input, Parameter, State, StateKind
@@ -84,7 +83,7 @@ def _now(made: StepLaw) -> tuple[dict[tuple[RefKind, str], str], tuple[Member, .
     """What one step knows: the sampled inputs, which of them were good, which jumps were taken (where asked)."""
     namer = Namer({u.name for u in made.inputs})
     names: dict[tuple[RefKind, str], str] = {}
-    asked = {r.name for node in _trees(made) for r in refs(node, RefKind.VALID)}
+    asked = {r.name for node in made.trees() for r in refs(node, RefKind.VALID)}
     members = [Member(u.name, str(u.type.kind), u.size, "") for u in made.inputs]
     for u in made.inputs:
         if u.name in asked:
@@ -102,18 +101,6 @@ def _now(made: StepLaw) -> tuple[dict[tuple[RefKind, str], str], tuple[Member, .
 def _fields(made: StepLaw) -> set[str]:
     """The members that bear the author's names: a macro of that name would change them."""
     return {row.name for rows in (made.inputs, made.parameters, made.states, made.law.outputs) for row in rows}
-
-
-def _trees(made: StepLaw) -> Iterator[Node]:
-    yield from made.alarms
-    yield from (d.expr for d in made.definitions)
-    for jump in made.jumps:
-        yield jump.condition
-        yield from (a.expr for a in jump.assigns)
-    if made.flow_condition is not None:
-        yield made.flow_condition
-    yield from (o.expr for o in made.outputs)
-    yield from (a.expr for a in (*made.flow, *made.sample))
 
 
 def _locals(made: StepLaw, others: Namer) -> dict[str, str]:

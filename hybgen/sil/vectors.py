@@ -6,7 +6,6 @@ parameters at and between their limits, and any state of the declared domain.
 
 from __future__ import annotations
 
-from collections.abc import Iterator
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import Any
@@ -29,24 +28,11 @@ def generator(made: StepLaw, salt: int) -> np.random.Generator:
     return np.random.Generator(np.random.PCG64(int(made.law.digest[:16], 16) ^ salt))
 
 
-def trees(made: StepLaw) -> Iterator[Node]:
-    """Every expression of a step law."""
-    yield from (d.expr for d in made.definitions)
-    yield from (r.condition for r in made.rules)
-    for jump in made.jumps:
-        yield jump.condition
-        yield from (a.expr for a in jump.assigns)
-    if made.flow_condition is not None:
-        yield made.flow_condition
-    yield from (o.expr for o in made.outputs)
-    yield from (a.expr for a in (*made.flow, *made.sample))
-
-
 def thresholds(made: StepLaw) -> dict[Key, list[float]]:
     """For each input, parameter and state the constants it is compared with."""
     found: dict[Key, set[float]] = {}
     ends = _ends(made)
-    for tree in trees(made):
+    for tree in made.trees():
         for node in walk(tree):
             if isinstance(node, Op) and node.op in COMPARISONS:
                 _compared(node.args[0], node.args[1], ends, found)

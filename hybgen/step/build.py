@@ -225,20 +225,9 @@ def _alarms(conditions: list[Node]) -> tuple[Node, ...]:
     return tuple(dict.fromkeys(n for c in conditions for n in watched(c)))
 
 
-def _roots(made: StepLaw) -> Iterable[Node]:
-    yield from made.alarms
-    for jump in made.jumps:
-        yield jump.condition
-        yield from (a.expr for a in jump.assigns)
-    if made.flow_condition is not None:
-        yield made.flow_condition
-    yield from (output.expr for output in made.outputs)
-    yield from (assign.expr for assign in (*made.flow, *made.sample))
-
-
 def _pruned(made: StepLaw) -> StepLaw:
     """Without the definitions that nothing uses."""
-    needed = {r.name for root in _roots(made) for r in refs(root, RefKind.LOCAL)}
+    needed = {r.name for root in made.roots() for r in refs(root, RefKind.LOCAL)}
     kept: list[Definition] = []
     for d in reversed(made.definitions):
         if d.name in needed:
@@ -249,9 +238,7 @@ def _pruned(made: StepLaw) -> StepLaw:
 
 def _flagged(made: StepLaw) -> StepLaw:
     """Jumps that an expression asks about are flagged."""
-    asked = {
-        r.name for root in [*_roots(made), *(d.expr for d in made.definitions)] for r in refs(root, RefKind.JUMPED)
-    }
+    asked = {r.name for tree in made.trees() for r in refs(tree, RefKind.JUMPED)}
     return replace(made, jumps=tuple(replace(j, flagged=j.name in asked) for j in made.jumps))
 
 

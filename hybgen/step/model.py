@@ -24,6 +24,7 @@ A guarded assignment whose new value is not finite keeps the old value (status N
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 from enum import IntFlag
 from fractions import Fraction
@@ -207,3 +208,20 @@ class StepLaw:
     sample: tuple[StepAssign, ...]
     notes: tuple[Finding, ...] = ()
     """What the step changes that the author should know (times that are no whole number of steps)."""
+
+    def roots(self) -> Iterator[Node]:
+        """The expressions that are computed for their own sake: alarms, conditions, new values, outputs."""
+        yield from self.alarms
+        for jump in self.jumps:
+            yield jump.condition
+            yield from (a.expr for a in jump.assigns)
+        if self.flow_condition is not None:
+            yield self.flow_condition
+        yield from (o.expr for o in self.outputs)
+        yield from (a.expr for a in (*self.flow, *self.sample))
+
+    def trees(self) -> Iterator[Node]:
+        """Every expression: rules and definitions too."""
+        yield from (r.condition for r in self.rules)
+        yield from (d.expr for d in self.definitions)
+        yield from self.roots()
