@@ -19,10 +19,9 @@ PUMP = ROOT / "specs" / "bilge_pump.yaml"
 BAD = ROOT / "tests" / "bad"
 
 
-def run(*arguments: object, **options: object) -> subprocess.CompletedProcess[str]:
-    return subprocess.run(
-        [sys.executable, "-m", "hybgen", *map(str, arguments)], capture_output=True, text=True, check=False, **options
-    )  # type: ignore[call-overload,no-any-return]
+def run(*arguments: object, env: dict[str, str] | None = None) -> subprocess.CompletedProcess[str]:
+    command = [sys.executable, "-m", "hybgen", *map(str, arguments)]
+    return subprocess.run(command, capture_output=True, text=True, check=False, env=env)
 
 
 def test_exit_codes(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
@@ -68,7 +67,7 @@ def test_check_as_json() -> None:
 def test_findings_show_the_line_and_a_caret() -> None:
     done = run("check", BAD / "HG203_scale_of_unit.yaml")
     lines = done.stdout.splitlines()
-    assert lines[0].startswith("HG203_scale_of_unit.yaml:24:") and "the factor 1/1000 is missing" in lines[0]
+    assert lines[0].startswith(f"{BAD / 'HG203_scale_of_unit.yaml'}:24:") and "the factor 1/1000 is missing" in lines[0]
     assert lines[1].index("1000 mm") == lines[2].index("^")
     assert "\x1b" not in done.stdout
     assert "\x1b[" in run("check", BAD / "HG203_scale_of_unit.yaml", "--colour", "always").stdout
@@ -201,3 +200,10 @@ def test_completion_and_schema() -> None:
         assert done.returncode == 0 and "preflight" in done.stdout
     assert json.loads(run("schema").stdout)["title"] == "hybgen law file"
     assert json.loads(run("schema", "--json", "-").stdout)["title"] == "hybgen law file"
+
+
+def test_without_a_compiler_ziglang_serves(tmp_path: Path) -> None:
+    """An empty PATH: the C is built by the `cc` extra."""
+    environment = {k: v for k, v in os.environ.items() if k != "CC"}
+    done = run("sil", PUMP, "--lanes", "16", "--steps", "100", env={**environment, "PATH": str(tmp_path)})
+    assert done.returncode == 0 and "equal in every bit" in done.stdout, done.stderr

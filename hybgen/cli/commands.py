@@ -5,10 +5,11 @@ from __future__ import annotations
 import argparse
 import sys
 from collections.abc import Callable
+from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from hybgen.cli.console import Console, wants_colour
+from hybgen.cli.console import Console, placed, wants_colour
 from hybgen.cli.files import write, write_all
 from hybgen.cli.main import FINDINGS, OK, USAGE
 from hybgen.diag.finding import Finding, LawError, Severity
@@ -32,8 +33,9 @@ def load(options: argparse.Namespace, console: Console) -> Law | int:
     try:
         return load_law(options.law)
     except LawError as error:
-        show_findings(error.findings, console)
-        console.data({"law": None, "ok": False, "findings": [f.to_json() for f in error.findings]})
+        findings = placed(error.findings, options)
+        show_findings(findings, console)
+        console.data({"law": None, "ok": False, "findings": [f.to_json() for f in findings]})
         return USAGE if isinstance(error, UnreadableFile) else FINDINGS
 
 
@@ -55,8 +57,9 @@ def law_command(run: Callable[[argparse.Namespace, Law, Console], int]) -> Calla
         try:
             return run(options, law, console)
         except LawError as error:
-            show_findings(error.findings, console)
-            console.data({"law": law.name, "ok": False, "findings": [f.to_json() for f in error.findings]})
+            findings = placed(error.findings, options)
+            show_findings(findings, console)
+            console.data({"law": law.name, "ok": False, "findings": [f.to_json() for f in findings]})
             return FINDINGS
 
     return command
@@ -66,7 +69,8 @@ def checked(options: argparse.Namespace, law: Law) -> Report:
     """The findings about a law, at the step and number format of the options."""
     from hybgen.checks import check
 
-    return check(law, step=options.step, number=options.number)
+    report = check(law, step=options.step, number=options.number)
+    return replace(report, findings=placed(report.findings, options))
 
 
 def check_command(options: argparse.Namespace, law: Law, console: Console) -> int:

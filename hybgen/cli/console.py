@@ -2,14 +2,16 @@
 
 from __future__ import annotations
 
+import argparse
 import json
 import os
 import sys
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
 
 from hybgen.cli.files import write
+from hybgen.diag.finding import Finding
 
 
 @dataclass(frozen=True, slots=True)
@@ -50,3 +52,9 @@ def wants_colour(choice: str) -> bool:
     if choice != "auto":
         return choice == "always"
     return sys.stdout.isatty() and not os.environ.get("NO_COLOR")
+
+
+def placed(findings: tuple[Finding, ...], options: argparse.Namespace) -> tuple[Finding, ...]:
+    """Findings whose places name the law's file as it was given, so that an editor can open it."""
+    name = Path(options.law).name
+    return tuple(replace(f, where=replace(f.where, file=options.law)) if f.where.file == name else f for f in findings)

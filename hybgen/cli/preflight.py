@@ -10,7 +10,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING
 
 from hybgen.checks import Report, check
-from hybgen.cli.console import Console
+from hybgen.cli.console import Console, placed
 from hybgen.cli.files import write_all
 from hybgen.cli.main import FINDINGS, OK
 from hybgen.diag.finding import Verdict
@@ -40,7 +40,7 @@ def preflight(options: argparse.Namespace, law: Law, console: Console) -> int:
         return passed
 
     report = check(law, step=options.step, number=options.number)
-    for finding in report.failing("warning"):
+    for finding in placed(report.failing("warning"), options):
         console.say(render(finding, console.colour))
     files: dict[str, str] = {}
     sil: SilReport | None = None
@@ -60,7 +60,7 @@ def preflight(options: argparse.Namespace, law: Law, console: Console) -> int:
             "law": law.name,
             "ok": passed,
             "stages": [{"stage": n, "passed": p, "text": t} for n, p, t in stages],
-            "findings": [f.to_json() for f in report.findings],
+            "findings": [f.to_json() for f in placed(report.findings, options)],
             "sil": sil.to_json() if sil else None,
             "evidence": str(folder),
         }
