@@ -148,7 +148,7 @@ def test_preflight_leaves_evidence(tmp_path: Path) -> None:
     one, two = tmp_path / "one", tmp_path / "two"
     done = run("preflight", PUMP, "--to", one)
     assert done.returncode == 0, done.stdout + done.stderr
-    assert [line.split()[0] for line in done.stdout.splitlines()[:4]] == ["passed"] * 4
+    assert [line.split()[0] for line in done.stdout.splitlines()[:5]] == ["passed"] * 5
     assert run("preflight", PUMP, "--to", two, "--quiet").stdout == ""
     names = sorted(p.name for p in one.iterdir())
     assert names == ["bilge_pump.c", "bilge_pump.h", "findings.json", "sil.json", "summary.md"]

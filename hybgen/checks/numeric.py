@@ -9,7 +9,7 @@ from fractions import Fraction
 from hybgen.checks.report import error
 from hybgen.diag.finding import Finding, Severity, Verdict
 from hybgen.expr.core import FALSE, Const, Node, Ref, RefKind, walk
-from hybgen.expr.fold import fold
+from hybgen.expr.fold import decide
 from hybgen.law.model import Law
 from hybgen.step import StepLaw, build
 from hybgen.step.chain import longest
@@ -38,7 +38,7 @@ def _defaults(made: StepLaw) -> Iterator[Finding]:
         for i, value in enumerate(p.default):
             known[Ref(RefKind.PARAMETER, p.name, p.type, i if p.size is not None else None)] = Const(value, p.type)
     for rule in made.rules:
-        if fold(rule.condition, known) == FALSE:
+        if decide(rule.condition, known) == FALSE:
             yield error(
                 "HG406",
                 "range",

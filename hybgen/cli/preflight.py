@@ -16,8 +16,10 @@ from hybgen.cli.main import FINDINGS, OK
 from hybgen.diag.finding import Verdict
 from hybgen.diag.render import render, summary
 from hybgen.pipeline import generate
+from hybgen.reread import reread
 from hybgen.sil import lockstep, toolchain
 from hybgen.sil.lockstep import SilReport
+from hybgen.step import build
 from hybgen.version import VERSION
 
 if TYPE_CHECKING:
@@ -48,6 +50,9 @@ def preflight(options: argparse.Namespace, law: Law, console: Console) -> int:
         files = generate(law, step=options.step, number=options.number)
         same = files == generate(law, step=options.step, number=options.number)
         stage("generate", same, f"{', '.join(files)}, {'the same bytes twice' if same else 'not the same bytes twice'}")
+        wrong = reread(build(law, step=options.step, number=options.number), files)
+        told = "; ".join(f"{w.function}: {w.what}" for w in wrong)
+        stage("reread", not wrong, told or "the C, read back, is the step law in every operation, for all inputs")
         if _builds(law, files, stage):
             sil = _sil(options, law, stage, console)
     passed = all(p for _, p, _ in stages) and sil is not None

@@ -47,25 +47,37 @@ _EXACT: dict[str, Callable[..., Fraction | int | bool]] = {
 
 
 def fold(node: Node, known: Known | None = None) -> Node:
-    """The tree with known nodes replaced and constants folded exactly."""
-    return _fold(node, known or {})
+    """The tree of a law with known nodes replaced and constants folded exactly."""
+    return _fold(node, known or {}, False)
 
 
-def _fold(node: Node, known: Known) -> Node:
+def decide(node: Node, known: Known | None = None) -> Node:
+    """The tree of a step law with known nodes replaced: logic, choices, comparisons and integers are folded.
+
+    Real arithmetic is not: there each operation rounds, a constant has to stay representable, and zero has a sign.
+    """
+    return _fold(node, known or {}, True)
+
+
+def _fold(node: Node, known: Known, rounds: bool) -> Node:
     if known and (found := known.get(node)) is not None:
         return found
     if not isinstance(node, Op):
         return node
-    args = tuple(_fold(a, known) for a in node.args)
+    args = tuple(_fold(a, known, rounds) for a in node.args)
     if any(a is not b for a, b in zip(args, node.args, strict=True)):
         node = Op(node.op, args, node.type, node.table, node.span)
         if known and (found := known.get(node)) is not None:
             return found
     match node.op:
         case "and" | "or":
-            return _logic(node)
+            return _logic(node, rounds)
         case "select":
             return _select(node)
+        case "add" | "sub" | "mul" | "div" if rounds:
+            return node
+        case "neg" if rounds and isinstance(args[0], Const) and args[0].value == 0:
+            return node
         case "div":
             return _divided(node)
         case _:
@@ -101,7 +113,7 @@ def _divided(node: Op) -> Node:
     return node
 
 
-def _logic(node: Op) -> Node:
+def _logic(node: Op, rounds: bool) -> Node:
     ends = node.op == "or"  # the value that decides the whole
     kept: list[Node] = []
     for arg in node.args:
@@ -114,17 +126,17 @@ def _logic(node: Op) -> Node:
         return truth(not ends, node.span)
     if len(kept) == 1:
         return kept[0]
-    if not ends and (simpler := _under_the_first(kept)) is not None:
-        return _logic(op("and", *simpler, span=node.span))
+    if not ends and (simpler := _under_the_first(kept, rounds)) is not None:
+        return _logic(op("and", *simpler, span=node.span), rounds)
     return node if len(kept) == len(node.args) else op(node.op, *kept, span=node.span)
 
 
-def _under_the_first(parts: list[Node]) -> list[Node] | None:
+def _under_the_first(parts: list[Node], rounds: bool) -> list[Node] | None:
     """Conjuncts simplified by what the ones before them say, or None where that changes nothing."""
     known: dict[Node, Const] = {}
     found: list[Node] = []
     for part in parts:
-        found.append(_fold(part, known) if known else part)
+        found.append(_fold(part, known, rounds) if known else part)
         known.update(facts(part))
     return found if any(a is not b for a, b in zip(found, parts, strict=True)) else None
 

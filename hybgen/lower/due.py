@@ -6,7 +6,7 @@ from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass
 
 from hybgen.expr.core import FALSE, TRUE, Const, Kind, Node, Ref, RefKind, walk
-from hybgen.expr.fold import fold
+from hybgen.expr.fold import decide
 from hybgen.ir.model import Answer, Apply, Constant, If, Note, Statement, Switch, Value
 from hybgen.lower.values import Values
 from hybgen.step.model import StepJump, StepLaw, StepState
@@ -47,7 +47,7 @@ class Due:
         members = [Const(code, state.type) for code in codes]
         found: list[tuple[tuple[Const, ...], Chain]] = []
         for member in members:
-            chain = _reduced((j, fold(c, {ref: member})) for j, c in whole)
+            chain = _reduced((j, decide(c, {ref: member})) for j, c in whole)
             at = next((i for i, (_, other) in enumerate(found) if other == chain), None)
             if at is None:
                 found.append(((member,), chain))

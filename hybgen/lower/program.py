@@ -276,6 +276,8 @@ class _Builder:
         if clamp is None:
             return value
         type_ = REAL if value.type == "real" else INT
+        if isinstance(value, Constant) and not isinstance(value.value, str):
+            return self.parts.values.constant(min(max(value.value, clamp[0]), clamp[1]), type_)
         low, high = (self.parts.values.constant(c, type_) for c in clamp)
         return Apply("clamp" if value.type == "real" else "iclamp", (value, low, high), value.type)
 

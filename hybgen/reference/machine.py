@@ -222,7 +222,10 @@ class Machine:
 
 
 class StateMapping(MutableMapping[str, Any]):
-    """The state of the first lane: floats, ints, bools, names of logic values; timers in seconds."""
+    """The state of the first lane: floats, ints, bools, names of logic values; timers in seconds.
+
+    What is written into a timer, a count or a limited state is held inside its range.
+    """
 
     def __init__(self, machine: Machine) -> None:
         self._machine = machine
@@ -250,6 +253,11 @@ class StateMapping(MutableMapping[str, Any]):
             return x.type.values.index(value)
         if x.kind == "logic" and value not in x.values:
             raise ValueError(f"{x.name} is one of {', '.join(map(str, x.values))}, not {value!r}")
+        if x.maximum is not None:
+            return min(max(0, int(value)), x.maximum)
+        declared = self._machine.law.state(x.name)
+        if declared.limit and declared.low is not None and declared.high is not None:
+            return np.clip(value, float(declared.low), float(declared.high))
         return value
 
     def __delitem__(self, name: str) -> None:

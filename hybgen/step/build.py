@@ -8,7 +8,7 @@ from fractions import Fraction
 
 from hybgen.diag.finding import Findings
 from hybgen.expr.core import REAL, Kind, Node, Op, Ref, RefKind, refs
-from hybgen.expr.fold import fold
+from hybgen.expr.fold import decide
 from hybgen.law.model import Assign, Jump, Law, Output, State, StateKind, Value
 from hybgen.numbers.bounds import Bounds, Key, Range, exact_range
 from hybgen.numbers.format import FORMATS, Format
@@ -148,7 +148,7 @@ class _Builder:
         return tuple(self._jump(i + 1, j, normalizer, bounds) for i, j in enumerate(self.law.jumps))
 
     def _jump(self, number: int, jump: Jump, normalizer: Normalizer, bounds: Bounds) -> StepJump:
-        condition = fold(normalizer.normal(self.translator.translate(jump.condition)))
+        condition = decide(normalizer.normal(self.translator.translate(jump.condition)))
         assigns = tuple(self._assign(a, self._value(a), bounds) for a in jump.assigns)
         return StepJump(jump.name, number, condition, assigns, False, jump.span, jump.text)
 
@@ -203,7 +203,7 @@ class _Builder:
         for assumption in self.law.assume:
             used = list(refs(assumption.condition))
             if any(r.kind is RefKind.PARAMETER for r in used) and all(r.kind is RefKind.PARAMETER for r in used):
-                condition = fold(normalizer.normal(self.translator.translate(assumption.condition)))
+                condition = decide(normalizer.normal(self.translator.translate(assumption.condition)))
                 if any(refs(condition)):
                     rules.append(Rule(condition, assumption.text, assumption.span))
         return tuple(rules)

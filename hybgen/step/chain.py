@@ -10,7 +10,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from hybgen.expr.core import FALSE, Const, Node, Ref, RefKind, rebuild, refs
-from hybgen.expr.fold import facts, fold
+from hybgen.expr.fold import decide, facts
 from hybgen.step.model import Definition, StepJump
 
 MOST_JUMPS = 64
@@ -20,7 +20,7 @@ def followers(jumps: Sequence[StepJump], definitions: Sequence[Definition]) -> d
     """For each jump (by position) the jumps that may be due right after it."""
     conditions = [_expanded(j.condition, definitions) for j in jumps]
     return {
-        i: tuple(k for k, c in enumerate(conditions) if fold(c, known) != FALSE)
+        i: tuple(k for k, c in enumerate(conditions) if decide(c, known) != FALSE)
         for i, known in enumerate(_after(j, c) for j, c in zip(jumps, conditions, strict=True))
     }
 
@@ -48,7 +48,7 @@ def _after(jump: StepJump, condition: Node) -> dict[Node, Const]:
         and not any(refs(node, RefKind.LOCAL))
     }
     for assign in jump.assigns:
-        value = fold(assign.expr, known)
+        value = decide(assign.expr, known)
         if isinstance(value, Const):
             known[Ref(RefKind.STATE, assign.state, value.type, assign.index)] = value
     return known

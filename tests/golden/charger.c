@@ -239,7 +239,7 @@ static void charger_give(const charger *self, const charger_parameters *p, const
         y->voltage = charger_clamp(hold, 0.0f, 16.0f);
     } else {
         /* charger.yaml:67  voltage: choose(stage == bulk or stage == absorption, goal, choose(stage == resting, hold, 0)) */
-        y->voltage = charger_clamp(0.0f, 0.0f, 16.0f);
+        y->voltage = 0.0f;
     }
     /* charger.yaml:72  enable: stage == bulk or stage == absorption or stage == resting */
     y->enable = (self->stage == CHARGER_STAGE_BULK) || (self->stage == CHARGER_STAGE_ABSORPTION)

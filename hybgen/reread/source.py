@@ -1,0 +1,94 @@
+"""The text of a generated C file -> pycparser's tree, without a preprocessor.
+
+Only what the generator writes is understood: object-like macros of a number, and conditional blocks that hold nothing
+but #error and #pragma (or C++'s extern "C").
+"""
+
+from __future__ import annotations
+
+import re
+from dataclasses import dataclass
+from typing import Any
+
+_TYPES = """typedef _Bool bool; typedef int int32_t; typedef unsigned int uint32_t; typedef unsigned char uint8_t;
+typedef long long int64_t; typedef unsigned long size_t;
+"""
+
+
+@dataclass(frozen=True, slots=True)
+class Source:
+    """The functions (by name), constants arrays and macros of a file."""
+
+    functions: dict[str, Any]
+    initial: dict[str, Any]
+    """Initialisers of constants, by name."""
+    arrays: dict[str, int]
+    """Declared lengths of constant arrays, by name."""
+    structs: dict[str, list[tuple[str, str, int | None]]]
+    """Members of the structs: name, type, length of an array."""
+    macros: dict[str, int]
+    enumerators: dict[str, tuple[str, int]]
+    """Enumerator -> (type name, code)."""
+
+
+def parse(header: str, body: str) -> Source:
+    """Parses NAME.h and NAME.c. Raises ValueError for anything else than C."""
+    from pycparser import c_ast, c_parser
+
+    macros: dict[str, int] = {}
+    text = _TYPES + _bare(header, macros) + _bare(body, macros)
+    try:
+        unit = c_parser.CParser().parse(text)
+    except c_parser.ParseError as error:
+        raise ValueError(str(error)) from None
+    functions = {n.decl.name: n for n in unit.ext if isinstance(n, c_ast.FuncDef)}
+    initial = {n.name: n.init for n in unit.ext if isinstance(n, c_ast.Decl) and n.init is not None}
+    arrays = {
+        n.name: int(n.type.dim.value)
+        for n in unit.ext
+        if isinstance(n, c_ast.Decl) and isinstance(n.type, c_ast.ArrayDecl)
+    }
+    structs: dict[str, list[tuple[str, str, int | None]]] = {}
+    enumerators: dict[str, tuple[str, int]] = {}
+    for node in unit.ext:
+        if isinstance(node, c_ast.Typedef) and isinstance(node.type.type, c_ast.Struct):
+            structs[node.name] = [_member(m) for m in node.type.type.decls]
+        if isinstance(node, c_ast.Typedef) and isinstance(node.type.type, c_ast.Enum):
+            for row in node.type.type.values.enumerators:
+                enumerators[row.name] = (node.name, int(row.value.value))
+    return Source(functions, initial, arrays, structs, macros, enumerators)
+
+
+def _member(node: Any) -> tuple[str, str, int | None]:
+    """Name, type and length of a struct's member."""
+    array = type(node.type).__name__ == "ArrayDecl"
+    inner = node.type.type if array else node.type
+    return node.name, " ".join(inner.type.names), int(node.type.dim.value) if array else None
+
+
+def _bare(text: str, macros: dict[str, int]) -> str:
+    """The text without comments and directives; macros of numbers are noted."""
+    text = re.sub(r"/\*.*?\*/", lambda m: "\n" * m[0].count("\n"), text, flags=re.DOTALL)
+    kept: list[str] = []
+    foreign = 0
+    for line in text.split("\n"):
+        stripped = line.strip()
+        if stripped.startswith("#"):
+            if found := re.match(r"#define (\w+) (\d+)u\b", stripped):
+                macros[found[1]] = int(found[2])
+            if stripped == "#ifdef __cplusplus":
+                foreign = 1
+            elif foreign and stripped == "#endif":
+                foreign = 0
+            kept.append("")
+        else:
+            kept.append("" if foreign else line)
+    return "\n".join(kept)
+
+
+def body_of(statements: str, law: str) -> Any:
+    """The syntax tree of some statements, as the body of a function."""
+    from pycparser import c_parser
+
+    text = f"{_TYPES}typedef int {law}_parameters; typedef int {law}_now; void f(void) {{ {statements} }}"
+    return c_parser.CParser().parse(text).ext[-1].body
