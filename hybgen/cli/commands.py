@@ -160,7 +160,7 @@ def tell(report: Any, console: Console) -> None:
     )
     console.say(f"conditions seen true and false: {report.covered} of {report.conditions}")
     for text in report.open_conditions:
-        console.say(f"    not covered: {text}")
+        console.say(f"    note HG603: {text}")
     console.say("jumps taken: " + (", ".join(f"{n} {c}" for n, c in report.jumps.items()) or "the law has none"))
 
 

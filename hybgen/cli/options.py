@@ -30,8 +30,8 @@ def parser() -> argparse.ArgumentParser:
     generate.add_argument("--to", default=".", metavar="DIR", help="folder to write into (made if missing)")
     sil = _law(commands, "sil", "compare reference and compiled C, bit for bit, at every step")
     sil.add_argument("--target", default="host", choices=("host",), help="where the C runs (this version: host)")
-    sil.add_argument("--lanes", type=_count, default=1024, metavar="N", help="runs side by side (default 1024)")
-    sil.add_argument("--steps", type=_count, default=2000, metavar="N", help="steps of each run (default 2000)")
+    sil.add_argument("--lanes", type=_count, default=2048, metavar="N", help="runs side by side (default 2048)")
+    sil.add_argument("--steps", type=_count, default=1000, metavar="N", help="steps of each run (default 1000)")
     sil.add_argument("--inputs", metavar="FILE", help="replay a recorded log (CSV) instead")
     sil.add_argument(
         "--replay", metavar="FILE", help="where a difference is written as a log (default NAME_replay.csv)"

@@ -116,7 +116,7 @@ _LOOKUP = """
     {real} y;
     if (x <= {name}_x[0]) {{ y = {name}_y[0]; }}
     else if (x >= {name}_x[{m}]) {{ y = {name}_y[{m}]; }}
-    else {{ {search} y = {name}_y[i] + ({name}_slope[i] * (x - {name}_x[i])); }}
+    else {{ {search} y = {name}_y[{i}] + ({name}_slope[{i}] * (x - {name}_x[{i}])); }}
     return y;
 """
 _SEARCH = "while ((i < {last}u) && (x >= {name}_x[i + 1u])) {{ i++; }}"
@@ -133,7 +133,7 @@ def _tables(made: StepLaw, source: Source) -> Iterator[str]:
                 yield f"{name}_{part}"
         m = len(table.x) - 1
         search = _SEARCH.format(last=m - 1, name=name) if m > 1 else ""
-        text = _LOOKUP.format(real=real_type, name=name, m=m, search=search)
+        text = _LOOKUP.format(real=real_type, name=name, m=m, search=search, i="i" if m > 1 else "0")
         if not _same(source.functions[name].body, body_of(text, made.law.name)):
             yield name
 

@@ -22,8 +22,8 @@ from hybgen.step.model import StepLaw
 from hybgen.step.show import expression
 
 Array = NDArray[Any]
-LANES = 1024
-STEPS = 2000
+LANES = 2048
+STEPS = 1000
 CHUNK = 250
 INJECTIONS = 40
 INJECTED_STEPS = 3
