@@ -51,7 +51,7 @@ def preflight(options: argparse.Namespace, law: Law, console: Console) -> int:
         same = files == generate(law, step=options.step, number=options.number)
         stage("generate", same, f"{', '.join(files)}, {'the same bytes twice' if same else 'not the same bytes twice'}")
         wrong = reread(build(law, step=options.step, number=options.number), files)
-        told = "; ".join(f"{w.function}: {w.what}" for w in wrong)
+        told = "; ".join(f"{w.function}: {w.what}{'' if w.decided else ' (too many cases to tell)'}" for w in wrong)
         stage("reread", not wrong, told or "the C, read back, is the step law in every operation, for all inputs")
         if _builds(law, files, stage):
             sil = _sil(options, law, stage, console)

@@ -9,7 +9,7 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from functools import partial
 
-from hybgen.expr.core import FALSE, OPPOSITE, TRUE, Const, Kind, Node, Op, Ref, RefKind, walk
+from hybgen.expr.core import FALSE, OPPOSITE, TRUE, Const, Kind, Node, Op, Ref, RefKind, op, walk
 from hybgen.expr.fold import decide
 
 
@@ -103,6 +103,8 @@ class _Simplifier:
         if isinstance(asked, Const):
             return self.go(here.args[1] if asked.value else here.args[2])
         yes, no = self.go(here.args[1]), self.go(here.args[2])
+        if isinstance(yes, Const) and isinstance(no, Const) and yes.type.kind is Kind.BOOL and yes.value != no.value:
+            return asked if yes.value else self.interner.op("not", (asked,), op("not", asked))
         return yes if yes is no else self.interner.op("select", (asked, yes, no), here)
 
     def logic(self, here: Op) -> Node:
@@ -125,8 +127,11 @@ def simplified(interner: Interner, node: Node, known: Callable[[Node], Const | N
     return _Simplifier(interner, known, ends, {}).go(node)
 
 
-def deciding(node: Node) -> Node | None:
-    """An atom that decides something in the tree: a comparison or boolean leaf in a condition, inner ones first."""
+def deciding(node: Node, inner: bool) -> Node | None:
+    """An atom that decides something in the tree: a comparison or boolean leaf in a condition.
+
+    `inner`: an atom inside the operands of another atom comes first.
+    """
     seen: set[int] = set()
     todo: list[tuple[Node, bool]] = [(node, node.type.kind is Kind.BOOL)]
     while todo:
@@ -134,13 +139,11 @@ def deciding(node: Node) -> Node | None:
         if id(here) in seen or isinstance(here, Const):
             continue
         seen.add(id(here))
-        if isinstance(here, Op) and here.op in ("and", "or", "not", "select"):
+        if isinstance(here, Op) and (here.op in ("and", "or", "not", "select") or not asked):
             todo += [(a, a.type.kind is Kind.BOOL) for a in reversed(here.args)]
         elif asked:
-            inner = (deciding(a) for a in here.args) if isinstance(here, Op) else iter(())
-            return next((i for i in inner if i is not None), here)
-        elif isinstance(here, Op):
-            todo += [(a, a.type.kind is Kind.BOOL) for a in reversed(here.args)]
+            found = (deciding(a, True) for a in here.args) if inner and isinstance(here, Op) else iter(())
+            return next((i for i in found if i is not None), here)
     return None
 
 
@@ -169,38 +172,38 @@ class Judge:
     interner: Interner
     domains: Mapping[Node, tuple[Const, ...]]
     ends: Ends
-    budget: int = 20000
+    budget: int = 10000
 
     def equivalent(self, one: Node, other: Node) -> bool:
         """Do two interned trees give the same bits for every value of their leaves?
 
         Case by case over the logic variables and the atoms that decide something; in each case what is left has to be
-        the same tree, operation by operation. Raises Undecided if there are more cases than the budget.
+        the same tree, operation by operation. First atoms are taken as a whole, then, where that does not prove, from the
+        inside. Raises Undecided if there are more cases than the budget.
         """
-        left = [self.budget]
-        done: set[tuple[int, int]] = set()
-
-        def go(a: Node, b: Node) -> bool:
-            if a is b or (id(a), id(b)) in done:
+        one, other = (simplified(self.interner, n, _nothing, self.ends) for n in (one, other))
+        try:
+            if self._same(one, other, False, [self.budget // 10], set()):
                 return True
-            left[0] -= 1
-            if left[0] < 0:
-                raise Undecided
-            atom = deciding(a) or deciding(b)
-            if atom is None:
-                return False
-            for known in self._cases(atom):
-                if not go(
-                    simplified(self.interner, a, known, self.ends), simplified(self.interner, b, known, self.ends)
-                ):
-                    return False
-            done.add((id(a), id(b)))
-            return True
+        except Undecided:
+            pass
+        return self._same(one, other, True, [self.budget], set())
 
-        nothing: Callable[[Node], Const | None] = lambda _: None  # noqa: E731
-        return go(
-            simplified(self.interner, one, nothing, self.ends), simplified(self.interner, other, nothing, self.ends)
-        )
+    def _same(self, a: Node, b: Node, inner: bool, left: list[int], done: set[tuple[int, int]]) -> bool:
+        if a is b or (id(a), id(b)) in done:
+            return True
+        left[0] -= 1
+        if left[0] < 0:
+            raise Undecided
+        atom = deciding(a, inner) or deciding(b, inner)
+        if atom is None:
+            return False
+        for known in self._cases(atom):
+            one, other = (simplified(self.interner, n, known, self.ends) for n in (a, b))
+            if not self._same(one, other, inner, left, done):
+                return False
+        done.add((id(a), id(b)))
+        return True
 
     def _cases(self, atom: Node) -> list[Callable[[Node], Const | None]]:
         """The ways in which an atom, or the logic variable it asks about, can be decided."""

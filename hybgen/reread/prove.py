@@ -43,6 +43,8 @@ class Mismatch:
 
     function: str
     what: str
+    decided: bool = True
+    """False: there were too many cases to tell; nothing wrong was found."""
 
 
 def reread(made: StepLaw, files: Mapping[str, str]) -> tuple[Mismatch, ...]:
@@ -53,7 +55,15 @@ def reread(made: StepLaw, files: Mapping[str, str]) -> tuple[Mismatch, ...]:
     name = made.law.name
     try:
         return tuple(_Prover(made, parse(files[f"{name}.h"], files[f"{name}.c"])).mismatches())
-    except (NotUnderstood, LookupError, ValueError, ArithmeticError, AttributeError, AssertionError) as reason:
+    except (
+        NotUnderstood,
+        Undecided,
+        LookupError,
+        ValueError,
+        ArithmeticError,
+        AttributeError,
+        AssertionError,
+    ) as reason:
         return (Mismatch("the file", f"is not understood ({reason})"),)
 
 
@@ -127,8 +137,12 @@ class _Prover:
             yield Mismatch("the file", what)
         for function, wanted, found in self.comparisons():
             for what in {**wanted, **found}:
-                if not self.same(wanted.get(what) or self.unchanged(what), found.get(what) or self.unchanged(what)):
-                    yield Mismatch(function, what)
+                pair = (m.get(what) or self.unchanged(what) for m in (wanted, found))
+                try:
+                    if not self.judge.equivalent(*pair):
+                        yield Mismatch(function, what)
+                except Undecided:
+                    yield Mismatch(function, what, decided=False)
 
     def unchanged(self, what: str) -> Node:
         """What a member or status bit is where a function does not mention it."""
@@ -137,12 +151,6 @@ class _Prover:
             return self.interner.leaf(FALSE)
         name, _, index = rest.partition("[")
         return self.start((base, name, int(index[:-1]) if index else None))
-
-    def same(self, wanted: Node, found: Node) -> bool:
-        try:
-            return self.judge.equivalent(wanted, found)
-        except Undecided:
-            return False
 
     def comparisons(self) -> Iterator[tuple[str, dict[str, Node], dict[str, Node]]]:
         """(function, what it has to give, what it gives)"""
