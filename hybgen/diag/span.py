@@ -21,9 +21,5 @@ class Span:
         """`file:line:column`."""
         return f"{self.file}:{self.line}:{self.column}"
 
-    def shifted(self, offset: int, length: int) -> Span:
-        """The span that starts `offset` characters further right on the same line."""
-        return Span(self.file, self.line, self.column + offset, max(1, length), self.text)
-
 
 NOWHERE = Span("", 0, 0, 0, "")

@@ -187,10 +187,6 @@ class _Prover:
         """A tree of the step law, definitions written out."""
         return self.interner.of(node, self.names)
 
-    def changed(self, wanted: dict[str, Node]) -> dict[str, Node]:
-        """Without the bits that are never set."""
-        return {k: self.tree(v) for k, v in wanted.items() if v != FALSE}
-
     def read(self) -> dict[str, Node]:
         wanted: dict[str, Node] = {}
         bad: list[Node] = []
