@@ -10,6 +10,7 @@ from pathlib import Path
 from typing import Any
 
 from hybgen.emit.helpers import helper, lookups
+from hybgen.emit.kernels import functions
 from hybgen.emit.text import Writer, comment, constant, ctype
 from hybgen.ir.model import Apply, Function, Member, Program
 from hybgen.ir.walk import all_values
@@ -140,7 +141,8 @@ class _Pages:
         tables = frozenset(
             v.table for f in program.functions for v in all_values(f.body) if isinstance(v, Apply) and v.table
         )
-        helpers = [helper(h, program) for h in program.helpers if h != "lookup"] + lookups(program, tables)
+        helpers = [helper(h, program) for h in program.helpers if h != "lookup"]
+        helpers += [*functions(program.elementary, program), *lookups(program, tables)]
         return {
             "name": program.name,
             "upper": program.name.upper(),

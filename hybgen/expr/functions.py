@@ -58,7 +58,8 @@ def _unify_numbers(values: list[Typed], span: Span, findings: Findings) -> list[
     return values
 
 
-def _gathered(values: list[Typed], span: Span) -> Typed:
+def gathered(values: list[Typed], span: Span) -> Typed:
+    """A value without trees that uses what the values use."""
     first = values[0]
     return Typed(
         (),
@@ -71,7 +72,8 @@ def _gathered(values: list[Typed], span: Span) -> Typed:
     )
 
 
-def _scalars(values: list[Typed], what: str, findings: Findings) -> list[Typed]:
+def scalars(values: list[Typed], what: str, findings: Findings) -> list[Typed]:
+    """The values, known to be single numbers; `what` takes them."""
     for value in values:
         numeric(value, f"{what} takes numbers", findings)
         if value.shape:
@@ -81,7 +83,7 @@ def _scalars(values: list[Typed], what: str, findings: Findings) -> list[Typed]:
 
 def _extreme(name: str) -> Apply:
     def apply(values: list[Typed], span: Span, findings: Findings) -> Typed:
-        values = unify(_scalars(values, f"{name}()", findings), span, findings)
+        values = unify(scalars(values, f"{name}()", findings), span, findings)
         whole = values[0].type == INT
         node = values[0].nodes[0]
         for value in values[1:]:
@@ -94,13 +96,13 @@ def _extreme(name: str) -> Apply:
         const = None
         if all(v.const is not None for v in values):
             const = ((min if name == "min" else max)(v.const[0] for v in values if v.const is not None),)
-        return replace(_gathered(values, span), nodes=(node,), bounds=bounds, const=const if not whole else None)
+        return replace(gathered(values, span), nodes=(node,), bounds=bounds, const=const if not whole else None)
 
     return apply
 
 
 def _clamp(values: list[Typed], span: Span, findings: Findings) -> Typed:
-    value, low, high = unify(_scalars(values, "clamp()", findings), span, findings)
+    value, low, high = unify(scalars(values, "clamp()", findings), span, findings)
     if low.const is not None and high.const is not None and low.const[0] > high.const[0]:
         raise stop(findings, "HG216", span, "clamp(x, low, high): low is above high")
     whole = value.type == INT
@@ -112,11 +114,11 @@ def _clamp(values: list[Typed], span: Span, findings: Findings) -> Typed:
     const = None
     if value.const is not None and low.const is not None and high.const is not None:
         const = (min(max(value.const[0], low.const[0]), high.const[0]),)
-    return replace(_gathered([value, low, high], span), nodes=(node,), bounds=bounds, const=None if whole else const)
+    return replace(gathered([value, low, high], span), nodes=(node,), bounds=bounds, const=None if whole else const)
 
 
 def _abs(values: list[Typed], span: Span, findings: Findings) -> Typed:
-    (value,) = _scalars(values, "abs()", findings)
+    (value,) = scalars(values, "abs()", findings)
     if value.unit.absolute:
         raise stop(findings, "HG213", span, "a temperature in degC has no magnitude", "subtract a reference first")
     whole = value.type == INT
@@ -136,7 +138,7 @@ def _abs(values: list[Typed], span: Span, findings: Findings) -> Typed:
 
 
 def _sign(values: list[Typed], span: Span, findings: Findings) -> Typed:
-    (value,) = _scalars(values, "sign()", findings)
+    (value,) = scalars(values, "sign()", findings)
     if value.unit.absolute:
         raise stop(findings, "HG213", span, "a temperature in degC has no sign", "subtract a reference first")
     if value.type == INT:
@@ -150,7 +152,7 @@ def _sign(values: list[Typed], span: Span, findings: Findings) -> Typed:
 
 
 def _floor(values: list[Typed], span: Span, findings: Findings) -> Typed:
-    (value,) = _scalars(values, "floor()", findings)
+    (value,) = scalars(values, "floor()", findings)
     if value.type == INT:
         return value
     value = fit_unit(value, ONE, "the argument of floor()", findings)
@@ -169,7 +171,7 @@ def _dot(values: list[Typed], span: Span, findings: Findings) -> Typed:
             f"dot() takes two vectors of one length, not {shape_words(a.shape)} and {shape_words(b.shape)}",
         )
     node = sum_products(list(zip(a.nodes, b.nodes, strict=True)), span)
-    return replace(_gathered([a, b], span), nodes=(node,), shape=(), unit=_times(a, b, span, findings))
+    return replace(gathered([a, b], span), nodes=(node,), shape=(), unit=_times(a, b, span, findings))
 
 
 def _cross(values: list[Typed], span: Span, findings: Findings) -> Typed:
@@ -185,7 +187,7 @@ def _cross(values: list[Typed], span: Span, findings: Findings) -> Typed:
         op("sub", op("mul", a.nodes[i], b.nodes[j], span=span), op("mul", a.nodes[j], b.nodes[i], span=span), span=span)
         for i, j in ((1, 2), (2, 0), (0, 1))
     )
-    return replace(_gathered([a, b], span), nodes=nodes, unit=_times(a, b, span, findings))
+    return replace(gathered([a, b], span), nodes=nodes, unit=_times(a, b, span, findings))
 
 
 def _times(a: Typed, b: Typed, span: Span, findings: Findings) -> Unit:
@@ -196,7 +198,7 @@ def _times(a: Typed, b: Typed, span: Span, findings: Findings) -> Unit:
 
 def lookup(curve: Curve, value: Typed, span: Span, findings: Findings) -> Typed:
     """curve(value)."""
-    (value,) = _scalars([value], f"{curve.name}()", findings)
+    (value,) = scalars([value], f"{curve.name}()", findings)
     value = fit_unit(to_reals(value), curve.x_unit, f"the input of {curve.name}()", findings)
     node = op("lookup", value.nodes[0], span=span, table=curve.name)
     return Typed(
@@ -215,7 +217,7 @@ def stack(items: list[Typed], span: Span, findings: Findings) -> Typed:
     if all(i.const is not None for i in items):
         const = tuple(c for i in items for c in (i.const or ()))
     nodes = tuple(n for i in items for n in i.nodes)
-    return replace(_gathered(items, span), nodes=nodes, shape=(len(items), *items[0].shape), const=const)
+    return replace(gathered(items, span), nodes=nodes, shape=(len(items), *items[0].shape), const=const)
 
 
 def component(base: Typed, indexes: list[int], span: Span, findings: Findings) -> Typed:

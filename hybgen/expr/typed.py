@@ -16,6 +16,7 @@ from hybgen.diag.span import NOWHERE, Span
 from hybgen.diag.suggest import nearest
 from hybgen.expr import algebra, functions, relations
 from hybgen.expr.core import BOOL, REAL, Const, Kind, Ref, RefKind, op, truth
+from hybgen.expr.elementary import ELEMENTARY
 from hybgen.expr.extent import DEEPEST, LARGEST, Extent
 from hybgen.expr.quantity import Stop, Typed, Want, coerce, enum_value
 from hybgen.expr.scope import Scope, Symbol
@@ -38,32 +39,14 @@ def typed(expr: Expr, scope: Scope, want: Want | None, findings: Findings) -> Ty
         return None
 
 
-_NOT_YET = frozenset(
-    {
-        "sqrt",
-        "exp",
-        "log",
-        "sin",
-        "cos",
-        "tan",
-        "asin",
-        "acos",
-        "atan2",
-        "tanh",
-        "hypot",
-        "wrap",
-        "norm",
-        "qmul",
-        "qconj",
-        "qrotate",
-    }
-)
+_NOT_YET = frozenset({"qmul", "qconj", "qrotate"})
+_FUNCTIONS = functions.FUNCTIONS | ELEMENTARY
 _QUESTIONS = frozenset({"valid", "jumped", "choose"})
 
 
 def function_names() -> frozenset[str]:
     """Every function name of the language, those that come later included."""
-    return _NOT_YET | _QUESTIONS | frozenset(functions.FUNCTIONS)
+    return _NOT_YET | _QUESTIONS | frozenset(_FUNCTIONS)
 
 
 _KIND_WORDS = {
@@ -300,7 +283,7 @@ class _Checker:
         if name in self.scope.tables:
             self.arity(expr, 1, 1)
             return functions.lookup(self.scope.tables[name], self.value(expr.args[0]), expr.span, self.findings)
-        row = functions.FUNCTIONS.get(name)
+        row = _FUNCTIONS.get(name)
         if row is None:
             close = nearest(name, function_names() | set(self.scope.tables))
             hint = f"did you mean '{close}'?" if close else None

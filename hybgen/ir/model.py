@@ -5,6 +5,8 @@ from __future__ import annotations
 from dataclasses import dataclass
 from fractions import Fraction
 
+from hybgen.kernels.word import ELEMENTARY
+
 Literal = Fraction | int | bool | str
 """A real, integer or boolean constant, or the name of an enumerator."""
 
@@ -84,7 +86,7 @@ HELPERS = frozenset(
         "isign",
     }
 )
-OPS = frozenset(INFIX) | frozenset(PREFIX) | HELPERS | {"select", "to_real"}
+OPS = frozenset(ELEMENTARY) | frozenset(INFIX) | frozenset(PREFIX) | HELPERS | {"select", "to_real"}
 
 
 @dataclass(frozen=True, slots=True)
@@ -229,6 +231,8 @@ class Program:
     jumps_per_step: int
     tables: tuple[Table, ...]
     helpers: tuple[str, ...]
+    elementary: tuple[str, ...]
+    """The elementary functions that are used."""
     functions: tuple[Function, ...]
     flow_asked: bool
     """Does the flow depend on a flow condition?"""

@@ -7,6 +7,7 @@ from fractions import Fraction
 
 from hybgen.ir.model import OPS, Answer, Apply, Constant, Field, Let, Local, Member, Program, Statement, Store, Value
 from hybgen.ir.walk import blocks, own, values
+from hybgen.kernels.word import ELEMENTARY
 
 _ARITY = {
     "select": 3,
@@ -24,6 +25,7 @@ _ARITY = {
     "to_steps": 1,
     "to_real": 1,
     "finite": 1,
+    **ELEMENTARY,
 }
 
 

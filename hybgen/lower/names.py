@@ -5,6 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 
 from hybgen.ir.model import HELPERS
+from hybgen.kernels.word import ELEMENTARY
 from hybgen.step.model import Status
 
 API = (
@@ -24,6 +25,9 @@ API = (
     "give",
     "advance",
 )
+PARTS = ("pack", "zeros", "high", "ratio", "root", "wave", "angle")
+KERNELS = (*ELEMENTARY, "bits", "real", "punned", *(f"{part}{width}" for part in PARTS for width in (32, 64)))
+TABLES = ("sine", "two_over_pi")
 LOCALS = (
     "self",
     "p",
@@ -47,7 +51,7 @@ LOCALS = (
 
 def reserved(law: str) -> set[str]:
     """The names that every law's C may have, whatever its author declares."""
-    words = {f"{law}_{word}" for word in (*API, *HELPERS)}
+    words = {f"{law}_{word}" for word in (*API, *HELPERS, *KERNELS, *TABLES)}
     macros = {f"{law}_STATUS_{bit.name}".upper() for bit in Status} | {f"{law}_NO_NAMES".upper()}
     return {law} | words | macros
 

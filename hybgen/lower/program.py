@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Iterator, Sequence
+from collections.abc import Callable, Iterable, Iterator, Sequence, Set
 from dataclasses import dataclass
 from fractions import Fraction
 
@@ -30,6 +30,7 @@ from hybgen.ir.model import (
 )
 from hybgen.ir.verify import verify
 from hybgen.ir.walk import all_values, statements
+from hybgen.kernels.word import ELEMENTARY
 from hybgen.lower.blocks import Assignment, Lets, Statements, chosen, merged, ordered, pruned
 from hybgen.lower.due import Due
 from hybgen.lower.names import LOCALS, Namer, reserved
@@ -85,7 +86,8 @@ class _Builder:
             tuple(Jump(j.number, m, j.name) for j, m in zip(made.jumps, parts.macros, strict=True)),
             made.jumps_per_step,
             tuple(Table(parts.values.tables[t.name], t.x, t.y, t.slope, _place(t.span)) for t in made.tables),
-            _helpers(functions),
+            _used(functions, HELPERS),
+            _used(functions, ELEMENTARY.keys()),
             functions,
             made.flow_condition is not None,
         )
@@ -344,6 +346,5 @@ def _place(span: Span) -> str:
     return f"{span.file}:{span.line}"
 
 
-def _helpers(functions: Iterable[Function]) -> tuple[str, ...]:
-    used = {v.op for f in functions for v in all_values(f.body) if isinstance(v, Apply)} & HELPERS
-    return tuple(sorted(used))
+def _used(functions: Iterable[Function], operations: Set[str]) -> tuple[str, ...]:
+    return tuple(sorted({v.op for f in functions for v in all_values(f.body) if isinstance(v, Apply)} & operations))

@@ -165,6 +165,36 @@ def _steps(_: Range) -> Range:
     return Range(0.0, float(LARGEST_COUNT))
 
 
+def _sqrt(a: Range) -> Range:
+    return UNKNOWN if a.low < 0 else _wide(math.sqrt(a.low), math.sqrt(a.high))
+
+
+def _log(a: Range) -> Range:
+    return UNKNOWN if a.low <= 0 else _moved(math.log(a.low), math.log(a.high))
+
+
+def _exp(a: Range) -> Range:
+    return UNKNOWN if a.high > 700 else _wide(math.exp(a.low), math.exp(a.high))
+
+
+def _tan(a: Range) -> Range:
+    inside = a.low > -1.57 and a.high < 1.57
+    return _moved(math.tan(a.low), math.tan(a.high)) if inside else UNKNOWN
+
+
+def _arc(low: float, high: float) -> Callable[[Range], Range]:
+    return lambda a: Range(low, high) if a.low >= -1 and a.high <= 1 else UNKNOWN
+
+
+def _hypot(a: Range, b: Range) -> Range:
+    return _wide(0.0, math.hypot(max(-a.low, a.high), max(-b.low, b.high)))
+
+
+def _moved(low: float, high: float) -> Range:
+    """Widened by an absolute slack too: near a zero of the function the relative one is nothing."""
+    return Range(low - SLACK * (abs(low) + 1), high + SLACK * (abs(high) + 1))
+
+
 _RULES: dict[str, Callable[..., Range]] = {
     "add": _add,
     "iadd": _add,
@@ -188,4 +218,16 @@ _RULES: dict[str, Callable[..., Range]] = {
     "floor": lambda a: Range(a.low - 1.0, a.high),
     "to_real": lambda a: _wide(a.low, a.high),
     "to_steps": _steps,
+    "sqrt": _sqrt,
+    "sin": lambda _: Range(-1.0, 1.0),
+    "cos": lambda _: Range(-1.0, 1.0),
+    "tan": _tan,
+    "asin": _arc(-1.5708, 1.5708),
+    "acos": _arc(0.0, 3.1416),
+    "atan2": lambda _a, _b: Range(-3.1416, 3.1416),
+    "exp": _exp,
+    "log": _log,
+    "tanh": lambda _: Range(-1.0, 1.0),
+    "hypot": _hypot,
+    "wrap": lambda _: Range(-3.1416, 3.1416),
 }

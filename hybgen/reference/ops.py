@@ -9,6 +9,9 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from hybgen.kernels.floats import kernel
+from hybgen.kernels.run import function
+from hybgen.kernels.word import ELEMENTARY
 from hybgen.numbers.format import LARGEST_COUNT, Format
 from hybgen.step.model import StepTable
 
@@ -56,6 +59,7 @@ def operations(fmt: Format) -> Mapping[str, Operation]:
         "or": lambda *a: reduce(np.logical_or, a),
         "not": np.logical_not,
         "select": np.where,
+        **{name: function(kernel(name, fmt.name), fmt.dtype) for name in ELEMENTARY},
     }
 
 

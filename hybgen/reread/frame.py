@@ -12,9 +12,10 @@ from typing import Any
 
 from hybgen.expr.core import INT, REAL, Kind, Node, Op, Ref, RefKind, Type, integer, op, real
 from hybgen.numbers.format import LARGEST_COUNT, Format
+from hybgen.reread import kernels
 from hybgen.reread.execute import Executor, NotUnderstood, State
 from hybgen.reread.interned import Judge
-from hybgen.reread.source import Source, body_of
+from hybgen.reread.source import Source, body_of, same
 from hybgen.step.model import Status, StepLaw
 
 _ORDER = ("read", "watch", "due", "take", "give", "advance")
@@ -35,9 +36,10 @@ def wrong(made: StepLaw, source: Source, executor: Executor, judge: Judge) -> It
         yield f"{name}_defaults"
     yield from _tables(made, source)
     yield from _helpers(made, source, executor, judge)
-    if not _same(source.functions[f"{name}_jump_name"].body, body_of(_names_text(made, source), name)):
+    yield from kernels.wrong(name, made.format.name, source)
+    if not same(source.functions[f"{name}_jump_name"].body, body_of(_names_text(made, source), name)):
         yield f"{name}_jump_name"
-    if not _same(source.functions[f"{name}_step"].body, body_of(_step_text(made, source), name)):
+    if not same(source.functions[f"{name}_step"].body, body_of(_step_text(made, source), name)):
         yield f"{name}_step"
 
 
@@ -134,7 +136,7 @@ def _tables(made: StepLaw, source: Source) -> Iterator[str]:
         m = len(table.x) - 1
         search = _SEARCH.format(last=m - 1, name=name) if m > 1 else ""
         text = _LOOKUP.format(real=real_type, name=name, m=m, search=search, i="i" if m > 1 else "0")
-        if not _same(source.functions[name].body, body_of(text, made.law.name)):
+        if not same(source.functions[name].body, body_of(text, made.law.name)):
             yield name
 
 
@@ -238,30 +240,3 @@ def _names_text(made: StepLaw, source: Source) -> str:
     macros = [m for m in source.macros if not m.startswith(f"{made.law.name.upper()}_STATUS_")]
     rows = " ".join(f'case {m}: text = "{j.name}"; break;' for m, j in zip(macros, made.jumps, strict=True))
     return f"switch (jump) {{ {rows} default: break; }} return text;" if rows else "return text;"
-
-
-_FIRST = {"used": "p", "status": "0u", "jump": "0u", "i": "0u", "text": '""'}
-
-
-def _same(found: Any, wanted: Any) -> bool:
-    """Equal syntax trees; declarations may stand in the found one if they start as they have to."""
-    return bool(_shape(found) == _shape(wanted))
-
-
-def _shape(node: Any) -> Any:
-    if node is None or isinstance(node, str | int):
-        return node
-    if isinstance(node, list):
-        kept = []
-        for item in node:
-            kind = type(item).__name__
-            if kind == "Decl":
-                start = getattr(item.init, "name", getattr(item.init, "value", None))
-                if item.init is not None and start != _FIRST.get(item.name):
-                    kept.append(f"{item.name} starts as {start}")
-            elif kind != "Cast":
-                kept.append(_shape(item))
-        return kept
-    kind = type(node).__name__
-    parts = [(slot, getattr(node, slot)) for slot in node.__slots__ if slot not in ("coord", "__weakref__")]
-    return kind, [(slot, _shape(list(value) if isinstance(value, tuple) else value)) for slot, value in parts]

@@ -11,7 +11,7 @@ from dataclasses import dataclass
 from typing import Any
 
 _TYPES = """typedef _Bool bool; typedef int int32_t; typedef unsigned int uint32_t; typedef unsigned char uint8_t;
-typedef long long int64_t; typedef unsigned long size_t;
+typedef long long int64_t; typedef unsigned long long uint64_t; typedef unsigned long size_t;
 """
 
 
@@ -24,6 +24,8 @@ class Source:
     """Initialisers of constants, by name."""
     arrays: dict[str, int]
     """Declared lengths of constant arrays, by name."""
+    types: dict[str, str]
+    """Types of their elements."""
     structs: dict[str, list[tuple[str, str, int | None]]]
     """Members of the structs: name, type, length of an array."""
     macros: dict[str, int]
@@ -43,20 +45,18 @@ def parse(header: str, body: str) -> Source:
         raise ValueError(str(error)) from None
     functions = {n.decl.name: n for n in unit.ext if isinstance(n, c_ast.FuncDef)}
     initial = {n.name: n.init for n in unit.ext if isinstance(n, c_ast.Decl) and n.init is not None}
-    arrays = {
-        n.name: int(n.type.dim.value)
-        for n in unit.ext
-        if isinstance(n, c_ast.Decl) and isinstance(n.type, c_ast.ArrayDecl)
-    }
+    declared = [n for n in unit.ext if isinstance(n, c_ast.Decl) and isinstance(n.type, c_ast.ArrayDecl)]
+    arrays = {n.name: int(n.type.dim.value) for n in declared}
+    types = {n.name: " ".join(n.type.type.type.names) for n in declared}
     structs: dict[str, list[tuple[str, str, int | None]]] = {}
     enumerators: dict[str, tuple[str, int]] = {}
     for node in unit.ext:
-        if isinstance(node, c_ast.Typedef) and isinstance(node.type.type, c_ast.Struct):
+        if isinstance(node, c_ast.Typedef) and isinstance(node.type.type, c_ast.Struct | c_ast.Union):
             structs[node.name] = [_member(m) for m in node.type.type.decls]
         if isinstance(node, c_ast.Typedef) and isinstance(node.type.type, c_ast.Enum):
             for row in node.type.type.values.enumerators:
                 enumerators[row.name] = (node.name, int(row.value.value))
-    return Source(functions, initial, arrays, structs, macros, enumerators)
+    return Source(functions, initial, arrays, types, structs, macros, enumerators)
 
 
 def _member(node: Any) -> tuple[str, str, int | None]:
@@ -90,5 +90,32 @@ def body_of(statements: str, law: str) -> Any:
     """The syntax tree of some statements, as the body of a function."""
     from pycparser import c_parser
 
-    text = f"{_TYPES}typedef int {law}_parameters; typedef int {law}_now; void f(void) {{ {statements} }}"
+    text = f"{_TYPES}typedef int {law}_parameters; typedef int {law}_now; typedef int {law}_punned; void f(void) {{ {statements} }}"
     return c_parser.CParser().parse(text).ext[-1].body
+
+
+_FIRST = {"used": "p", "status": "0u", "jump": "0u", "i": "0u", "text": '""'}
+
+
+def same(found: Any, wanted: Any) -> bool:
+    """Equal syntax trees; declarations may stand in the found one if they start as they have to."""
+    return bool(_shape(found) == _shape(wanted))
+
+
+def _shape(node: Any) -> Any:
+    if node is None or isinstance(node, str | int):
+        return node
+    if isinstance(node, list):
+        kept = []
+        for item in node:
+            kind = type(item).__name__
+            if kind == "Decl":
+                start = getattr(item.init, "name", getattr(item.init, "value", None))
+                if item.init is not None and start != _FIRST.get(item.name):
+                    kept.append(f"{item.name} starts as {start}")
+            elif kind != "Cast":
+                kept.append(_shape(item))
+        return kept
+    kind = type(node).__name__
+    parts = [(slot, getattr(node, slot)) for slot in node.__slots__ if slot not in ("coord", "__weakref__")]
+    return kind, [(slot, _shape(list(value) if isinstance(value, tuple) else value)) for slot, value in parts]
