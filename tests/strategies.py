@@ -47,7 +47,7 @@ class Author:
             leaves = [*n.reals, *(t + " / (1 s)" for t in n.timers if self.some(0.2)), *n.ints[:2], *n.signs]
             return self.pick(leaves) if leaves and self.some(0.75) else self.pick(CONSTANTS)
         a, b = self.real(depth - 1), self.real(depth - 1)
-        kind = self.dice.randrange(14)
+        kind = self.dice.randrange(15)
         match kind:
             case 0 | 1:
                 return f"({a} + {b})"
@@ -67,10 +67,27 @@ class Author:
                 return f"(-({a}))"
             case 11:
                 return f"choose({self.boolean(depth - 1)}, 1.0 * {a}, 1.0 * {b})"
+            case 13:
+                return self.elementary(a, b)
             case 12:
                 return f"{self.pick(n.tables)}({a})" if n.tables else f"({a})**2"
             case _:
                 return f"(0.5 * {a})"
+
+    def elementary(self, a: str, b: str) -> str:
+        """An elementary function, mostly inside its domain."""
+        inside = self.some(0.8)
+        return self.pick(
+            [
+                f"sqrt({f'abs({a})' if inside else a})",
+                f"log({f'(0.1 + abs({a}))' if inside else a})",
+                f"exp({f'clamp({a}, -9, 3)' if inside else a})",
+                f"{self.pick(['asin', 'acos'])}({f'clamp({a}, -1, 1)' if inside else a})",
+                f"{self.pick(['sin', 'cos', 'tan', 'tanh', 'wrap'])}({a})",
+                f"{self.pick(['atan2', 'hypot'])}({a}, {b})",
+                f"norm([{a}, {b}, 1.5])",
+            ]
+        )
 
     def whole(self, depth: int) -> str:
         n = self.names

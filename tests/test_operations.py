@@ -20,6 +20,9 @@ from numpy.typing import NDArray
 
 from hybgen.expr.core import BOOL, INT, OPS, REAL, Const, Node, Op, Ref, RefKind, Row, Type
 from hybgen.expr.units import ONE
+from hybgen.kernels.floats import kernel
+from hybgen.kernels.run import exact
+from hybgen.kernels.word import ELEMENTARY
 from hybgen.law import read
 from hybgen.law.model import Output
 from hybgen.numbers.format import FLOAT32, FORMATS, Format
@@ -229,7 +232,13 @@ def special_meaning(name: str, fmt: Format, tables: dict[str, StepTable], table:
         i = max(k for k in range(len(xs)) if xs[k] <= x)
         return ys[i] + slopes[i] * (x - xs[i])
 
+    def elementary(*args: Any) -> Any:
+        word = np.uint32 if fmt is FLOAT32 else np.uint64
+        found = exact(kernel(name, fmt.name), *(int(np.asarray(a).view(word)) for a in args))
+        return word(found).view(fmt.dtype)
+
     return {
+        **dict.fromkeys(ELEMENTARY, elementary),
         "floor": floor,
         "lookup": look,
         "to_steps": to_steps,
@@ -305,12 +314,13 @@ def test_every_operation_means_in_c_and_numpy_what_the_table_says(number: str) -
     assert {n.op for n in nodes} == set(OPS)
     for op, found in zip(nodes, bench.run(list(nodes), values), strict=True):
         says = meaning(op, fmt, tables)
-        columns = [in_numpy(a, values, fmt, tables) for a in op.args]
+        few = slice(None, None, 17 if op.op in ELEMENTARY else 1)
+        columns = [in_numpy(a, values, fmt, tables)[few] for a in op.args]
         with np.errstate(all="ignore"):
             wanted = np.array([says(*row) for row in zip(*columns, strict=True)]).astype(dtype(op.type, fmt))
             reference = in_numpy(op, values, fmt, tables)
-        assert not first_difference(found, wanted, values, op)
-        assert not first_difference(reference, wanted, values, op)
+        assert not first_difference(found, reference, values, op)
+        assert not first_difference(reference[few], wanted, {n: v[few] for n, v in values.items()}, op)
 
 
 @pytest.mark.parametrize("number", sorted(FORMATS))

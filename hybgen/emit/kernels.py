@@ -11,7 +11,7 @@ from hybgen.kernels.floats import kernel
 from hybgen.kernels.word import ELEMENTARY, Exit, Kernel, Let, Word, closure
 
 _TYPES = {"u32": "uint32_t", "i32": "int32_t", "u64": "uint64_t", "i64": "int64_t", "bool": "bool"}
-_ENDINGS = {"u32": "u", "u64": "ull", "i32": "", "i64": "ll"}
+_LITERALS = {"u32": "{}u", "u64": "UINT64_C({})", "i32": "{}", "i64": "INT64_C({})"}
 
 
 def functions(used: Iterable[str], program: Program) -> list[str]:
@@ -74,7 +74,8 @@ class _Text:
 
     def constant(self, value: int, type_: str) -> str:
         text = f"0x{value:X}" if value > 255 else str(value)
-        return f"{text}{_ENDINGS[type_]}" if value >= 0 else f"({text}{_ENDINGS[type_]})"
+        literal = _LITERALS[type_].format(text)
+        return literal if value >= 0 else f"({literal})"
 
     def outer(self, word: Word) -> str:
         """A word, the outermost operation without parentheses."""
@@ -103,7 +104,7 @@ class _Text:
                 asked, yes, no = (self.inner(a) for a in word.args)
                 return f"({asked} ? {yes} : {no})"
         left, right = (self.inner(a) for a in word.args)
-        if word.op == "<<" and word.args[0].op == "const":
+        if word.op == "<<" and word.args[0].op == "const" and word.type == "u32":
             left = f"({self.type(word.type)}){left}"
         return f"({left} {word.op} {right})"
 

@@ -19,6 +19,9 @@ _NUMPY: Mapping[str, Callable[..., Any]] = {
     "+": np.add,
     "-": np.subtract,
     "*": np.multiply,
+    "/": lambda a, b: np.floor_divide(a, np.maximum(b, b.dtype.type(1))),
+    "<<": np.left_shift,
+    ">>": np.right_shift,
     "&": np.bitwise_and,
     "|": np.bitwise_or,
     "^": np.bitwise_xor,
@@ -30,70 +33,86 @@ _NUMPY: Mapping[str, Callable[..., Any]] = {
     "!=": np.not_equal,
     "&&": np.logical_and,
     "||": np.logical_or,
+    "not": np.logical_not,
+    "?": np.where,
 }
 
 
 def function(kernel: Kernel, real: np.dtype[Any] | None = None) -> Function:
-    """The kernel as a numpy function on arrays (or scalars) of one shape; `real`: the type of its floats, if it has any."""
+    """The kernel as a numpy function on arrays (or scalars) of one shape; `real`: the type of its floats, if it has any.
+
+    Lanes that have an early answer are computed on, and not used.
+    """
     calls = {k.name: function(k, real) for k in kernel.calls}
-    tables: dict[str, Array] = {name: np.array(words, _DTYPES[type_]) for name, type_, words in kernel.tables}
-    run = _Run(kernel, calls, tables, real)
-    return run.answer
+    plan = _Plan(kernel, calls, real)
+    constants, steps, size = plan.constants, tuple(plan.steps), plan.size
+    exits, last, parameters = tuple(reversed(plan.exits)), plan.answer, range(len(kernel.parameters))
 
-
-class _Run:
-    """One kernel's evaluation. Lanes that have an early answer are computed on, and not used."""
-
-    def __init__(
-        self, kernel: Kernel, calls: Mapping[str, Function], tables: Mapping[str, Array], real: np.dtype[Any] | None
-    ) -> None:
-        self.kernel, self.calls, self.tables, self.real = kernel, calls, tables, real
-
-    def answer(self, *args: Any) -> Array:
+    def answer(*args: Any) -> Array:
+        slots: list[Any] = [None] * size
+        for at in parameters:
+            slots[at] = np.asarray(args[at])
+        for at, value in constants:
+            slots[at] = value
         with np.errstate(all="ignore"):
-            names = {n: np.asarray(a) for (n, _), a in zip(self.kernel.parameters, args, strict=True)}
-            exits: list[tuple[Array, Array]] = []
-            for item in self.kernel.items:
-                if isinstance(item, Let):
-                    names[item.name] = self.value(item.value, names)
-                else:
-                    exits.append((self.value(item.condition, names), self.value(item.value, names)))
-            found = self.value(self.kernel.answer, names)
-            for condition, value in reversed(exits):
-                found = np.where(condition, value, found)
-            return np.asarray(found)
+            for at, work, places in steps:
+                slots[at] = work(*[slots[p] for p in places])
+        found = slots[last]
+        for condition, value in exits:
+            found = np.where(slots[condition], slots[value], found)
+        return np.asarray(found)
 
-    def value(self, word: Word, names: Mapping[str, Array]) -> Any:
+    return answer
+
+
+class _Plan:
+    """A kernel as a list of array operations: (slot, function, slots of its arguments); the first slots are the parameters."""
+
+    def __init__(self, kernel: Kernel, calls: Mapping[str, Function], real: np.dtype[Any] | None) -> None:
+        self.calls, self.real = calls, real
+        self.tables: dict[str, Array] = {n: np.array(w, _DTYPES[t]) for n, t, w in kernel.tables}
+        self.names = {n: i for i, (n, _) in enumerate(kernel.parameters)}
+        self.size = len(self.names)
+        self.constants: list[tuple[int, Any]] = []
+        self.steps: list[tuple[int, Function, tuple[int, ...]]] = []
+        self.exits: list[tuple[int, int]] = []
+        for item in kernel.items:
+            if isinstance(item, Let):
+                self.names[item.name] = self.slot(item.value)
+            else:
+                self.exits.append((self.slot(item.condition), self.slot(item.value)))
+        self.answer = self.slot(kernel.answer)
+
+    def slot(self, word: Word) -> int:
+        """Where the value of a word will be."""
+        if word.op == "name":
+            return self.names[word.name]
+        places = tuple(self.slot(a) for a in word.args)
+        at, self.size = self.size, self.size + 1
+        if word.op == "const":
+            self.constants.append((at, _DTYPES[word.type](word.value)))
+        else:
+            self.steps.append((at, self.work(word), places))
+        return at
+
+    def work(self, word: Word) -> Function:
+        """The array function of an operation."""
         match word.op:
-            case "const":
-                return _DTYPES[word.type](word.value)
-            case "name":
-                return names[word.name]
             case "bits":
-                raw = np.asarray(self.value(word.args[0], names))
-                return raw.view(_WORDS[raw.dtype])
+                return lambda a: a.view(_WORDS[a.dtype])
             case "real":
-                return np.asarray(self.value(word.args[0], names)).view(self.real)
-            case "?":
-                return np.where(*(self.value(a, names) for a in word.args))
-        args = [self.value(a, names) for a in word.args]
-        match word.op:
+                real = self.real
+                assert real is not None, "a kernel of floats needs their type"
+                return lambda a: np.asarray(a).view(real)
             case "call":
-                return self.calls[word.name](*args)
+                return self.calls[word.name]
             case "table":
                 table = self.tables[word.name]
-                return table[np.minimum(args[0], np.uint32(len(table) - 1))]
+                return lambda i: table.take(i, mode="clip")
             case "cast":
-                return np.asarray(args[0]).astype(_DTYPES[word.type])
-            case "not":
-                return np.logical_not(args[0])
-            case "<<" | ">>":
-                shift = np.left_shift if word.op == "<<" else np.right_shift
-                kind = _DTYPES[word.type]
-                return shift(args[0], np.asarray(args[1]).astype(kind) & kind(BITS[word.type] - 1))
-            case "/":
-                return np.floor_divide(args[0], np.maximum(args[1], _DTYPES[word.type](1)))
-        return _NUMPY[word.op](*args)
+                wanted = _DTYPES[word.type]
+                return lambda a: a.astype(wanted)
+        return _NUMPY[word.op]
 
 
 def exact(kernel: Kernel, *args: int) -> int:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from functools import reduce
+from functools import cache, reduce
 from typing import Any
 
 import numpy as np
@@ -21,6 +21,7 @@ Operation = Callable[..., Any]
 _I = np.int32
 
 
+@cache
 def operations(fmt: Format) -> Mapping[str, Operation]:
     """Operation name -> function on arrays (or scalars) of the format's type, int32 or bool."""
     real = fmt.dtype.type

@@ -11,7 +11,7 @@ from hybgen.reread.execute import NotUnderstood
 from hybgen.reread.source import Source, body_of, same
 
 _TYPES = {"uint32_t": "u32", "int32_t": "i32", "uint64_t": "u64", "int64_t": "i64", "bool": "bool"}
-_ENDINGS = {"ull": "u64", "ll": "i64", "u": "u32", "": "i32"}
+_MACROS = {"UINT64_C": "u64", "INT64_C": "i64"}
 
 
 def wrong(law: str, number_format: str, source: Source) -> Iterator[str]:
@@ -86,8 +86,7 @@ class _Reader:
         """An expression as a word."""
         match type(node).__name__:
             case "Constant":
-                digits = node.value.rstrip("ul")
-                return number(int(digits, 0), _ENDINGS[node.value[len(digits) :]])
+                return number(int(node.value.rstrip("u"), 0), "u32" if node.value.endswith("u") else "i32")
             case "ID":
                 if node.name in ("true", "false"):
                     return Word("const", "bool", value=int(node.name == "true"))
@@ -120,6 +119,8 @@ class _Reader:
 
     def call(self, node: Any, names: Mapping[str, str]) -> Word:
         """A call of another kernel, or of the functions between a float and its bits."""
+        if node.name.name in _MACROS:
+            return number(int(node.args.exprs[0].value, 0), _MACROS[node.name.name])
         name = node.name.name.removeprefix(f"{self.law}_")
         arguments = tuple(self.word(a, names) for a in node.args.exprs)
         given = self.type(self.source.functions[node.name.name].decl.type.type)

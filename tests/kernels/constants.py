@@ -25,7 +25,8 @@ def main() -> None:
     )
     for name, value in rows.items():
         places = PLACES if name == "TWO_OVER_PI" else 192
-        print(f"{name} = (0x{int(mp.floor(value * mp.mpf(2) ** places)):X}, {places})")
+        digits = f"0x{int(mp.floor(value * mp.mpf(2) ** places)):X}"
+        print(f"{name} = ({digits}, {places})" if len(digits) < 100 else f"{name} = (\n    {digits},\n    {places},\n)")
 
 
 if __name__ == "__main__":

@@ -17,19 +17,21 @@ from hybgen.kernels.word import ELEMENTARY
 from tests.conftest import law_of
 
 REFERENCES = {"wrap": "turned"}
-_TURNED = "static inline double turned(double x) { return fabs(x) <= 3.14159265358979323846 ? x : atan2(sin(x), cos(x)); }\n"
+_TURNED = (
+    "static inline double turned(double x) { return fabs(x) <= 3.14159265358979323846 ? x : atan2(sin(x), cos(x)); }\n"
+)
 COUNT = {1: 2**32, 2: 2**30}
 
 
 def source() -> dict[str, str]:
     """The C of a law that uses every function."""
-    calls = ", ".join(f"{n}(x)" if arity == 1 else f"{n}(x, z)" for n, arity in ELEMENTARY.items())
+    rows = [f"o_{n}: {{value: '{n}({'x' if arity == 1 else 'x, z'})'}}" for n, arity in ELEMENTARY.items()]
     return hybgen.generate(
         law_of(f"""
         law: course
         step: 1 s
         inputs: {{x: {{range: [-1, 1]}}, z: {{range: [-1, 1]}}}}
-        outputs: {{all: {{vector: {len(ELEMENTARY)}, value: "[{calls}]"}}}}
+        outputs: {{{", ".join(rows)}}}
     """)
     )
 
@@ -39,7 +41,10 @@ def worst(name: str, stride: int = 1) -> tuple[float, int]:
     harness = Path(__file__).with_name("harness.c").read_text()
     count = COUNT[ELEMENTARY[name]] // stride
     with tempfile.TemporaryDirectory() as folder:
-        for file, text in {**source(), "harness.c": harness.replace("static double ulps", _TURNED + "static double ulps")}.items():
+        for file, text in {
+            **source(),
+            "harness.c": harness.replace("static double ulps", _TURNED + "static double ulps"),
+        }.items():
             (Path(folder) / file).write_text(text)
         macros = {
             "FUNCTION": f"course_{name}",
