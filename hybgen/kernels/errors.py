@@ -18,7 +18,7 @@ ULP: dict[str, dict[str, float]] = {
         "atan2": 0.53,
         "exp": 0.53,
         "log": 0.53,
-        "tanh": 0.57,
+        "tanh": 0.6,
         "hypot": 0.52,
         "wrap": 0.51,
     },

@@ -23,17 +23,15 @@ _TURNED = (
 COUNT = {1: 2**32, 2: 2**30}
 
 
-def source() -> dict[str, str]:
-    """The C of a law that uses every function."""
+def course() -> hybgen.Law:
+    """A law that uses every function."""
     rows = [f"o_{n}: {{value: '{n}({'x' if arity == 1 else 'x, z'})'}}" for n, arity in ELEMENTARY.items()]
-    return hybgen.generate(
-        law_of(f"""
+    return law_of(f"""
         law: course
         step: 1 s
         inputs: {{x: {{range: [-1, 1]}}, z: {{range: [-1, 1]}}}}
         outputs: {{{", ".join(rows)}}}
     """)
-    )
 
 
 def worst(name: str, stride: int = 1) -> tuple[float, int]:
@@ -42,7 +40,7 @@ def worst(name: str, stride: int = 1) -> tuple[float, int]:
     count = COUNT[ELEMENTARY[name]] // stride
     with tempfile.TemporaryDirectory() as folder:
         for file, text in {
-            **source(),
+            **hybgen.generate(course()),
             "harness.c": harness.replace("static double ulps", _TURNED + "static double ulps"),
         }.items():
             (Path(folder) / file).write_text(text)
