@@ -37,3 +37,10 @@ ULP: dict[str, dict[str, float]] = {
         "wrap": 0.51,
     },
 }
+
+RELATIVE: dict[str, float] = {
+    **dict.fromkeys(ULP["float32"], 2.0**-29),
+    "tan": 2.0**-28,
+    "tanh": 2.0**-27,
+}
+"""Fixed point: the error is at most half a unit of the result's resolution and this share of the result (tests/kernels)."""

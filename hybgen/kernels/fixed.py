@@ -14,9 +14,8 @@ from functools import cache
 from hybgen.kernels import cores
 from hybgen.kernels.arithmetic import Arithmetic, Number, zeros
 from hybgen.kernels.constants import HALF_PI
+from hybgen.kernels.integers import MOST
 from hybgen.kernels.word import FALSE, Builder, Kernel, Word, choose, number
-
-MOST = 2**31 - 1
 
 
 @cache
@@ -180,10 +179,10 @@ def _hypot() -> Kernel:
 _RESTS: dict[str, tuple[str, Callable[..., Word]]] = {
     "sqrt": ("the square root", _sqrt),
     "sin": ("the sine", _sine),
-    "cos": ("the cosine", lambda *a: _sine(*a, cosine=True)),
+    "cos": ("the cosine", lambda raw, x, size, p, w: _sine(raw, x, size, p, w, True)),
     "tan": ("the tangent", _tangent),
     "asin": ("the angle whose sine is x", _arc),
-    "acos": ("the angle whose cosine is x", lambda *a: _arc(*a, cosine=True)),
+    "acos": ("the angle whose cosine is x", lambda raw, x, size, p, w: _arc(raw, x, size, p, w, True)),
     "exp": ("e to the power x", _exp),
     "log": ("the natural logarithm", _log),
     "tanh": ("the hyperbolic tangent", _tanh),
