@@ -12,7 +12,7 @@ from tests.conftest import ROOT
 
 MAY = {
     "version": set(), "diag": set(), "kernels": set(), "expr": {"diag"}, "law": {"diag", "expr"}, "numbers": {"expr"},
-    "step": {"diag", "expr", "law", "numbers"}, "reference": {"expr", "law", "numbers", "kernels", "step"}, "ir": {"kernels"},
+    "step": {"diag", "expr", "law", "kernels", "numbers"}, "reference": {"expr", "law", "numbers", "kernels", "step"}, "ir": {"kernels"},
     "lower": {"diag", "expr", "law", "step", "ir", "kernels", "version"}, "emit": {"ir", "kernels"},
     "checks": {"diag", "expr", "law", "step"}, "pipeline": {"law", "step", "lower", "emit", "reread"},
     "reread": {"expr", "numbers", "kernels", "step"},

@@ -73,7 +73,7 @@ def _law(
         help="least finding that fails (default error)",
     )
     command.add_argument("--step", type=_time, metavar="TIME", help="another step, such as '50 ms'")
-    command.add_argument("--number", choices=("float32", "float64"), help="another number format")
+    command.add_argument("--number", choices=("float32", "float64", "fixed32"), help="another number format")
     return command
 
 

@@ -7,21 +7,22 @@ from typing import assert_never
 
 from hybgen.emit.text import INDENT, wrapped
 from hybgen.ir.model import Program
-from hybgen.kernels.floats import kernel
-from hybgen.kernels.word import ELEMENTARY, Exit, Kernel, Let, Word, closure
+from hybgen.kernels.table import kernel
+from hybgen.kernels.word import Exit, Kernel, Let, Word, closure
 
 _TYPES = {"u32": "uint32_t", "i32": "int32_t", "u64": "uint64_t", "i64": "int64_t", "bool": "bool"}
 _LITERALS = {"u32": "{}u", "u64": "UINT64_C({})", "i32": "{}", "i64": "INT64_C({})"}
 
 
 def functions(used: Iterable[str], program: Program) -> list[str]:
-    """The C of the elementary functions that are used, with what they need, each once."""
-    kernels = closure([kernel(name, program.number) for name in used if name in ELEMENTARY])
+    """The C of the kernels that are used, with what they need, each once."""
+    kernels = closure([kernel(name, program.number) for name in used])
     if not kernels:
         return []
     text = _Text(program.name, program.real)
     tables = {n: (t, words) for k in kernels for n, t, words in k.tables}
-    return [text.punning(kernels), *(text.table(n, *row) for n, row in tables.items()), *map(text.function, kernels)]
+    punning = [text.punning()] if program.number != "fixed32" else []
+    return [*punning, *(text.table(n, *row) for n, row in tables.items()), *map(text.function, kernels)]
 
 
 class _Text:
@@ -33,7 +34,7 @@ class _Text:
     def type(self, type_: str) -> str:
         return self.real if type_ == "real" else _TYPES[type_]
 
-    def punning(self, kernels: list[Kernel]) -> str:
+    def punning(self) -> str:
         """The functions between a float and its bits."""
         word = "uint32_t" if self.real == "float" else "uint64_t"
         union = f"typedef union {{ {self.real} number; {word} bits; }} {self.law}_punned;\n\n"

@@ -142,7 +142,7 @@ class _Pages:
             v.table for f in program.functions for v in all_values(f.body) if isinstance(v, Apply) and v.table
         )
         helpers = [helper(h, program) for h in program.helpers if h != "lookup"]
-        helpers += [*functions(program.elementary, program), *lookups(program, tables)]
+        helpers += [*functions(program.kernels, program), *lookups(program, tables)]
         return {
             "name": program.name,
             "upper": program.name.upper(),

@@ -163,6 +163,76 @@ OPS: dict[str, Row] = {
         Row("isign", ("int",), "int", "1 if a > 0 else (-1 if a < 0 else 0)"),
         Row("to_real", ("int",), "real", "the nearest real of the format, ties to even"),
         Row("to_steps", ("real",), "int", "whole steps of a time, rounded up (numbers.steps)"),
+        Row("fixed_add", ("int",) * 5, "int", "(a * 2**p + b * 2**q) / 2**s of (a, b, p, q, s): nearest even, held"),
+        Row("fixed_mul", ("int",) * 3, "int", "a * b / 2**s of (a, b, s): nearest even, held"),
+        Row("fixed_div", ("int",) * 3, "int", "a * 2**s / b of (a, b, s): nearest even, held"),
+        Row("fixed_scale", ("int",) * 2, "int", "a * 2**s of (a, s): nearest even, held"),
+        Row("fixed_order", ("int",) * 4, "int", "sign of a * 2**p - b * 2**q of (a, b, p, q)"),
+        Row("fixed_floor", ("int",) * 2, "int", "a / 2**s of (a, s), rounded down"),
+        Row("fixed_steps", ("int",) * 2, "int", "a / 2**s of (a, s) in whole steps, rounded up"),
+        Row(
+            "fixed_line",
+            ("int",) * 6,
+            "int",
+            "(y * 2**p + m * (x - u)) / 2**s of (y, m, x, u, p, s): nearest even, held",
+        ),
+        Row(
+            "fixed_sqrt",
+            ("int",) * 3,
+            "int",
+            "sqrt of raw values: the arguments, their places, the places of the result",
+        ),
+        Row(
+            "fixed_sin", ("int",) * 3, "int", "sin of raw values: the arguments, their places, the places of the result"
+        ),
+        Row(
+            "fixed_cos", ("int",) * 3, "int", "cos of raw values: the arguments, their places, the places of the result"
+        ),
+        Row(
+            "fixed_tan", ("int",) * 3, "int", "tan of raw values: the arguments, their places, the places of the result"
+        ),
+        Row(
+            "fixed_asin",
+            ("int",) * 3,
+            "int",
+            "asin of raw values: the arguments, their places, the places of the result",
+        ),
+        Row(
+            "fixed_acos",
+            ("int",) * 3,
+            "int",
+            "acos of raw values: the arguments, their places, the places of the result",
+        ),
+        Row(
+            "fixed_atan2",
+            ("int",) * 5,
+            "int",
+            "atan2 of raw values: the arguments, their places, the places of the result",
+        ),
+        Row(
+            "fixed_exp", ("int",) * 3, "int", "exp of raw values: the arguments, their places, the places of the result"
+        ),
+        Row(
+            "fixed_log", ("int",) * 3, "int", "log of raw values: the arguments, their places, the places of the result"
+        ),
+        Row(
+            "fixed_tanh",
+            ("int",) * 3,
+            "int",
+            "tanh of raw values: the arguments, their places, the places of the result",
+        ),
+        Row(
+            "fixed_hypot",
+            ("int",) * 5,
+            "int",
+            "hypot of raw values: the arguments, their places, the places of the result",
+        ),
+        Row(
+            "fixed_wrap",
+            ("int",) * 3,
+            "int",
+            "wrap of raw values: the arguments, their places, the places of the result",
+        ),
         Row("lt", ("num", "num"), "bool", "a < b"),
         Row("le", ("num", "num"), "bool", "a <= b"),
         Row("gt", ("num", "num"), "bool", "a > b"),

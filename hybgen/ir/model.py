@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 from fractions import Fraction
 
-from hybgen.kernels.word import ELEMENTARY
+from hybgen.kernels.table import ARITY
 
 Literal = Fraction | int | bool | str
 """A real, integer or boolean constant, or the name of an enumerator."""
@@ -86,7 +86,7 @@ HELPERS = frozenset(
         "isign",
     }
 )
-OPS = frozenset(ELEMENTARY) | frozenset(INFIX) | frozenset(PREFIX) | HELPERS | {"select", "to_real"}
+OPS = frozenset(ARITY) | frozenset(INFIX) | frozenset(PREFIX) | HELPERS | {"select", "to_real"}
 
 
 @dataclass(frozen=True, slots=True)
@@ -231,8 +231,8 @@ class Program:
     jumps_per_step: int
     tables: tuple[Table, ...]
     helpers: tuple[str, ...]
-    elementary: tuple[str, ...]
-    """The elementary functions that are used."""
+    kernels: tuple[str, ...]
+    """The kernels that are used, by their operations."""
     functions: tuple[Function, ...]
     flow_asked: bool
     """Does the flow depend on a flow condition?"""

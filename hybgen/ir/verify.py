@@ -7,7 +7,7 @@ from fractions import Fraction
 
 from hybgen.ir.model import OPS, Answer, Apply, Constant, Field, Let, Local, Member, Program, Statement, Store, Value
 from hybgen.ir.walk import blocks, own, values
-from hybgen.kernels.word import ELEMENTARY
+from hybgen.kernels.table import ARITY
 
 _ARITY = {
     "select": 3,
@@ -25,7 +25,7 @@ _ARITY = {
     "to_steps": 1,
     "to_real": 1,
     "finite": 1,
-    **ELEMENTARY,
+    **ARITY,
 }
 
 

@@ -12,7 +12,7 @@ ULP: dict[str, dict[str, float]] = {
         "sqrt": 0.5,
         "sin": 0.52,
         "cos": 0.52,
-        "tan": 0.53,
+        "tan": 0.54,
         "asin": 0.53,
         "acos": 0.53,
         "atan2": 0.53,

@@ -80,7 +80,7 @@ HALF_TURN = cores.near(HALF_PI[0] * 2, HALF_PI[1], 30)
 
 
 def _one_argument(name: str, about: str, rest: Callable[[Raw, Word, Word, Word, Word], Word]) -> Kernel:
-    raw = Raw(Builder(name, about))
+    raw = Raw(Builder(f"fixed_{name}", about))
     x, size = raw.argument("x")
     places, wanted = raw.k.parameter("places", "i32"), raw.k.parameter("wanted", "i32")
     return raw.k.made(rest(raw, x, size, places, wanted))
@@ -152,7 +152,7 @@ def _arc(raw: Raw, x: Word, size: Word, places: Word, wanted: Word, cosine: bool
 
 
 def _two_arguments(name: str, about: str) -> tuple[Raw, list[tuple[Word, Word, Word]], Word]:
-    raw = Raw(Builder(name, about))
+    raw = Raw(Builder(f"fixed_{name}", about))
     first, second = raw.argument("y"), raw.argument("x")
     places = raw.k.parameter("y_places", "i32"), raw.k.parameter("x_places", "i32")
     return raw, [(*first, places[0]), (*second, places[1])], raw.k.parameter("wanted", "i32")

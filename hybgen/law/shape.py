@@ -224,7 +224,7 @@ LAW = Record(
         "law": Field(Text(), "a C identifier; prefix of every file and symbol", required=True),
         "about": _ABOUT,
         "step": Field(Value(), "the fixed step", required=True),
-        "number": Field(Word(("float32", "float64"), ("fixed32",)), "number format of the C; left out: float32"),
+        "number": Field(Word(("float32", "float64", "fixed32")), "number format of the C; left out: float32"),
         "thresholds": Field(
             Word(("safe", "nearest")), "safe (left out): thresholds are rounded so that rounding never causes a jump"
         ),

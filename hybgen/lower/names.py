@@ -5,7 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 
 from hybgen.ir.model import HELPERS
-from hybgen.kernels.word import ELEMENTARY
+from hybgen.kernels.table import ARITY
 from hybgen.step.model import Status
 
 API = (
@@ -26,7 +26,15 @@ API = (
     "advance",
 )
 PARTS = ("pack", "zeros", "high", "ratio", "root", "wave", "angle")
-KERNELS = (*ELEMENTARY, "bits", "real", "punned", *(f"{part}{width}" for part in PARTS for width in (32, 64)))
+KERNELS = (
+    *ARITY,
+    "bits",
+    "real",
+    "punned",
+    "fixed_fit",
+    "place",
+    *(f"{part}{width}" for part in PARTS for width in (32, 64)),
+)
 TABLES = ("sine", "two_over_pi")
 LOCALS = (
     "self",

@@ -30,7 +30,7 @@ from hybgen.ir.model import (
 )
 from hybgen.ir.verify import verify
 from hybgen.ir.walk import all_values, statements
-from hybgen.kernels.word import ELEMENTARY
+from hybgen.kernels.table import ARITY
 from hybgen.lower.blocks import Assignment, Lets, Statements, chosen, merged, ordered, pruned
 from hybgen.lower.due import Due
 from hybgen.lower.names import LOCALS, Namer, reserved
@@ -40,6 +40,9 @@ from hybgen.step.translate import component
 from hybgen.version import VERSION
 
 TRUE = Constant(True, "bool")
+
+
+_REALS = {"float32": "float", "float64": "double", "fixed32": "int32_t"}
 
 
 def lower(made: StepLaw) -> Program:
@@ -72,7 +75,7 @@ class _Builder:
             f"{float(made.step):.9g} s",
             made.format.name,
             made.method,
-            "float" if made.format.precision == 24 else "double",
+            _REALS[made.format.name],
             made.format.precision,
             made.format.max,
             parts.enums,
@@ -87,7 +90,7 @@ class _Builder:
             made.jumps_per_step,
             tuple(Table(parts.values.tables[t.name], t.x, t.y, t.slope, _place(t.span)) for t in made.tables),
             _used(functions, HELPERS),
-            _used(functions, ELEMENTARY.keys()),
+            _used(functions, ARITY.keys()),
             functions,
             made.flow_condition is not None,
         )

@@ -50,12 +50,18 @@ def structs(made: StepLaw, namer: Namer) -> Structs:
     ]
     return Structs(
         tuple(enums),
-        tuple(Member(u.name, values.type(u.type), u.size, _input_note(u)) for u in law.inputs),
+        tuple(Member(u.name, values.type(u.type), u.size, _input_note(law.input(u.name), made)) for u in made.inputs),
         tuple(
-            Member(p.name, values.type(p.type), p.size, _parameter_note(law.parameter(p.name))) for p in made.parameters
+            Member(p.name, values.type(p.type), p.size, _parameter_note(law.parameter(p.name), made))
+            for p in made.parameters
         ),
         tuple(
-            Member(o.name, values.type(o.type), o.size, _joined(_unit(o.unit), _range(o.low, o.high), o.about))
+            Member(
+                o.name,
+                values.type(o.type),
+                o.size,
+                _joined(_unit(o.unit), _range(o.low, o.high), _scale(made, RefKind.OUTPUT, o.name, o.unit), o.about),
+            )
             for o in law.outputs
         ),
         tuple(states),
@@ -120,12 +126,18 @@ def _joined(*parts: str) -> str:
     return "; ".join(p for p in parts if p)
 
 
-def _input_note(u: Input) -> str:
-    return _joined(_unit(u.unit), _range(u.low, u.high), u.about)
+def _scale(made: StepLaw, kind: RefKind, name: str, unit: Unit) -> str:
+    """Fixed point: how many bits stand before and after the point, and what the last one is worth."""
+    places = made.places.get((kind, name))
+    return "" if places is None else f"Q{31 - places}.{places}, resolution {2.0**-places:.3g} {_unit(unit)}".rstrip()
 
 
-def _parameter_note(p: Parameter) -> str:
-    return _joined(_unit(p.unit), _range(p.low, p.high), p.about)
+def _input_note(u: Input, made: StepLaw) -> str:
+    return _joined(_unit(u.unit), _range(u.low, u.high), _scale(made, RefKind.INPUT, u.name, u.unit), u.about)
+
+
+def _parameter_note(p: Parameter, made: StepLaw) -> str:
+    return _joined(_unit(p.unit), _range(p.low, p.high), _scale(made, RefKind.PARAMETER, p.name, p.unit), p.about)
 
 
 def _state_note(x: State, made: StepLaw) -> str:
@@ -136,6 +148,6 @@ def _state_note(x: State, made: StepLaw) -> str:
         case StateKind.COUNT:
             return _joined(f"holds at {x.maximum}", x.about)
         case StateKind.REAL:
-            return _joined(_unit(x.unit), _range(x.low, x.high), x.about)
+            return _joined(_unit(x.unit), _range(x.low, x.high), _scale(made, RefKind.STATE, x.name, x.unit), x.about)
         case _:
             return x.about

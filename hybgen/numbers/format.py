@@ -8,6 +8,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 from enum import StrEnum
 from fractions import Fraction
+from typing import Any
 
 import numpy as np
 
@@ -33,7 +34,7 @@ class Format:
     """Largest finite numbers are below 2**top."""
 
     @property
-    def dtype(self) -> np.dtype[np.floating]:
+    def dtype(self) -> np.dtype[Any]:
         """The numpy type."""
         return np.dtype(self.name)
 
@@ -82,9 +83,32 @@ def _exponent(value: Fraction) -> int:
     return guess if Fraction(2) ** guess <= value else guess - 1
 
 
+@dataclass(frozen=True, slots=True)
+class Exact(Format):
+    """No rounding at all: what a law is before it is put into fixed point."""
+
+    @property
+    def dtype(self) -> np.dtype[Any]:
+        """Raw values."""
+        return np.dtype(np.int32)
+
+    @property
+    def max(self) -> Fraction:
+        """Nothing is too large here."""
+        return Fraction(2) ** 1000
+
+    def round(self, value: Fraction, how: Rounding = Rounding.NEAREST) -> Fraction:
+        """The value itself."""
+        return value
+
+
 FLOAT32 = Format("float32", 24, -149, 128)
 FLOAT64 = Format("float64", 53, -1074, 1024)
+FIXED32 = Exact("fixed32", 31, 0, 31)
 FORMATS: dict[str, Format] = {f.name: f for f in (FLOAT32, FLOAT64)}
+"""The floating-point formats."""
+NUMBERS: dict[str, Format] = FORMATS | {FIXED32.name: FIXED32}
+"""Every number format."""
 
 LARGEST_COUNT = 2**31 - 1
 """Counters, timers and integers are 32-bit two's complement in C."""

@@ -14,7 +14,7 @@ from typing import Any, Self
 import numpy as np
 from numpy.typing import NDArray
 
-from hybgen.expr.core import Kind, Type
+from hybgen.expr.core import Kind, RefKind, Type
 from hybgen.numbers.format import LARGEST_COUNT, Format
 from hybgen.step.model import Status, StepLaw, StepState
 
@@ -53,6 +53,22 @@ def layout(made: StepLaw, which: str) -> list[tuple[str, np.dtype[Any], tuple[in
             return [*states, *held, ("last_jump", word, ()), ("jumps", word, ())]
 
 
+NO_NUMBER = -(2**31)
+"""The raw value of what is no number, in fixed point: outside every range."""
+
+
+def to_raw(value: Any, places: int) -> Array:
+    """Physical values as raw ones: nearest, ties to even; held at the ends; NO_NUMBER for what is not finite."""
+    scaled = np.ldexp(np.asarray(value, np.float64), places)
+    held = np.clip(np.rint(np.where(np.isfinite(scaled), scaled, 0.0)), -LARGEST_COUNT, LARGEST_COUNT)
+    return np.where(np.isfinite(scaled), held, NO_NUMBER).astype(np.int32)
+
+
+def to_physical(raw: Any, places: int) -> Array:
+    """Raw values as physical ones, exactly."""
+    return np.ldexp(np.asarray(raw, np.float64), -places)
+
+
 class Machine:
     """A law that can be stepped. Subclasses give `_advance` (all lanes, one step) and `_spawn`."""
 
@@ -78,8 +94,9 @@ class Machine:
 
     def _given(self, name: str, value: Any, like: Array) -> Array:
         """A value for a parameter: one for all lanes, or one for each."""
+        places = self.step_law.places.get((RefKind.PARAMETER, name))
         try:
-            found = np.asarray(value, dtype=like.dtype)
+            found = np.asarray(value, dtype=like.dtype) if places is None else to_raw(value, places)
             if found.ndim == like.ndim - 1:
                 found = found[None, ...]
             return np.broadcast_to(found, like.shape)
@@ -127,19 +144,32 @@ class Machine:
         """The state by name (first lane), readable and writable."""
         return StateMapping(self)
 
-    def step(self, inputs: Mapping[str, Any]) -> dict[str, Any]:
-        """One step with the samples by name; the outputs by name. Raises ValueError for names or values that don't fit."""
-        arrays = {n: a[None, ...] for n, a in self._inputs(inputs, 0).items()}
+    def step(self, inputs: Mapping[str, Any], *, raw: bool = False) -> dict[str, Any]:
+        """One step with the samples by name; the outputs by name. Raises ValueError for names or values that don't fit.
+
+        Fixed point: numbers are physical, or raw values with `raw`.
+        """
+        arrays = {n: a[None, ...] for n, a in self._inputs(inputs, 0, raw).items()}
         if self.lanes != 1:
             arrays = {n: np.repeat(a, self.lanes, axis=0) for n, a in arrays.items()}
         outputs = self._advance(arrays)
-        return {o.name: self._shown(outputs[o.name][0], o.type) for o in self.law.outputs}
+        return {o.name: self._physical(o.name, outputs[o.name][0], o.type, raw) for o in self.law.outputs}
 
-    def run(self, inputs: Mapping[str, Any]) -> dict[str, Array]:
+    def _physical(self, name: str, value: Any, type_: Type, raw: bool) -> Any:
+        places = self.step_law.places.get((RefKind.OUTPUT, name))
+        return self._shown(value, type_) if raw or places is None else float(to_physical(value, places))
+
+    def run(self, inputs: Mapping[str, Any], *, raw: bool = False) -> dict[str, Array]:
         """Many steps: arrays of shape (steps,) go on from the state; arrays of shape (steps, lanes) start every lane at the
         state and leave it as it is. A vector input has one more axis, its components. Returns the outputs alike.
+
+        Fixed point: numbers are physical (float64), or raw values (int32) with `raw`.
         """
-        arrays = self._inputs(inputs, 1)
+        found = self._ran(inputs, self._inputs(inputs, 1, raw))
+        places = {} if raw else {n: p for (kind, n), p in self.step_law.places.items() if kind is RefKind.OUTPUT}
+        return {n: to_physical(a, places[n]) if n in places else a for n, a in found.items()}
+
+    def _ran(self, inputs: Mapping[str, Any], arrays: Fields) -> dict[str, Array]:
         axes = {a.ndim - self._rank(n) for n, a in arrays.items()}
         if axes - {1, 2}:
             raise ValueError("arrays of samples have the shape (steps,) or (steps, lanes), vectors one axis more")
@@ -171,7 +201,7 @@ class Machine:
                 array[k] = outputs[name]
         return made
 
-    def _inputs(self, inputs: Mapping[str, Any], axes: int) -> Fields:
+    def _inputs(self, inputs: Mapping[str, Any], axes: int, raw: bool) -> Fields:
         """The samples as arrays of their types. `axes` 0: one sample each; 1: arrays."""
         known = {u.name: u for u in self.step_law.inputs}
         extra = [n for n in inputs if n not in known and not (n == "steps" and not known)]
@@ -181,16 +211,22 @@ class Machine:
                 f"missing: {', '.join(missing)}"
             ] * bool(missing)
             raise ValueError(f"the inputs of {self.law.name} are {', '.join(known) or 'none'} ({'; '.join(words)})")
+        places = {} if raw else self.step_law.places
         return {
-            n: self._sample(n, u.type, inputs[n], () if u.size is None else (u.size,), axes) for n, u in known.items()
+            n: self._sample(
+                n, u.type, inputs[n], () if u.size is None else (u.size,), axes, places.get((RefKind.INPUT, n))
+            )
+            for n, u in known.items()
         }
 
-    def _sample(self, name: str, type_: Type, value: Any, shape: tuple[int, ...], axes: int) -> Array:
+    def _sample(
+        self, name: str, type_: Type, value: Any, shape: tuple[int, ...], axes: int, places: int | None
+    ) -> Array:
         wanted = dtype_of(type_, self.step_law.format)
         try:
-            raw = np.asarray(value)
+            raw = np.asarray(value) if places is None else to_raw(value, places)
             if wanted.kind == "i" and (
-                raw.dtype.kind not in "iub" or np.any(np.abs(raw.astype(np.int64)) > LARGEST_COUNT)
+                raw.dtype.kind not in "iub" or np.any((raw > LARGEST_COUNT) | (raw < NO_NUMBER))
             ):
                 raise ValueError("whole numbers of 32 bits are needed")
             if raw.dtype.kind not in "iufb":
@@ -234,6 +270,9 @@ class StateMapping(MutableMapping[str, Any]):
     def __getitem__(self, name: str) -> Any:
         x = self._states[name]
         value = self._machine.fields[name][0]
+        places = self._machine.step_law.places.get((RefKind.STATE, name))
+        if places is not None:
+            return to_physical(value, places).tolist()
         if x.kind == "timer":
             return float(int(value) * self._machine.step_law.step)
         return self._machine._shown(value, x.type)
@@ -257,8 +296,9 @@ class StateMapping(MutableMapping[str, Any]):
             return min(max(0, int(value)), x.maximum)
         declared = self._machine.law.state(x.name)
         if declared.limit and declared.low is not None and declared.high is not None:
-            return np.clip(value, float(declared.low), float(declared.high))
-        return value
+            value = np.clip(value, float(declared.low), float(declared.high))
+        places = self._machine.step_law.places.get((RefKind.STATE, x.name))
+        return value if places is None else to_raw(value, places)
 
     def __delitem__(self, name: str) -> None:
         raise TypeError("a state can't be taken out")

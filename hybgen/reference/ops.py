@@ -9,10 +9,10 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from hybgen.kernels.floats import kernel
 from hybgen.kernels.run import function
+from hybgen.kernels.table import FIXED, kernel
 from hybgen.kernels.word import ELEMENTARY
-from hybgen.numbers.format import LARGEST_COUNT, Format
+from hybgen.numbers.format import FIXED32, LARGEST_COUNT, Format
 from hybgen.step.model import StepTable
 
 Array = NDArray[Any]
@@ -24,6 +24,14 @@ _I = np.int32
 @cache
 def operations(fmt: Format) -> Mapping[str, Operation]:
     """Operation name -> function on arrays (or scalars) of the format's type, int32 or bool."""
+    return _common() | (_fixed() if fmt is FIXED32 else _floating(fmt))
+
+
+def _fixed() -> dict[str, Operation]:
+    return {name: function(kernel(name, FIXED32.name)) for name in FIXED}
+
+
+def _floating(fmt: Format) -> dict[str, Operation]:
     real = fmt.dtype.type
     zero, one, largest = real(0), real(1), real(float(fmt.max))
     return {
@@ -38,6 +46,16 @@ def operations(fmt: Format) -> Mapping[str, Operation]:
         "clamp": lambda x, low, high: np.where(x < low, low, np.where(x > high, high, x)),
         "sign": lambda a: np.where(a > zero, one, np.where(a < zero, -one, zero)),
         "floor": _floor(fmt),
+        "to_real": lambda a: np.asarray(a).astype(real),
+        "to_steps": _to_steps(fmt),
+        "finite": lambda a: (a >= -largest) & (a <= largest),
+        **{name: function(kernel(name, fmt.name), fmt.dtype) for name in ELEMENTARY},
+    }
+
+
+def _common() -> dict[str, Operation]:
+    """Operations on whole numbers and conditions, alike in every format."""
+    return {
         "iadd": np.add,
         "isub": np.subtract,
         "imul": np.multiply,
@@ -47,20 +65,16 @@ def operations(fmt: Format) -> Mapping[str, Operation]:
         "imax": lambda a, b: np.where(b > a, b, a),
         "iclamp": lambda x, low, high: np.where(x < low, low, np.where(x > high, high, x)),
         "isign": lambda a: np.where(a > _I(0), _I(1), np.where(a < _I(0), _I(-1), _I(0))),
-        "to_real": lambda a: np.asarray(a).astype(real),
-        "to_steps": _to_steps(fmt),
         "lt": np.less,
         "le": np.less_equal,
         "gt": np.greater,
         "ge": np.greater_equal,
         "eq": np.equal,
         "ne": np.not_equal,
-        "finite": lambda a: (a >= -largest) & (a <= largest),
         "and": lambda *a: reduce(np.logical_and, a),
         "or": lambda *a: reduce(np.logical_or, a),
         "not": np.logical_not,
         "select": np.where,
-        **{name: function(kernel(name, fmt.name), fmt.dtype) for name in ELEMENTARY},
     }
 
 

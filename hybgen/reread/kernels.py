@@ -5,8 +5,8 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping
 from typing import Any
 
-from hybgen.kernels.floats import kernel
-from hybgen.kernels.word import COMPARISONS, ELEMENTARY, Exit, Kernel, Let, Word, closure, number
+from hybgen.kernels.table import ARITY, kernel
+from hybgen.kernels.word import COMPARISONS, Exit, Kernel, Let, Word, closure, number
 from hybgen.reread.execute import NotUnderstood
 from hybgen.reread.source import Source, body_of, same
 
@@ -16,11 +16,12 @@ _MACROS = {"UINT64_C": "u64", "INT64_C": "i64"}
 
 def wrong(law: str, number_format: str, source: Source) -> Iterator[str]:
     """Names of the functions, tables and types of the elementary functions that are not as they have to be."""
-    there = [n for n in ELEMENTARY if f"{law}_{n}" in source.functions]
+    there = [n for n in ARITY if f"{law}_{n}" in source.functions]
     if not there:
         return
-    real = "float" if number_format == "float32" else "double"
-    yield from _punning(law, real, source)
+    real = {"float32": "float", "float64": "double"}.get(number_format, "")
+    if real:
+        yield from _punning(law, real, source)
     reader = _Reader(law, real, source)
     for expected in closure([kernel(n, number_format) for n in there]):
         name = f"{law}_{expected.name}"

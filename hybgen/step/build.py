@@ -11,9 +11,10 @@ from hybgen.expr.core import REAL, Kind, Node, Op, Ref, RefKind, refs
 from hybgen.expr.fold import decide
 from hybgen.law.model import Assign, Jump, Law, Output, State, StateKind, Value
 from hybgen.numbers.bounds import Bounds, Key, Range, exact_range
-from hybgen.numbers.format import FORMATS, Format
+from hybgen.numbers.format import FIXED32, NUMBERS, Format
 from hybgen.step import declare
 from hybgen.step.chain import longest
+from hybgen.step.fixed import in_fixed_point
 from hybgen.step.integrate import integrate
 from hybgen.step.model import Definition, Rule, StepAssign, StepJump, StepLaw, StepOutput
 from hybgen.step.normal import Normalizer, watched
@@ -25,7 +26,7 @@ def build(law: Law, *, step: Fraction | None = None, number: str | None = None) 
 
     Raises LawError where a constant is beyond the format or the method does not fit.
     """
-    fmt = FORMATS[number or law.number]
+    fmt = NUMBERS[number or law.number]
     findings = Findings()
     translator = Translator(law, fmt, step or law.step, findings, constants_of(law), timers_of(law), _local_names(law))
     step_law = _Builder(law, fmt, translator, findings).built()
@@ -89,9 +90,12 @@ class _Builder:
             outputs,
             flow,
             sample,
-            (),
         )
-        return _flagged(_pruned(made))
+        made = _flagged(_pruned(made))
+        if self.format is FIXED32:
+            self.findings.stop()
+            made = _pruned(in_fixed_point(made, bounds, self.findings))
+        return made
 
     def _terms(self) -> list[Definition]:
         local = self.translator.local

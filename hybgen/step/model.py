@@ -24,14 +24,14 @@ A guarded assignment whose new value is not finite keeps the old value (status N
 
 from __future__ import annotations
 
-from collections.abc import Iterator
-from dataclasses import dataclass
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass, field
 from enum import IntFlag
 from fractions import Fraction
 
 from hybgen.diag.finding import Finding
 from hybgen.diag.span import Span
-from hybgen.expr.core import Node, Type
+from hybgen.expr.core import Node, RefKind, Type
 from hybgen.law.model import Law, StateKind, Value
 from hybgen.numbers.format import Format
 
@@ -206,6 +206,8 @@ class StepLaw:
     outputs: tuple[StepOutput, ...]
     flow: tuple[StepAssign, ...]
     sample: tuple[StepAssign, ...]
+    places: Mapping[tuple[RefKind, str], int] = field(default_factory=dict)
+    """Fixed point: binary places of inputs, parameters, states and outputs (value = raw * 2**-places); else empty."""
     notes: tuple[Finding, ...] = ()
     """What the step changes that the author should know (times that are no whole number of steps)."""
 

@@ -75,4 +75,32 @@ NUMBERS = (
         "thresholds: nearest",
         "thresholds: safe",
     ),
+    Code(
+        "HG420",
+        "rounding",
+        "error",
+        "a state without a range in fixed point",
+        "In fixed32 each quantity has a scale that follows from its range: a state needs one too.",
+        "x: {initial: 0}",
+        "x: {range: [-2, 2], initial: 0}",
+    ),
+    Code(
+        "HG421",
+        "rounding",
+        "error",
+        "a range that 32 bits can't hold",
+        "In fixed32 a quantity is a whole number of 32 bits times a power of two between 2**-62 and 2**31.",
+        "range: [0, 1e20]",
+        "range: [0, 100]    # in a larger unit",
+    ),
+    Code(
+        "HG422",
+        "range",
+        "error",
+        "an operation that fixed point can't do everywhere",
+        "In fixed32 nothing may overflow or be undefined anywhere in the declared domain: a divisor must not reach 0, the "
+        "arguments of log, sqrt, asin, acos and tan have to be inside their domain, a result has to fit 32 bits.",
+        "gain: a / b    # with b: {range: [-1, 1]}",
+        "gain: a / max(b, 0.01)",
+    ),
 )

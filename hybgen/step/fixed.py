@@ -1,0 +1,403 @@
+"""A step law with exact constants -> the same in fixed point: every real number becomes a raw integer with binary places.
+
+The places of inputs, parameters and states come from their ranges, those of results from interval arithmetic (scaled.py). What
+is stored is rounded to the places of the state and held; so every leaf's interval is enforced by the program itself.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field, replace
+from fractions import Fraction
+
+from hybgen.diag.finding import Findings
+from hybgen.diag.span import Span
+from hybgen.expr.core import FALSE, INT, REAL, TRUE, Const, Node, Op, Ref, RefKind, integer, op, truth
+from hybgen.expr.fold import decide
+from hybgen.kernels.word import ELEMENTARY
+from hybgen.law.model import Law, Value
+from hybgen.numbers.bounds import Bounds, Range
+from hybgen.step.model import (
+    Definition,
+    Rule,
+    StepAssign,
+    StepInput,
+    StepJump,
+    StepLaw,
+    StepOutput,
+    StepParameter,
+    StepState,
+)
+from hybgen.step.scaled import (
+    MOST,
+    Refused,
+    Scaled,
+    added,
+    common,
+    constant,
+    divided,
+    fitted,
+    multiplied,
+    ordered,
+    raw,
+    rescaled,
+    room,
+)
+
+Key = tuple[RefKind, str]
+_REALS = ("lt", "le", "gt", "ge")
+
+
+def in_fixed_point(made: StepLaw, bounds: Bounds, findings: Findings) -> StepLaw:
+    """The step law on raw integers; findings where a range is missing, nothing fits, or an operation is not defined everywhere."""
+    leaves = _leaves(made, findings)
+    findings.stop()
+    fixed = _Fixed(made, bounds, findings, leaves, {})
+    return fixed.built()
+
+
+def _leaves(made: StepLaw, findings: Findings) -> dict[Key, tuple[int, int, int]]:
+    """(places, lowest raw, highest raw) of inputs, parameters and states."""
+    found: dict[Key, tuple[int, int, int]] = {}
+    for u in made.inputs:
+        if u.type == REAL:
+            held = [Fraction(u.initial), Fraction(u.substitute)]
+            found[(RefKind.INPUT, u.name)] = _between(Fraction(u.low), Fraction(u.high), u.name, u.span, findings, held)
+    for p in made.parameters:
+        if p.type == REAL:
+            ends = (min(map(Fraction, p.default)), max(map(Fraction, p.default)))
+            low, high = (Fraction(e if v is None else v) for v, e in zip((p.low, p.high), ends, strict=True))
+            found[(RefKind.PARAMETER, p.name)] = _between(low, high, p.name, p.span, findings, [])
+    for x in made.states:
+        if x.type == REAL:
+            found[(RefKind.STATE, x.name)] = _state(x, made.law, findings)
+    return found
+
+
+def _state(x: StepState, law: Law, findings: Findings) -> tuple[int, int, int]:
+    """A state that is not limited may reach every raw value: it gets room for twice its range."""
+    declared = law.state(x.name)
+    if declared.low is None or declared.high is None:
+        findings.error(
+            "HG420",
+            x.span,
+            f"fixed32 needs a range for state '{x.name}': its resolution follows from it",
+            hint="declare range: [lowest, highest]",
+        )
+        return 0, 0, 0
+    if declared.limit:
+        return _between(declared.low, declared.high, x.name, x.span, findings, [])
+    places, _, _ = _between(2 * declared.low, 2 * declared.high, x.name, x.span, findings, [])
+    return places, -MOST, MOST
+
+
+def _between(
+    low: Fraction, high: Fraction, name: str, span: Span, findings: Findings, others: list[Fraction]
+) -> tuple[int, int, int]:
+    """Ends are rounded inward, other values to the nearest."""
+    try:
+        places = room(max(abs(v) for v in (low, high, *others)))
+    except Refused as refused:
+        findings.error("HG421", span, f"'{name}' does not fit fixed32: {refused}", hint="use another unit")
+        return 0, 0, 0
+    unit = Fraction(2) ** places
+    raws = [math.ceil(low * unit), math.floor(high * unit), *(raw(v, places) for v in others)]
+    return places, min(raws), max(raws)
+
+
+@dataclass(slots=True)
+class _Fixed:
+    """The elaboration of one step law."""
+
+    made: StepLaw
+    bounds: Bounds
+    findings: Findings
+    leaves: Mapping[Key, tuple[int, int, int]]
+    locals: dict[str, Scaled]
+    known: dict[Node, Scaled] = field(default_factory=dict)
+
+    def built(self) -> StepLaw:
+        made = self.made
+        definitions = tuple(self.definition(d) for d in made.definitions)
+        outputs = tuple(self.output(o) for o in made.outputs)
+        fixed = replace(
+            made,
+            inputs=tuple(self.input(u) for u in made.inputs),
+            parameters=tuple(self.parameter(p) for p in made.parameters),
+            rules=tuple(Rule(self.condition(r.condition), r.text, r.span) for r in made.rules),
+            states=tuple(self.state(x) for x in made.states),
+            definitions=definitions,
+            alarms=(),
+            jumps=tuple(self.jump(j) for j in made.jumps),
+            flow_condition=None if made.flow_condition is None else self.condition(made.flow_condition),
+            outputs=tuple(o for o, _ in outputs),
+            flow=tuple(self.assign(a) for a in made.flow),
+            sample=tuple(self.assign(a) for a in made.sample),
+            law=replace(
+                made.law, outputs=tuple(replace(o, type=INT if o.type == REAL else o.type) for o in made.law.outputs)
+            ),
+            places={k: v[0] for k, v in self.leaves.items()}
+            | {(RefKind.OUTPUT, o.name): places for o, places in outputs if places is not None},
+        )
+        self.findings.stop()
+        return fixed
+
+    # ------------------------------------------------------------------ declarations
+
+    def input(self, u: StepInput) -> StepInput:
+        if u.type != REAL:
+            return u
+        places, _, _ = self.leaves[(RefKind.INPUT, u.name)]
+        unit = Fraction(2) ** places
+        low, high = math.ceil(Fraction(u.low) * unit), math.floor(Fraction(u.high) * unit)
+        given, initial = (raw(Fraction(v), places) for v in (u.substitute, u.initial))
+        return replace(u, type=INT, low=low, high=high, substitute=given, initial=initial)
+
+    def parameter(self, p: StepParameter) -> StepParameter:
+        if p.type != REAL:
+            return p
+        places, low, high = self.leaves[(RefKind.PARAMETER, p.name)]
+        default = tuple(max(low, min(high, raw(Fraction(v), places))) for v in p.default)
+        return replace(p, type=INT, default=default, low=low, high=high)
+
+    def state(self, x: StepState) -> StepState:
+        if x.type != REAL:
+            return x
+        places, low, high = self.leaves[(RefKind.STATE, x.name)]
+        return replace(x, type=INT, initial=tuple(max(low, min(high, raw(Fraction(v), places))) for v in x.initial))
+
+    def definition(self, d: Definition) -> Definition:
+        if d.expr.type == REAL:
+            value = self.real(d.expr)
+            named = Ref(RefKind.LOCAL, d.name, INT, None, d.span)
+            self.locals[d.name] = replace(value, node=named)
+            return replace(d, expr=value.node)
+        return replace(d, expr=self.other(d.expr))
+
+    def jump(self, j: StepJump) -> StepJump:
+        return replace(j, condition=self.condition(j.condition), assigns=tuple(self.assign(a) for a in j.assigns))
+
+    def condition(self, node: Node) -> Node:
+        return decide(self.other(node))
+
+    def assign(self, a: StepAssign) -> StepAssign:
+        if a.expr.type != REAL:
+            return replace(a, expr=self.other(a.expr))
+        places, low, high = self.leaves[(RefKind.STATE, a.state)]
+        ends = (low, high)
+        expr = self.stored(self.real(a.expr), places, ends, a.span)
+        inside = self.made.law.state(a.state).limit and a.clamp is not None
+        return replace(a, expr=expr, guarded=False, clamp=(low, high) if inside else None)
+
+    def stored(self, value: Scaled, places: int, ends: tuple[int, int], span: Span) -> Node:
+        """A choice is rounded branch by branch: a branch that is the state itself stays as it is; constants are inside the ends."""
+        node = value.node
+        if isinstance(node, Op) and node.op == "select":
+            asked, yes, no = node.args
+            parts = [self.stored(replace(value, node=n), places, ends, span) for n in (yes, no)]
+            return op("select", asked, *parts, span=span)
+        if isinstance(node, Op) and node.op == "fixed_scale" and isinstance(node.args[1], Const):
+            back = node.args[0]
+            if value.places - int(node.args[1].value) == places and int(node.args[1].value) >= 0:
+                return back
+        node = rescaled(value, places, span).node
+        if isinstance(node, Const):
+            return integer(min(max(int(node.value), ends[0]), ends[1]), span)
+        return node
+
+    def output(self, o: StepOutput) -> tuple[StepOutput, int | None]:
+        if o.expr.type != REAL:
+            return replace(o, expr=self.other(o.expr)), None
+        value = self.real(o.expr)
+        low, high = -MOST, MOST
+        clamp: tuple[Value, Value] | None = None
+        places = value.places
+        if o.clamp is not None:
+            ends = [Fraction(c) for c in o.clamp]
+            places = room(max(abs(e) for e in ends))
+            low, high = math.ceil(ends[0] * Fraction(2) ** places), math.floor(ends[1] * Fraction(2) ** places)
+            clamp = (low, high)
+        node = self.stored(value, places, (low, high), o.span)
+        return replace(o, expr=node, guarded=False, fallback=0, clamp=clamp), places
+
+    # ------------------------------------------------------------------ expressions
+
+    def other(self, node: Node) -> Node:
+        """A boolean, integer or enumeration: its parts that are real are elaborated."""
+        match node:
+            case Op(op="finite"):
+                return TRUE
+            case Op() if node.op in _REALS and node.args[0].type == REAL:
+                return self.tried(node, lambda: self.comparison(node)) or FALSE
+            case Op(op="to_steps"):
+                return self.tried(node, lambda: self.steps(node)) or integer(0)
+            case Op():
+                return Op(node.op, tuple(self.other(a) for a in node.args), node.type, node.table, node.span)
+            case _:
+                return node
+
+    def steps(self, node: Op) -> Node:
+        value = self.real(node.args[0])
+        if value.places < 0:
+            value = rescaled(value, 0, node.span)
+        return op("fixed_steps", value.node, integer(value.places), span=node.span)
+
+    def comparison(self, node: Op) -> Node:
+        """With a constant: exact, whatever its digits (thresholds: nearest - the nearest raw value)."""
+        left, right = node.args
+        mirror = {"lt": "gt", "gt": "lt", "le": "ge", "ge": "le"}
+        if isinstance(right, Const):
+            return self.against(node.op, self.real(left), Fraction(right.value), node.span)
+        if isinstance(left, Const):
+            return self.against(mirror[node.op], self.real(right), Fraction(left.value), node.span)
+        return ordered(node.op, self.real(left), self.real(right), node.span)
+
+    def against(self, name: str, x: Scaled, value: Fraction, span: Span) -> Node:
+        exact = value * Fraction(2) ** x.places
+        if self.made.law.thresholds == "nearest":
+            edge = round(exact)
+        else:
+            edge = math.ceil(exact) if name in ("ge", "lt") else math.floor(exact)
+        if abs(edge) > MOST:
+            return truth((edge > 0) is (name in ("lt", "le")), span)
+        return op(name, x.node, integer(edge, span), span=span)
+
+    def tried(self, node: Node, make: Callable[[], Node]) -> Node | None:
+        """What `make` gives; a finding where it refuses."""
+        try:
+            return make()
+        except Refused as refused:
+            self.findings.error("HG422", node.span, f"fixed32: {refused}", hint="limit it first, such as max(x, 0.01)")
+            return None
+
+    def real(self, node: Node) -> Scaled:
+        """A real expression."""
+        found = self.known.get(node)
+        if found is None:
+            try:
+                found = self.computed(node)
+            except Refused as refused:
+                self.findings.error(
+                    "HG422", node.span, f"fixed32: {refused}", hint="limit it first, such as max(x, 0.01)"
+                )
+                found = Scaled(integer(0), 0, 0, 0)
+            self.known[node] = found
+        return found
+
+    def computed(self, node: Node) -> Scaled:
+        match node:
+            case Const():
+                return constant(Fraction(node.value), node.span)
+            case Ref(kind=RefKind.LOCAL):
+                return self.locals[node.name]
+            case Ref():
+                places, low, high = self.leaves[(node.kind, node.name)]
+                return Scaled(Ref(node.kind, node.name, INT, node.index, node.span), places, low, high)
+            case Op():
+                return self.operation(node)
+
+    def operation(self, node: Op) -> Scaled:
+        span = node.span
+        match node.op:
+            case "select":
+                yes, no = common([self.real(a) for a in node.args[1:]], span)
+                made = op("select", self.condition(node.args[0]), yes.node, no.node, span=span)
+                return Scaled(made, yes.places, min(yes.low, no.low), max(yes.high, no.high))
+            case "to_real":
+                known: Range = self.bounds.of(node.args[0])
+                low, high = max(-MOST, math.floor(known.low)), min(MOST, math.ceil(known.high))
+                return Scaled(self.other(node.args[0]), 0, low, high)
+        args = [self.real(a) for a in node.args]
+        match node.op:
+            case "add" | "sub":
+                return added(args[0], args[1], node.op == "sub", span)
+            case "mul":
+                return multiplied(args[0], args[1], span)
+            case "div":
+                return divided(args[0], args[1], span)
+            case "floor":
+                return self.floor(args[0], span)
+            case "sign":
+                return Scaled(op("isign", args[0].node, span=span), 0, -1, 1)
+            case "lookup":
+                raise Refused("tables are not available in this format yet")
+        if node.op in ELEMENTARY:
+            return _elementary(node.op, args, span)
+        return _chosen(node.op, args, span)
+
+    def floor(self, x: Scaled, span: Span) -> Scaled:
+        if x.places <= 0:
+            return x
+        low, high = (math.floor(e) for e in x.ends)
+        return Scaled(op("fixed_floor", x.node, integer(x.places), span=span), 0, low, high)
+
+
+def _chosen(name: str, args: list[Scaled], span: Span) -> Scaled:
+    """neg, abs, min, max, clamp: no rounding, but to common places."""
+    args = common(args, span)
+    low, high = args[0].low, args[0].high
+    match name:
+        case "neg":
+            low, high = -high, -low
+        case "abs":
+            low, high = max(low, -high, 0), max(-low, high)
+        case "min":
+            low, high = min(low, args[1].low), min(high, args[1].high)
+        case "max":
+            low, high = max(low, args[1].low), max(high, args[1].high)
+        case "clamp":
+            least, most = args[1:]
+            low, high = (
+                max(min(least.low, most.low), min(low, most.low)),
+                min(max(least.high, most.high), max(high, least.high)),
+            )
+    return Scaled(op(f"i{name}", *(a.node for a in args), span=span), args[0].places, low, high)
+
+
+_SLACK = Fraction(1, 10**6)
+
+
+def _elementary(name: str, args: list[Scaled], span: Span) -> Scaled:
+    """An elementary function, on an interval inside its domain."""
+    low, high = _image(name, [(float(a.ends[0]), float(a.ends[1])) for a in args])
+    wide = [Fraction(low) - _SLACK * (1 + abs(Fraction(low))), Fraction(high) + _SLACK * (1 + abs(Fraction(high)))]
+    most = {"sin": 30, "cos": 30, "tanh": 30, "asin": 30, "acos": 29, "atan2": 29, "wrap": 29}.get(name, 62)
+
+    def make(places: int) -> Node:
+        shifts = [*(a.places for a in args), places]
+        return op(f"fixed_{name}", *(a.node for a in args), *map(integer, shifts), span=span)
+
+    return fitted(wide[0], wide[1], most, make)
+
+
+def _image(name: str, ends: list[tuple[float, float]]) -> tuple[float, float]:
+    """The interval of an elementary function's results."""
+    low, high = ends[0]
+    match name:
+        case "sqrt":
+            if low < 0:
+                raise Refused(f"sqrt() of a number that can be {low:.6g}")
+            return math.sqrt(low), math.sqrt(high)
+        case "log":
+            if low <= 0:
+                raise Refused(f"log() of a number that can be {low:.6g}")
+            return math.log(low), math.log(high)
+        case "exp":
+            if high > 40:
+                raise Refused(f"exp() of a number that can be {high:.6g}")
+            return math.exp(max(low, -700.0)), math.exp(high)
+        case "asin" | "acos":
+            if low < -1 or high > 1:
+                raise Refused(f"{name}() of a number between {low:.6g} and {high:.6g}")
+            return (-1.5707964, 1.5707964) if name == "asin" else (0.0, 3.1415927)
+        case "tan":
+            if low <= -1.57 or high >= 1.57:
+                raise Refused(f"tan() of an angle between {low:.6g} and {high:.6g}: pi/2 may be among them")
+            return math.tan(low), math.tan(high)
+        case "hypot":
+            return 0.0, math.hypot(*(max(-a, b) for a, b in ends))
+        case "atan2" | "wrap":
+            return -3.1415927, 3.1415927
+        case _:
+            return -1.0, 1.0

@@ -1,0 +1,147 @@
+"""Values in fixed point: an expression on raw integers, how many binary places it has, and between which raw values it lies.
+
+Places are chosen so that nothing overflows: a result gets as many as its operands give, and no more than its interval leaves
+room for. Intervals are exact fractions, so this is a proof, operation by operation.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from fractions import Fraction
+
+from hybgen.diag.span import Span
+from hybgen.expr.core import Const, Node, integer, op
+
+MOST = 2**31 - 1
+FINEST = 62
+COARSEST = -31
+
+
+class Refused(Exception):
+    """Internal: no scale fits, or the operation is not defined on the whole interval; the message says which."""
+
+
+@dataclass(frozen=True, slots=True)
+class Scaled:
+    """raw * 2**-places, low <= raw <= high."""
+
+    node: Node
+    """int"""
+    places: int
+    low: int
+    high: int
+
+    @property
+    def ends(self) -> tuple[Fraction, Fraction]:
+        """The interval of the value."""
+        unit = Fraction(2) ** -self.places
+        return self.low * unit, self.high * unit
+
+
+def room(largest: Fraction) -> int:
+    """The most places with which a magnitude stays below 2**31."""
+    if largest == 0:
+        return FINEST
+    places = 31 - (largest.numerator.bit_length() - largest.denominator.bit_length()) + 1
+    while largest * Fraction(2) ** places > MOST:
+        places -= 1
+    if places < COARSEST:
+        raise Refused(f"numbers up to {float(largest):.6g} have no room in 32 bits")
+    return min(places, FINEST)
+
+
+def raw(value: Fraction, places: int) -> int:
+    """The nearest raw value, ties to even."""
+    return round(value * Fraction(2) ** places)
+
+
+def fitted(low: Fraction, high: Fraction, most: int, make: Callable[[int], Node]) -> Scaled:
+    """A result in [low, high], with at most `most` places; `make` gives its node for the places chosen."""
+    places = min(most, room(max(abs(low), abs(high))))
+    return Scaled(make(places), places, raw(low, places), raw(high, places))
+
+
+def constant(value: Fraction, span: Span) -> Scaled:
+    """A constant: as few places as it needs to be exact, or as many as there is room for."""
+    places = room(abs(value))
+    exact = value.denominator.bit_length() - 1
+    if value.denominator == 1 << exact:
+        places = min(places, exact)
+    found = raw(value, places)
+    return Scaled(integer(found, span), places, found, found)
+
+
+def rescaled(x: Scaled, places: int, span: Span) -> Scaled:
+    """The same value with other places: rounded where there are fewer, held where there is no room."""
+    if x.places == places:
+        return x
+    low, high = (max(-MOST, min(MOST, raw(e, places))) for e in x.ends)
+    left = max(-FINEST, min(31, places - x.places))
+    if isinstance(x.node, Const):
+        return Scaled(integer(low, span), places, low, high)
+    return Scaled(op("fixed_scale", x.node, integer(left), span=span), places, low, high)
+
+
+def common(values: list[Scaled], span: Span) -> list[Scaled]:
+    """The values with the same places: the most that there is room for."""
+    largest = max(abs(e) for v in values for e in v.ends)
+    places = min(max(v.places for v in values), room(largest))
+    return [rescaled(v, places, span) for v in values]
+
+
+def added(a: Scaled, b: Scaled, minus: bool, span: Span) -> Scaled:
+    """a + b or a - b, rounded once; an operand that is more than 2**31 times finer than the other is rounded first."""
+    fine = min(a.places, b.places) + 31
+    a, b = (rescaled(x, fine, span) if x.places > fine else x for x in (a, b))
+    a, b = _joined(a, b, span), _joined(b, a, span)
+    (a_low, a_high), (b_low, b_high) = a.ends, b.ends
+    low, high = (a_low - b_high, a_high - b_low) if minus else (a_low + b_low, a_high + b_high)
+    top = max(a.places, b.places)
+
+    def make(places: int) -> Node:
+        if a.places == b.places == places:
+            return op("isub" if minus else "iadd", a.node, b.node, span=span)
+        other = op("ineg", b.node, span=span) if minus else b.node
+        shifts = (top - a.places, top - b.places, top - places)
+        return op("fixed_add", a.node, other, *map(integer, shifts), span=span)
+
+    return fitted(low, high, top, make)
+
+
+def _joined(x: Scaled, other: Scaled, span: Span) -> Scaled:
+    """A constant with the places of the other operand, where that loses nothing."""
+    finer = x.places < other.places <= room(abs(x.ends[0]))
+    return rescaled(x, other.places, span) if isinstance(x.node, Const) and finer else x
+
+
+def multiplied(a: Scaled, b: Scaled, span: Span) -> Scaled:
+    """a * b, rounded once."""
+    ends = [x * y for x in a.ends for y in b.ends]
+    whole = a.places + b.places
+
+    def make(places: int) -> Node:
+        return op("fixed_mul", a.node, b.node, integer(min(FINEST, whole - places)), span=span)
+
+    return fitted(min(ends), max(ends), whole, make)
+
+
+def divided(a: Scaled, b: Scaled, span: Span) -> Scaled:
+    """a / b, rounded once; b is not 0."""
+    if b.low <= 0 <= b.high:
+        raise Refused(f"the divisor can be 0: it lies between {float(b.ends[0]):.6g} and {float(b.ends[1]):.6g}")
+    ends = [x / y for x in a.ends for y in b.ends]
+
+    def make(places: int) -> Node:
+        return op("fixed_div", a.node, b.node, integer(max(-31, places - a.places + b.places)), span=span)
+
+    return fitted(min(ends), max(ends), a.places - b.places + 31, make)
+
+
+def ordered(name: str, a: Scaled, b: Scaled, span: Span) -> Node:
+    """A comparison of two values, exact whatever their places. Beyond 31 more places only the sign of the finer one counts."""
+    if a.places == b.places:
+        return op(name, a.node, b.node, span=span)
+    top = max(a.places, b.places)
+    shifts = [integer(min(31, top - x.places)) for x in (a, b)]
+    return op(name, op("fixed_order", a.node, b.node, *shifts, span=span), integer(0), span=span)
