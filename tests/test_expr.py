@@ -14,7 +14,7 @@ from hybgen.expr import units
 from hybgen.expr.constant import value_in
 from hybgen.expr.core import BOOL, INT, REAL, Kind, RefKind, Type
 from hybgen.expr.parser import parse
-from hybgen.expr.scope import Curve, Scope, Symbol
+from hybgen.expr.scope import Lookup, Scope, Symbol
 from hybgen.expr.show import show
 from hybgen.expr.tree import Binary, Call, Chain, Expr, Item, Logic, Name, Number, Truth, Unary, Vector
 from hybgen.expr.typed import Typed, Want, typed
@@ -49,7 +49,10 @@ SCOPE = Scope(
             Symbol(RefKind.STATE, "speed", REAL, unit=units.parse("mm/s")),
         )
     },
-    {"curve": Curve("curve", units.parse("V"), units.parse("degC"))},
+    {
+        "curve": Lookup("curve", (units.parse("V"),), units.parse("degC")),
+        "map": Lookup("map", (units.parse("V"), units.parse("degC")), units.parse("N")),
+    },
     ("start",),
 )
 

@@ -11,7 +11,7 @@ from typing import Any
 
 from hybgen.emit.helpers import helper, lookups
 from hybgen.emit.text import Writer, comment, constant, ctype
-from hybgen.ir.model import Apply, Function, Member, Program
+from hybgen.ir.model import LOOKUPS, Apply, Function, Member, Program
 from hybgen.ir.walk import all_values
 
 STATUS = (
@@ -140,7 +140,7 @@ class _Pages:
         tables = frozenset(
             v.table for f in program.functions for v in all_values(f.body) if isinstance(v, Apply) and v.table
         )
-        helpers = [helper(h, program) for h in program.helpers if h != "lookup"] + lookups(program, tables)
+        helpers = [helper(h, program) for h in program.helpers if h not in LOOKUPS] + lookups(program, tables)
         return {
             "name": program.name,
             "upper": program.name.upper(),

@@ -105,7 +105,7 @@ class Writer:
             return f"({self.inner(args[0])} ? {self.inner(args[1])} : {self.inner(args[2])})"
         if value.op == "to_real":
             return f"({self.program.real}){self.inner(args[0])}"
-        name = value.table if value.op == "lookup" else f"{self.program.name}_{value.op}"
+        name = value.table or f"{self.program.name}_{value.op}"
         return f"{name}({', '.join(self.value(a) for a in args)})"
 
     def block(self, body: Sequence[Statement], depth: int) -> Iterator[str]:

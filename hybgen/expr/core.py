@@ -95,7 +95,7 @@ class Ref:
 
 @dataclass(frozen=True, slots=True)
 class Op:
-    """An operation of the table OPS; `table` names the curve of a lookup."""
+    """An operation of the table OPS; `table` names the table of a lookup."""
 
     op: str
     args: tuple[Node, ...]
@@ -140,6 +140,12 @@ OPS: dict[str, Row] = {
         Row("sign", ("real",), "real", "1 if a > 0 else (-1 if a < 0 else 0)"),
         Row("floor", ("real",), "real", "largest whole number <= a; a itself where |a| has no fraction bits"),
         Row("lookup", ("real",), "real", "linear between the points of a table, held beyond its ends"),
+        Row(
+            "lookup2",
+            ("real", "real"),
+            "real",
+            "bilinear between the points of a table of two inputs, held beyond them",
+        ),
         Row("iadd", ("int", "int"), "int", "a + b, never beyond 32 bits (checked by bounds)"),
         Row("isub", ("int", "int"), "int", "a - b"),
         Row("imul", ("int", "int"), "int", "a * b"),

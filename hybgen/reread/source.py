@@ -8,7 +8,10 @@ from __future__ import annotations
 
 import re
 from dataclasses import dataclass
+from fractions import Fraction
 from typing import Any
+
+from hybgen.numbers.format import Format
 
 _TYPES = """typedef _Bool bool; typedef int int32_t; typedef unsigned int uint32_t; typedef unsigned char uint8_t;
 typedef long long int64_t; typedef unsigned long size_t;
@@ -22,8 +25,8 @@ class Source:
     functions: dict[str, Any]
     initial: dict[str, Any]
     """Initialisers of constants, by name."""
-    arrays: dict[str, int]
-    """Declared lengths of constant arrays, by name."""
+    arrays: dict[str, tuple[str, tuple[int, ...]]]
+    """Type and declared lengths of constant arrays, by name."""
     structs: dict[str, list[tuple[str, str, int | None]]]
     """Members of the structs: name, type, length of an array."""
     macros: dict[str, int]
@@ -44,9 +47,7 @@ def parse(header: str, body: str) -> Source:
     functions = {n.decl.name: n for n in unit.ext if isinstance(n, c_ast.FuncDef)}
     initial = {n.name: n.init for n in unit.ext if isinstance(n, c_ast.Decl) and n.init is not None}
     arrays = {
-        n.name: int(n.type.dim.value)
-        for n in unit.ext
-        if isinstance(n, c_ast.Decl) and isinstance(n.type, c_ast.ArrayDecl)
+        n.name: _array(n.type) for n in unit.ext if isinstance(n, c_ast.Decl) and isinstance(n.type, c_ast.ArrayDecl)
     }
     structs: dict[str, list[tuple[str, str, int | None]]] = {}
     enumerators: dict[str, tuple[str, int]] = {}
@@ -57,6 +58,14 @@ def parse(header: str, body: str) -> Source:
             for row in node.type.type.values.enumerators:
                 enumerators[row.name] = (node.name, int(row.value.value))
     return Source(functions, initial, arrays, structs, macros, enumerators)
+
+
+def _array(node: Any) -> tuple[str, tuple[int, ...]]:
+    """Type and lengths of an array of arrays."""
+    if type(node).__name__ != "ArrayDecl":
+        return " ".join(node.type.names), ()
+    inner, lengths = _array(node.type)
+    return inner, (int(node.dim.value), *lengths)
 
 
 def _member(node: Any) -> tuple[str, str, int | None]:
@@ -92,3 +101,25 @@ def body_of(statements: str, law: str) -> Any:
 
     text = f"{_TYPES}typedef int {law}_parameters; typedef int {law}_now; void f(void) {{ {statements} }}"
     return c_parser.CParser().parse(text).ext[-1].body
+
+
+def function_of(text: str) -> Any:
+    """The syntax tree of a function of plain types."""
+    from pycparser import c_parser
+
+    return c_parser.CParser().parse(_TYPES + text).ext[-1]
+
+
+def numbers(node: Any, fmt: Format) -> list[Fraction]:
+    """The constants of an initialiser, nested lists flattened."""
+    match type(node).__name__:
+        case "InitList":
+            return [v for item in node.exprs for v in numbers(item, fmt)]
+        case "UnaryOp":
+            return [-v for v in numbers(node.expr, fmt)]
+        case "ID":
+            return [Fraction(node.name == "true")]
+        case _:
+            text = node.value
+            value = Fraction(text.rstrip("fu"))
+            return [fmt.round(value) if node.type in ("float", "double") else value]
