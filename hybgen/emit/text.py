@@ -94,7 +94,10 @@ class Writer:
     def _operation(self, value: Apply) -> str:
         args = value.args
         if value.op in INFIX:
-            return f"({f' {INFIX[value.op]} '.join(self.inner(a) for a in args)})"
+            pieces = [self.inner(a) for a in args]
+            if value.op in ("eq", "ne") and isinstance(args[0], Apply) and args[0].op == "not":
+                pieces[0] = f"({pieces[0]})"  # compilers take !a == b for a slip
+            return f"({f' {INFIX[value.op]} '.join(pieces)})"
         if value.op in PREFIX:
             return (
                 f"{PREFIX[value.op]}{self.inner(args[0])}"

@@ -39,7 +39,11 @@ def _table(table: Table | Grid, translator: Translator) -> StepTable | StepGrid:
         return tuple(translator.rounded(v, table.span) for v in values)
 
     values = _values(table)
-    rounded((2 * (max(values) - min(values)),))  # so no difference, and no product with a part of the way, overflows
+    if 2 * (max(values) - min(values)) > translator.format.max:  # twice: rounding never makes a difference too large
+        message = (
+            f"the values of '{table.name}' are too far apart: {translator.format.name} can't hold their difference"
+        )
+        translator.findings.error("HG401", table.span, message, hint="use float64, or another unit")
     x, y = rounded(table.x), rounded(table.y)
     match table:
         case Table():
@@ -75,8 +79,10 @@ def _slopes(
 
 def _inside(slope: Fraction, width: Fraction, rise: Fraction, fmt: Format) -> Fraction:
     """The slope, or the next one towards zero where its rounded product with the width is beyond the rounded rise."""
-    top = fmt.round(abs(rise))
     size = abs(slope)
+    if max(abs(rise), size * width) > fmt.max:
+        return slope  # a finding has told that
+    top = fmt.round(abs(rise))
     if fmt.round(size * width) > top:
         size = fmt.round(size * (1 - Fraction(1, 2 ** (fmt.precision + 1))), Rounding.DOWN)
         assert fmt.round(size * width) <= top, (slope, width, rise)
