@@ -23,6 +23,7 @@ from hybgen.reference.ops import lookup
 from hybgen.reread import reread
 from hybgen.step import StepLaw, build
 from hybgen.step.model import Status, StepGrid, StepTable
+from hybgen.step.tables import table_range
 from tests.conftest import law_of, run_both
 from tests.test_reread import mutants
 
@@ -151,6 +152,18 @@ def test_random_tables_are_bilinear_and_stay_near_their_corners(number: str) -> 
         assert (found >= corners.min(axis=0) - 8 * unit * size).all()
         seen += count
     assert seen > 5000
+
+
+@pytest.mark.parametrize("number", NUMBERS)
+def test_every_value_is_in_the_range_that_guards_count_on(number: str) -> None:
+    fmt, dice = FORMATS[number], np.random.default_rng(4)
+    for made, t in random_tables(number, 200):
+        known = table_range(next(d for d in made.law.tables if d.name == t.name))
+        samples = [
+            around(numbers(points), dice, fmt.dtype, 100) for points in (t.x, t.y)[: 1 + isinstance(t, StepGrid)]
+        ]
+        found = lookup(t, fmt)(*(s[: min(map(len, samples))] for s in samples)).astype(float)
+        assert len(found) > 50 and known.low <= found.min() and found.max() <= known.high
 
 
 @pytest.mark.parametrize("number", NUMBERS)

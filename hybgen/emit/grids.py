@@ -51,15 +51,16 @@ def grid(table: Grid, program: Program) -> str:
         _array(table, "per_x", table.per_x, program),
         _array(table, "per_y", table.per_y, program),
     ]
-    return _GRID.format(
+    text = _GRID.format(
         note=comment(table.note),
-        arrays="\n".join(piece for line in arrays for piece in wrapped(line)),
+        arrays="\n".join(arrays),
         type=program.real,
         name=table.name,
         zero=real_literal(Fraction(0), program),
         along_x=_ALONG.format(i="i", x="x", s="s", last=n - 1, name=table.name),
         along_y=_ALONG.format(i="j", x="y", s="t", last=m - 1, name=table.name),
     )
+    return "\n".join(piece for line in text.split("\n") for piece in wrapped(line))
 
 
 def _numbers(values: Sequence[Fraction], program: Program) -> str:
