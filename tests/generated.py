@@ -46,6 +46,10 @@ COLLIDING = """
       read: {x: [0, 1], y: [0, 1]}
       defaults: {x: [0, 1], y: [1, 0]}
       isign: {x: [0, 1], y: [0.25, 1]}
+      lift: {x: [0, 1], y: [0, 1, 2], z: [[0, 1, 2], [3, 4, 0]]}
+      lift_per: {x: [0, 1], y: [1, 2]}
+      lift_z: {x: [0, 1], y: [1, 2]}
+      lookup2: {x: [0, 1], y: [0, 1], z: [[0, 1], [1, 0]]}
     states:
       inputs: {logic: [run, RUN, stop]}
       STATUS: {logic: [stuck, STUCK, invalid_input]}
@@ -73,6 +77,8 @@ COLLIDING = """
       text: {value: "read(now) + defaults(now) + isign(u) + sign(now - u) + new_drive + floor(x * raft_step)"}
       i: {value: inputs}
       a: {type: bool, value: jumped(go) or valid(u)}
+      lifted: {value: "lift(u, 2 * now) + lift_per(u) - lift_z(now) * lookup2(now, u)"}
+      b: {type: bool, value: (not status) == (u > 0.5)}
 """
 
 HOSTILE = r"""

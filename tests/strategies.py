@@ -70,7 +70,7 @@ class Author:
             case 13:
                 return self.elementary(a, b)
             case 12:
-                return f"{self.pick(n.tables)}({a})" if n.tables else f"({a})**2"
+                return self.lookup(a, b) if n.tables else f"({a})**2"
             case _:
                 return f"(0.5 * {a})"
 
@@ -259,25 +259,28 @@ class Author:
             n.reals += ["w[0]", "w[1]"]
         self.section("states", rows)
 
+    def lookup(self, a: str, b: str) -> str:
+        name = self.pick(self.names.tables)
+        return f"{name}({a}, {b})" if name == "map" else f"{name}({a})"
+
     def tables(self) -> None:
+        rows = ["  curve: {x: [0, 0.5, 1, 2], y: [0, 1, 0.3, 0.9]}"] if self.some(0.3) else []
         if self.some(0.3):
-            self.section("tables", ["  curve: {x: [0, 0.5, 1, 2], y: [0, 1, 0.3, 0.9]}"])
-            self.names.tables.append("curve")
+            x, y = [-1, 0.1, 0.5, 2][: self.dice.randint(2, 4)], [-0.7, 0, 1.3, 4][-self.dice.randint(2, 4) :]
+            z = [[self.dice.choice([0, 0.3, -1, 0.9, 2.5]) for _ in y] for _ in x]
+            rows.append(f"  map: {{x: {x}, y: {y}, z: {z}}}")
+        self.section("tables", rows)
 
     def terms(self) -> None:
-        rows, fresh = [], Names()
-        tables = ["curve"] if any("curve:" in line for line in self.lines) else []
-        self.names.tables = tables
+        rows = []
+        self.names.tables = [name for name in ("curve", "map") if self.declared(name)]
         for i in range(self.dice.randint(0, 3)):
             if self.some(0.7):
                 rows.append(f'  t{i}: {{value: "{self.real(2)} + 0.0"}}')
-                fresh.reals.append(f"t{i}")
+                self.names.reals.append(f"t{i}")
             else:
                 rows.append(f'  c{i}: {{value: "{self.boolean(1)}"}}')
-                fresh.bools.append(f"c{i}")
-            self.names.reals += fresh.reals
-            self.names.bools += fresh.bools
-            fresh = Names()
+                self.names.bools.append(f"c{i}")
         self.section("terms", rows)
 
     def declared(self, prefix: str) -> bool:

@@ -16,6 +16,7 @@ from hybgen.diag.finding import LawError
 from hybgen.diag.render import render
 from hybgen.law import read
 from hybgen.pipeline import generate
+from hybgen.reference import Reference
 from tests.conftest import ROOT
 
 README = (ROOT / "README.md").read_text(encoding="utf-8")
@@ -54,6 +55,15 @@ def test_the_python_runs(monkeypatch: pytest.MonkeyPatch) -> None:
     names: dict[str, object] = {}
     exec(next(text for kind, text in BLOCKS if kind == "python"), names)
     assert names["y"] == {"drive": True}
+
+
+def test_the_table_of_two_inputs_is_what_it_says() -> None:
+    shown = next(text for kind, text in BLOCKS if kind == "yaml" and text.startswith("tables:"))
+    inputs = "inputs: {speed: {unit: m/s, range: [0, 2]}, battery: {unit: V, range: [9, 15]}}\n"
+    outputs = 'outputs: {push: {unit: N, value: "thrust(speed, battery)"}}\n'
+    twin = Reference(read(f"law: raft\nstep: 1 s\n{inputs}{shown}{outputs}".encode(), "raft.yaml"))
+    for speed, battery, push in ((0, 12, 20), (0.5, 15, 23), (0.25, 11, (10 + 20 + 8 + 17) / 4)):
+        assert twin.step({"speed": speed, "battery": battery}) == {"push": push}
 
 
 def test_every_command_is_listed() -> None:

@@ -14,7 +14,7 @@ from hybgen.expr import units
 from hybgen.expr.constant import value_in
 from hybgen.expr.core import BOOL, INT, REAL, Kind, RefKind, Type
 from hybgen.expr.parser import parse
-from hybgen.expr.scope import Curve, Scope, Symbol
+from hybgen.expr.scope import Lookup, Scope, Symbol
 from hybgen.expr.show import show
 from hybgen.expr.tree import Binary, Call, Chain, Expr, Item, Logic, Name, Number, Truth, Unary, Vector
 from hybgen.expr.typed import Typed, Want, typed
@@ -49,7 +49,10 @@ SCOPE = Scope(
             Symbol(RefKind.STATE, "speed", REAL, unit=units.parse("mm/s")),
         )
     },
-    {"curve": Curve("curve", units.parse("V"), units.parse("degC"))},
+    {
+        "curve": Lookup("curve", (units.parse("V"),), units.parse("degC")),
+        "map": Lookup("map", (units.parse("V"), units.parse("degC")), units.parse("N")),
+    },
     ("start",),
 )
 
@@ -114,6 +117,14 @@ def test_unit_scales_are_exact() -> None:
         ("valid(armed)", ["HG215"]),
         ("jumped(stop)", ["HG215"]),
         ("sqrt(limit)", ["HG190"]),
+        ("map(gain * level)", ["HG207"]),
+        ("curve(gain * level, warm)", ["HG207"]),
+        ("map(level, warm)", ["HG202"]),
+        ("map(gain * level, 5 K)", ["HG202"]),
+        ("map(levl, wram)", ["HG201", "HG201"]),
+        ("map(pull, warm)", ["HG208"]),
+        ("map(gain * level, armed)", ["HG204"]),
+        ("map > 0 N", ["HG201"]),
         ("armed + 1", ["HG204"]),
         ("not level", ["HG204"]),
         ("mode == walk", ["HG201"]),
@@ -135,6 +146,8 @@ def test_mistakes_have_codes(text: str, codes: list[str]) -> None:
         ("warm - 25 degC", REAL, "K"),
         ("warm + 2 K", REAL, "degC"),
         ("curve(gain * level)", REAL, "degC"),
+        ("map(gain * level, warm)", REAL, "N"),
+        ("map(0, curve(gain * level))", REAL, "N"),
         ("pulses + 1", INT, "1"),
         ("pulses + 0.5", REAL, "1"),
         ("pulses >= limit", BOOL, "1"),
@@ -207,7 +220,7 @@ def _grow(inner: st.SearchStrategy[Expr]) -> st.SearchStrategy[Expr]:
         several.flatmap(lambda o: st.builds(Chain, st.tuples(*[signs] * (len(o) - 1)), st.just(o))),
         st.builds(Logic, st.sampled_from(["and", "or"]), several),
         st.builds(lambda b, i: Item(b, (Number(Fraction(i), None, str(i)),)), inner, st.integers(0, 9)),
-        st.builds(Call, st.sampled_from(["min", "curve"]), few),
+        st.builds(Call, st.sampled_from(["min", "curve", "map"]), few),
         st.builds(Vector, few),
     )
 

@@ -7,7 +7,7 @@ that is no number are left open (no law stores one).
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass, replace
 from fractions import Fraction
 from functools import cache
@@ -29,7 +29,9 @@ from hybgen.numbers.format import FLOAT32, FORMATS, Format
 from hybgen.reference.ops import lookup, operations
 from hybgen.sil.chip import Chip, struct
 from hybgen.step import build
-from hybgen.step.model import StepLaw, StepOutput, StepTable
+from hybgen.step.model import StepGrid, StepLaw, StepOutput, StepTable
+
+Tables = dict[str, StepTable | StepGrid]
 
 Array = NDArray[Any]
 Lanes = dict[str, Array]
@@ -39,6 +41,8 @@ step: 1 s
 tables:
   curve: {x: [-1, 0.1, 2.5, 7], y: [0.3, -2, 1e6, 0.7]}
   ramp: {x: [-1, 3], y: [0.3, 0.1]}
+  map: {x: [-1, 0.1, 2.5, 7], y: [-3, 0.5, 1.5], z: [[0.3, -2, 1e6], [0.7, 0, 0.1], [1, 1, 1], [-1e-3, 5, 0.3]]}
+  patch: {x: [-1, 3], y: [0.1, 2], z: [[0.3, 0.1], [-0.7, 2]]}
 states:
   real_a: {range: [-1, 1]}
   real_b: {range: [-1, 1]}
@@ -156,7 +160,7 @@ class Bench:
 
     def apply(self, row: Row, args: tuple[Node, ...]) -> Op:
         gives = {"real": REAL, "int": INT, "bool": BOOL, "any": args[-1].type}[row.gives]
-        return Op(row.name, args, gives, "curve" if row.name == "lookup" else "")
+        return Op(row.name, args, gives, {"lookup": "curve", "lookup2": "map"}.get(row.name, ""))
 
     def direct(self) -> Iterator[Op]:
         """Each row on plain operands, in every kind that it takes; each table."""
@@ -167,6 +171,7 @@ class Bench:
                 places = (1, 0) if enum_first else range(len(kinds))
                 yield self.apply(row, tuple(self.operand(k, i, small) for k, i in zip(kinds, places, strict=True)))
         yield Op("lookup", (self.operand("real", 0, False),), REAL, "ramp")
+        yield Op("lookup2", (self.operand("real", 2, False), self.operand("real", 0, False)), REAL, "patch")
 
     def nested(self) -> Iterator[Op]:
         """Each row with each row as its first, second, third operand: what parentheses can break."""
@@ -208,7 +213,43 @@ class Bench:
 # ---------------------------------------------------------------------------------------------------- what they mean
 
 
-def special_meaning(name: str, fmt: Format, tables: dict[str, StepTable], table: str) -> Callable[..., Any] | None:
+def table_meaning(table: StepTable | StepGrid, fmt: Format) -> Callable[..., Any]:
+    """What the step law says of a table, number by number."""
+    real = fmt.dtype.type
+
+    def exact(values: Sequence[Fraction]) -> list[Any]:
+        return [real(float(v)) for v in values]
+
+    def cell(points: list[Any], u: Any) -> int | None:
+        """The last point that is not above u; None where the table holds its end."""
+        outside = u <= points[0] or u >= points[-1]
+        return None if outside else max((k for k in range(len(points)) if points[k] <= u), default=0)
+
+    def curve(u: Any) -> Any:
+        assert isinstance(table, StepTable)
+        x, y, slope = exact(table.x), exact(table.y), exact(table.slope)
+        if (i := cell(x, u)) is None:
+            return y[0] if u <= x[0] else y[-1]
+        return y[i] + slope[i] * (u - x[i])
+
+    def part(points: list[Any], inverses: list[Any], u: Any) -> tuple[int, int, Any]:
+        if (i := cell(points, u)) is None:
+            end = 0 if u <= points[0] else len(points) - 1
+            return end, end, real(0)
+        return i, i + 1, (u - points[i]) * inverses[i]
+
+    def grid(u: Any, v: Any) -> Any:
+        assert isinstance(table, StepGrid)
+        i, k, s = part(exact(table.x), exact(table.per_x), u)
+        j, m, t = part(exact(table.y), exact(table.per_y), v)
+        z = [exact(row) for row in table.z]
+        low, high = z[i][j] + s * (z[k][j] - z[i][j]), z[i][m] + s * (z[k][m] - z[i][m])
+        return low + t * (high - low)
+
+    return curve if isinstance(table, StepTable) else grid
+
+
+def special_meaning(name: str, fmt: Format) -> Callable[..., Any] | None:
     """Rows whose column `means` is prose: the same in Python, from the contract, number by number."""
     real, largest = fmt.dtype.type, float(fmt.max)
 
@@ -222,16 +263,6 @@ def special_meaning(name: str, fmt: Format, tables: dict[str, StepTable], table:
             return 2**31 - 1
         return int(a) + bool(a - real(int(a)) > a * real(2.0 ** (3 - fmt.precision)))
 
-    def look(x: Any) -> Any:
-        t = tables[table]
-        xs, ys, slopes = ([real(float(v)) for v in row] for row in (t.x, t.y, t.slope))
-        if math.isnan(x):
-            return x
-        if x <= xs[0] or x >= xs[-1]:
-            return ys[0] if x <= xs[0] else ys[-1]
-        i = max(k for k in range(len(xs)) if xs[k] <= x)
-        return ys[i] + slopes[i] * (x - xs[i])
-
     def elementary(*args: Any) -> Any:
         word = np.uint32 if fmt is FLOAT32 else np.uint64
         found = exact(kernel(name, fmt.name), *(int(np.asarray(a).view(word)) for a in args))
@@ -240,7 +271,6 @@ def special_meaning(name: str, fmt: Format, tables: dict[str, StepTable], table:
     return {
         **dict.fromkeys(ELEMENTARY, elementary),
         "floor": floor,
-        "lookup": look,
         "to_steps": to_steps,
         "finite": lambda a: -largest <= a <= largest,
         "to_real": lambda a: real(float(fmt.round(Fraction(int(a))))),
@@ -249,9 +279,9 @@ def special_meaning(name: str, fmt: Format, tables: dict[str, StepTable], table:
     }.get(name)
 
 
-def meaning(op: Op, fmt: Format, tables: dict[str, StepTable]) -> Callable[..., Any]:
+def meaning(op: Op, fmt: Format, tables: Tables) -> Callable[..., Any]:
     """The function of an operation; from the table's own words wherever they are an expression."""
-    special = special_meaning(op.op, fmt, tables, op.table)
+    special = table_meaning(tables[op.table], fmt) if op.table else special_meaning(op.op, fmt)
     if special is not None:
         return special
     words = OPS[op.op].means.split(",")[0].split(";")[0]
@@ -291,7 +321,7 @@ def dtype(type_: Type, fmt: Format) -> np.dtype[Any]:
     return {"real": fmt.dtype, "bool": np.dtype(bool)}.get(type_.kind, np.dtype(np.int32))
 
 
-def in_numpy(node: Node, values: Lanes, fmt: Format, tables: dict[str, StepTable]) -> Array:
+def in_numpy(node: Node, values: Lanes, fmt: Format, tables: Tables) -> Array:
     """An expression by the reference's operations."""
     count = len(values["mode"])
     if isinstance(node, Const):
@@ -299,7 +329,7 @@ def in_numpy(node: Node, values: Lanes, fmt: Format, tables: dict[str, StepTable
     if isinstance(node, Ref):
         return values[node.name]
     args = [in_numpy(a, values, fmt, tables) for a in node.args]
-    function = lookup(tables[node.table], fmt) if node.op == "lookup" else operations(fmt)[node.op]
+    function = lookup(tables[node.table], fmt) if node.table else operations(fmt)[node.op]
     return np.asarray(function(*args))
 
 

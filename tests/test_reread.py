@@ -34,14 +34,16 @@ EVERYTHING = """
       tries: {count: 7}
       x: {range: [-3, 3], limit: true}
       y: {range: [-3, 3]}
-    tables: {curve: {x: [0, 0.5, 1], y: [1, 3, 2]}}
+    tables:
+      curve: {x: [0, 0.5, 1], y: [1, 3, 2]}
+      map: {x: [0, 0.5, 1], y: [-1, 2], z: [[1, 3], [2, 0.5], [4, 0.1]]}
     terms: {e: u - k * x, hot: e > 0.1}
     flow:
       set: mode != stop or go
       map:
         x:
           - when: mode == run
-            is: (curve(u) - x) / (2 s)
+            is: "(curve(u) - map(u, v[1]) * x) / (2 s)"
           - otherwise: 0
         y: y * y * k / (1 s)
     sample: {tries: "choose(jumped(begin), tries + 1, tries)"}

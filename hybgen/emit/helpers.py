@@ -4,8 +4,9 @@ from __future__ import annotations
 
 from fractions import Fraction
 
+from hybgen.emit.grids import grid
 from hybgen.emit.text import comment, real_literal
-from hybgen.ir.model import Program
+from hybgen.ir.model import Grid, Program, Table
 
 _PAIR = "static {type} {name}({type} a, {type} b)\n{{\n    return (b {sign} a) ? b : a;\n}}"
 _CLAMP = (
@@ -89,7 +90,9 @@ def lookups(program: Program, used: frozenset[str]) -> list[str]:
     """The C of the tables that are used."""
     made = []
     for t in program.tables:
-        if t.name in used:
+        if t.name in used and isinstance(t, Grid):
+            made.append(grid(t, program))
+        elif t.name in used and isinstance(t, Table):
             rows = {k: ", ".join(real_literal(v, program) for v in getattr(t, k)) for k in ("x", "y", "slope")}
             n = len(t.x)
             search = _SEARCH.format(name=t.name, last=n - 2) if n > 2 else ""

@@ -12,7 +12,7 @@ from typing import Any
 from hybgen.emit.helpers import helper, lookups
 from hybgen.emit.kernels import functions
 from hybgen.emit.text import Writer, comment, constant, ctype
-from hybgen.ir.model import Apply, Function, Member, Program
+from hybgen.ir.model import LOOKUPS, Apply, Function, Member, Program
 from hybgen.ir.walk import all_values
 
 STATUS = (
@@ -141,7 +141,7 @@ class _Pages:
         tables = frozenset(
             v.table for f in program.functions for v in all_values(f.body) if isinstance(v, Apply) and v.table
         )
-        helpers = [helper(h, program) for h in program.helpers if h != "lookup"]
+        helpers = [helper(h, program) for h in program.helpers if h not in LOOKUPS]
         helpers += [*functions(program.kernels, program), *lookups(program, tables)]
         return {
             "name": program.name,

@@ -94,7 +94,10 @@ class Writer:
     def _operation(self, value: Apply) -> str:
         args = value.args
         if value.op in INFIX:
-            return f"({f' {INFIX[value.op]} '.join(self.inner(a) for a in args)})"
+            pieces = [self.inner(a) for a in args]
+            if value.op in ("eq", "ne") and isinstance(args[0], Apply) and args[0].op == "not":
+                pieces[0] = f"({pieces[0]})"  # compilers take !a == b for a slip
+            return f"({f' {INFIX[value.op]} '.join(pieces)})"
         if value.op in PREFIX:
             return (
                 f"{PREFIX[value.op]}{self.inner(args[0])}"
@@ -105,7 +108,7 @@ class Writer:
             return f"({self.inner(args[0])} ? {self.inner(args[1])} : {self.inner(args[2])})"
         if value.op == "to_real":
             return f"({self.program.real}){self.inner(args[0])}"
-        name = value.table if value.op == "lookup" else f"{self.program.name}_{value.op}"
+        name = value.table or f"{self.program.name}_{value.op}"
         return f"{name}({', '.join(self.value(a) for a in args)})"
 
     def block(self, body: Sequence[Statement], depth: int) -> Iterator[str]:

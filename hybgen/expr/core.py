@@ -95,7 +95,7 @@ class Ref:
 
 @dataclass(frozen=True, slots=True)
 class Op:
-    """An operation of the table OPS; `table` names the curve of a lookup."""
+    """An operation of the table OPS; `table` names the table of a lookup."""
 
     op: str
     args: tuple[Node, ...]
@@ -152,6 +152,12 @@ OPS: dict[str, Row] = {
         Row("hypot", ("real", "real"), "real", "square root of a^2 + b^2"),
         Row("wrap", ("real",), "real", "the angle in radians less whole turns, in (-pi, pi]"),
         Row("lookup", ("real",), "real", "linear between the points of a table, held beyond its ends"),
+        Row(
+            "lookup2",
+            ("real", "real"),
+            "real",
+            "bilinear between the points of a table of two inputs, held beyond them",
+        ),
         Row("iadd", ("int", "int"), "int", "a + b, never beyond 32 bits (checked by bounds)"),
         Row("isub", ("int", "int"), "int", "a - b"),
         Row("imul", ("int", "int"), "int", "a * b"),

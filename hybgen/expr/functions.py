@@ -12,7 +12,7 @@ from hybgen.expr.algebra import bounds_of, numeric, stop, sum_products
 from hybgen.expr.constant import PI
 from hybgen.expr.core import INT, REAL, Const, Kind, op
 from hybgen.expr.quantity import Typed, describe, fit_unit, shape_words, to_integers, to_reals
-from hybgen.expr.scope import Curve
+from hybgen.expr.scope import Lookup
 from hybgen.expr.units import ONE, Unit
 
 Apply = Callable[[list[Typed], Span, Findings], Typed]
@@ -196,14 +196,16 @@ def _times(a: Typed, b: Typed, span: Span, findings: Findings) -> Unit:
     return a.unit * b.unit
 
 
-def lookup(curve: Curve, value: Typed, span: Span, findings: Findings) -> Typed:
-    """curve(value)."""
-    (value,) = scalars([value], f"{curve.name}()", findings)
-    value = fit_unit(to_reals(value), curve.x_unit, f"the input of {curve.name}()", findings)
-    node = op("lookup", value.nodes[0], span=span, table=curve.name)
-    return Typed(
-        (node,), REAL, unit=curve.y_unit, names=value.names | {curve.name}, uses_jumped=value.uses_jumped, span=span
-    )
+def lookup(table: Lookup, values: list[Typed], span: Span, findings: Findings) -> Typed:
+    """curve(u), or map(u, v): as many values as the table has inputs."""
+    words = ["the input"] if len(table.takes) == 1 else ["the first input", "the second input"]
+    values = [
+        fit_unit(to_reals(value), unit, f"{word} of {table.name}()", findings)
+        for value, unit, word in zip(scalars(values, f"{table.name}()", findings), table.takes, words, strict=True)
+    ]
+    node = op("lookup" if len(values) == 1 else "lookup2", *(v.nodes[0] for v in values), span=span, table=table.name)
+    merged = gathered(values, span)
+    return replace(merged, nodes=(node,), type=REAL, unit=table.gives, names=merged.names | {table.name})
 
 
 def stack(items: list[Typed], span: Span, findings: Findings) -> Typed:

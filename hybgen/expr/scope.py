@@ -32,12 +32,12 @@ class Symbol:
 
 
 @dataclass(frozen=True, slots=True)
-class Curve:
-    """A table as a function of one input."""
+class Lookup:
+    """A table as a function: the units of its inputs (one or two) and of its value."""
 
     name: str
-    x_unit: Unit
-    y_unit: Unit
+    takes: tuple[Unit, ...]
+    gives: Unit
 
 
 @dataclass(frozen=True, slots=True)
@@ -45,7 +45,7 @@ class Scope:
     """The names that an expression may use; `allow` says which kinds, VALID and JUMPED included."""
 
     symbols: Mapping[str, Symbol]
-    tables: Mapping[str, Curve] = field(default_factory=dict)
+    tables: Mapping[str, Lookup] = field(default_factory=dict)
     jumps: tuple[str, ...] = ()
     allow: frozenset[RefKind] = frozenset(RefKind)
     place: str = "here"

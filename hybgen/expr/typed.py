@@ -220,7 +220,7 @@ class _Checker:
                 f"compare it: {owners[0]} == {name}",
             )
         if name in self.scope.tables:
-            return self.stop("HG201", span, f"'{name}' is a table", f"write {name}(...) with its input")
+            return self.stop("HG201", span, f"'{name}' is a table", f"write {name}(...) with what it takes")
         close = nearest(name, self.scope.symbols)
         return self.stop("HG201", span, f"unknown name '{name}'", f"did you mean '{close}'?" if close else None)
 
@@ -281,8 +281,9 @@ class _Checker:
                 self.arity(expr, 3, 3)
                 return self.cases(Cases(((expr.args[0], expr.args[1]),), expr.args[2], expr.span), want)
         if name in self.scope.tables:
-            self.arity(expr, 1, 1)
-            return functions.lookup(self.scope.tables[name], self.value(expr.args[0]), expr.span, self.findings)
+            table = self.scope.tables[name]
+            self.arity(expr, len(table.takes), len(table.takes))
+            return functions.lookup(table, self.all(expr.args), expr.span, self.findings)
         row = _FUNCTIONS.get(name)
         if row is None:
             close = nearest(name, function_names() | set(self.scope.tables))

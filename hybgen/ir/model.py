@@ -39,7 +39,7 @@ class Field:
 
 @dataclass(frozen=True, slots=True)
 class Apply:
-    """An operation of OPS on operands."""
+    """An operation of OPS on operands; a look-up names its table."""
 
     op: str
     args: tuple[Value, ...]
@@ -77,6 +77,7 @@ HELPERS = frozenset(
         "sign",
         "floor",
         "lookup",
+        "lookup2",
         "to_steps",
         "finite",
         "iabs",
@@ -180,6 +181,23 @@ class Table:
 
 
 @dataclass(frozen=True, slots=True)
+class Grid:
+    """A table of two inputs: points, values (a row for each x), inverses of the distances between points."""
+
+    name: str
+    x: tuple[Fraction, ...]
+    y: tuple[Fraction, ...]
+    z: tuple[tuple[Fraction, ...], ...]
+    per_x: tuple[Fraction, ...]
+    per_y: tuple[Fraction, ...]
+    note: str
+
+
+LOOKUPS: dict[str, type[Table | Grid]] = {"lookup": Table, "lookup2": Grid}
+"""The operations that read a table, and what kind of table."""
+
+
+@dataclass(frozen=True, slots=True)
 class Function:
     """A static function: its body, and which of self, p, u, now, y it reads or writes."""
 
@@ -229,7 +247,7 @@ class Program:
     rules: tuple[str, ...]
     jumps: tuple[Jump, ...]
     jumps_per_step: int
-    tables: tuple[Table, ...]
+    tables: tuple[Table | Grid, ...]
     helpers: tuple[str, ...]
     kernels: tuple[str, ...]
     """The kernels that are used, by their operations."""

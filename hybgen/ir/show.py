@@ -13,6 +13,7 @@ from hybgen.ir.model import (
     Apply,
     Constant,
     Field,
+    Grid,
     If,
     Let,
     Local,
@@ -23,6 +24,7 @@ from hybgen.ir.model import (
     Statement,
     Store,
     Switch,
+    Table,
     Value,
 )
 
@@ -45,10 +47,19 @@ def _lines(program: Program) -> Iterator[str]:
     ):
         yield f"struct {word}: {', '.join(_member(m) for m in members) or 'nothing'}"
     for table in program.tables:
-        yield f"table {table.name}: {', '.join(f'({float(x):.9g}, {float(y):.9g})' for x, y in zip(table.x, table.y, strict=True))}"
+        yield f"table {table.name}: {', '.join(_points(table))}"
     for function in program.functions:
         yield f"{function.name}: {function.about}"
         yield from _block(function.body, 1)
+
+
+def _points(table: Table | Grid) -> Iterator[str]:
+    """(x, y) of a curve, (x, y, z) of a table of two inputs, row by row."""
+    if isinstance(table, Table):
+        yield from (f"({float(x):.9g}, {float(y):.9g})" for x, y in zip(table.x, table.y, strict=True))
+        return
+    for x, row in zip(table.x, table.z, strict=True):
+        yield from (f"({float(x):.9g}, {float(y):.9g}, {float(z):.9g})" for y, z in zip(table.y, row, strict=True))
 
 
 def _member(m: Member) -> str:

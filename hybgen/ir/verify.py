@@ -5,7 +5,23 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from fractions import Fraction
 
-from hybgen.ir.model import OPS, Answer, Apply, Constant, Field, Let, Local, Member, Program, Statement, Store, Value
+from hybgen.ir.model import (
+    LOOKUPS,
+    OPS,
+    Answer,
+    Apply,
+    Constant,
+    Field,
+    Grid,
+    Let,
+    Local,
+    Member,
+    Program,
+    Statement,
+    Store,
+    Table,
+    Value,
+)
 from hybgen.ir.walk import blocks, own, values
 from hybgen.kernels.table import ARITY
 
@@ -82,6 +98,11 @@ def _value(value: Value, scope: frozenset[str], known: Known, program: Program) 
             assert len(value.args) == _ARITY.get(value.op, 2), value
             compared = value.args[1:] if value.op == "select" else value.args
             assert len({a.type for a in compared}) == 1, value
-            assert value.op != "lookup" or any(t.name == value.table for t in program.tables), value
+            assert (value.op in LOOKUPS) == bool(value.table), value
+            assert not value.table or isinstance(_table(value.table, program), LOOKUPS[value.op]), value
         case Constant():
             assert isinstance(value.value, Fraction | bool | int | str)
+
+
+def _table(name: str, program: Program) -> Table | Grid | None:
+    return next((t for t in program.tables if t.name == name), None)

@@ -1,4 +1,4 @@
-"""Inputs, parameters, states, tables: nodes -> declared values."""
+"""Inputs, parameters, states: nodes -> declared values."""
 
 from __future__ import annotations
 
@@ -8,7 +8,7 @@ from hybgen.expr.core import BOOL, INT, REAL, Kind, Type
 from hybgen.expr.units import KELVIN, ONE, SECOND, Unit
 from hybgen.law.context import Context
 from hybgen.law.document import Mapping, Node, Scalar, Sequence
-from hybgen.law.model import Input, Parameter, State, StateKind, Table, Value
+from hybgen.law.model import Input, Parameter, State, StateKind, Value
 from hybgen.law.naming import check_name, free_in_c
 
 LARGEST = 2**31 - 1
@@ -130,7 +130,7 @@ def read_parameter(context: Context, key: Scalar, node: Node) -> Parameter | Non
     declared = context.unit(group) if group.get("unit") is not None else None
     if (isinstance(value_node, Scalar) and value_node.text in ("true", "false")) or _type(group) == BOOL:
         return _bool_parameter(context, key, group, value_node)
-    found = _entries(context, value_node, declared)
+    found = entries(context, value_node, declared)
     if found is None:
         return None
     values, shape, unit = found
@@ -174,7 +174,7 @@ def _bool_parameter(context: Context, key: Scalar, group: Mapping, node: Node) -
     )
 
 
-def _entries(
+def entries(
     context: Context, node: Node, unit: Unit | None
 ) -> tuple[tuple[Fraction, ...], tuple[int, ...], Unit] | None:
     """Numbers in one unit: a single one, a list, or a list of lists (row-major)."""
@@ -183,7 +183,7 @@ def _entries(
     if any(isinstance(r, Sequence) for r in rows):
         widths = {len(r.items) if isinstance(r, Sequence) else -1 for r in rows}
         if len(widths) != 1:
-            context.error("HG122", node.span, "the rows of a matrix have to be of one length")
+            context.error("HG122", node.span, "its rows have to be of one length")
             return None
         shape = (len(rows), widths.pop())
         rows = [i for r in rows if isinstance(r, Sequence) for i in r.items]
@@ -334,7 +334,7 @@ def _real(context: Context, key: Scalar, group: Mapping, about: str) -> State | 
     first = group.get("initial")
     values: tuple[Fraction, ...] = (Fraction(0),) * (size or 1)
     if first is not None:
-        found = _entries(context, first, unit)
+        found = entries(context, first, unit)
         if found is None:
             return None
         values = found[0] * (size or 1) if found[1] == () else found[0]
@@ -363,22 +363,3 @@ def _real(context: Context, key: Scalar, group: Mapping, about: str) -> State | 
         about,
         key.span,
     )
-
-
-def read_table(context: Context, key: Scalar, group: Mapping) -> Table | None:
-    """One table."""
-    check_name(key, "a table", context.findings)
-    x_unit, y_unit = context.unit(group, "x_unit"), context.unit(group, "y_unit")
-    x_node, y_node = group.get("x"), group.get("y")
-    if x_node is None or y_node is None:
-        return None
-    x, y = _entries(context, x_node, x_unit), _entries(context, y_node, y_unit)
-    if x is None or y is None:
-        return None
-    if len(x[1]) != 1 or x[1] != y[1] or len(x[0]) < 2:
-        context.error("HG133", key.span, f"table '{key.text}' needs as many y as x, two at least")
-        return None
-    if any(a >= b for a, b in zip(x[0], x[0][1:], strict=False)):
-        context.error("HG133", x_node.span, f"the x of table '{key.text}' have to rise from point to point")
-        return None
-    return Table(key.text, x[0], y[0], x_unit, y_unit, key.span)

@@ -117,6 +117,23 @@ class Table:
 
 
 @dataclass(frozen=True, slots=True)
+class Grid:
+    """A table of two inputs: bilinear between points with rising x and rising y, held beyond the ends of each.
+
+    `z` has a row for each x, and in it a value for each y.
+    """
+
+    name: str
+    x: tuple[Fraction, ...]
+    y: tuple[Fraction, ...]
+    z: tuple[tuple[Fraction, ...], ...]
+    x_unit: Unit
+    y_unit: Unit
+    z_unit: Unit
+    span: Span
+
+
+@dataclass(frozen=True, slots=True)
 class Assign:
     """A value for one component of a state: a new value, or in a flow map its rate per second."""
 
@@ -224,7 +241,7 @@ class Law:
     states: tuple[State, ...]
     terms: tuple[Term, ...]
     """In an order in which each uses only earlier ones."""
-    tables: tuple[Table, ...]
+    tables: tuple[Table | Grid, ...]
     flow: Flow
     sample: tuple[Assign, ...]
     jumps: tuple[Jump, ...]
@@ -254,17 +271,13 @@ class Law:
         """The term with this name."""
         return _named(self.terms, name)
 
-    def table(self, name: str) -> Table:
-        """The table with this name."""
-        return _named(self.tables, name)
-
     @property
     def tunables(self) -> tuple[Parameter, ...]:
         """The parameters of the parameter struct."""
         return tuple(p for p in self.parameters if p.tunable)
 
 
-_Named = TypeVar("_Named", Input, Parameter, State, Term, Table)
+_Named = TypeVar("_Named", Input, Parameter, State, Term)
 
 
 def _named(items: tuple[_Named, ...], name: str) -> _Named:

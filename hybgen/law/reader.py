@@ -8,20 +8,21 @@ from collections.abc import Callable
 from dataclasses import replace
 from fractions import Fraction
 from pathlib import Path
-from typing import Any, TypeVar
+from typing import Any, TypeVar, assert_never
 
 from hybgen.diag.finding import Findings, LawError
 from hybgen.diag.span import Span
 from hybgen.expr.core import Kind, RefKind
-from hybgen.expr.scope import Curve, Scope, Symbol
+from hybgen.expr.scope import Lookup, Scope, Symbol
 from hybgen.law import shape, structure
 from hybgen.law.behaviour import Behaviour, read_terms
 from hybgen.law.context import Context
-from hybgen.law.declarations import read_input, read_parameter, read_state, read_table
+from hybgen.law.declarations import read_input, read_parameter, read_state
 from hybgen.law.document import MOST_BYTES, Mapping, Scalar, Sequence, read_document
-from hybgen.law.model import Flow, Input, Law, Output, Parameter, State, StateKind
+from hybgen.law.model import Flow, Grid, Input, Law, Output, Parameter, State, StateKind, Table
 from hybgen.law.naming import LONGEST, check_law_name, macro_of
 from hybgen.law.promises import read_assumptions, read_claim
+from hybgen.law.tables import read_table
 
 MOST_NAMES = 1000
 _Item = TypeVar("_Item")
@@ -114,8 +115,8 @@ class _Reader:
         """The law with all its expressions."""
         context = self.context
         names = tuple(k.text for k, _ in self.group("jumps").entries)
-        curves = {t.name: Curve(t.name, t.x_unit, t.y_unit) for t in law.tables}
-        scope = Scope(_symbols(law.inputs, law.parameters, law.states), curves, names)
+        tables = {t.name: _lookup(t) for t in law.tables}
+        scope = Scope(_symbols(law.inputs, law.parameters, law.states), tables, names)
         scope, terms = read_terms(context, scope, law.states, self.group("terms"))
         context.findings.stop()
         behaviour = Behaviour(context, scope, law.states)
@@ -182,6 +183,16 @@ def _symbols(
         + [_state_symbol(x) for x in states]
     )
     return {s.name: s for s in made}
+
+
+def _lookup(table: Table | Grid) -> Lookup:
+    match table:
+        case Table():
+            return Lookup(table.name, (table.x_unit,), table.y_unit)
+        case Grid():
+            return Lookup(table.name, (table.x_unit, table.y_unit), table.z_unit)
+        case _:
+            assert_never(table)
 
 
 def _input_symbol(u: Input) -> Symbol:

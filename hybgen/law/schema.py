@@ -60,6 +60,8 @@ def _record(kind: shape.Record) -> dict[str, Any]:
     }
     if required := [n for n, f in kind.fields.items() if f.required]:
         found["required"] = required
+    if needs := {n: list(f.needs) for n, f in kind.fields.items() if f.needs}:
+        found["dependentRequired"] = needs
     excludes: dict[str, Any] = {
         n: {"properties": {other: {"not": {}} for other in f.excludes}} for n, f in kind.fields.items() if f.excludes
     }

@@ -102,6 +102,8 @@ class Field:
     required: bool = False
     excludes: tuple[str, ...] = field(default=())
     """Keys that have no meaning beside it."""
+    needs: tuple[str, ...] = field(default=())
+    """Keys without which it has no meaning."""
 
 
 _UNIT = Field(Text(), "unit of the quantity, with its scale: m, mm, V/K, degC; left out: dimensionless")
@@ -162,11 +164,14 @@ _STATE = Record(
 )
 _TABLE = Record(
     {
-        "x": Field(Value(deep=True), "rising points of the input", required=True),
-        "y": Field(Value(deep=True), "values at these points", required=True),
-        "z": Field(Later(), "values of a table of two inputs"),
+        "x": Field(Value(deep=True), "rising points of the (first) input", required=True),
+        "y": Field(
+            Value(deep=True), "values at these points; beside z: rising points of the second input", required=True
+        ),
+        "z": Field(Value(deep=True), "values of a table of two inputs: a row for each x, in it a value for each y"),
         "x_unit": _UNIT,
         "y_unit": _UNIT,
+        "z_unit": Field(_UNIT.kind, _UNIT.about, needs=("z",)),
         "about": _ABOUT,
     }
 )
@@ -241,7 +246,7 @@ LAW = Record(
         ),
         "states": Field(Named(_STATE), "the memory of the law"),
         "terms": Field(Named(Either(Value(), _TERM)), "named expressions without a state of their own"),
-        "tables": Field(Named(_TABLE), "curves, linear between points, held beyond the ends"),
+        "tables": Field(Named(_TABLE), "curves and tables of two inputs: linear between points, held beyond the ends"),
         "flow": Field(_FLOW, "what happens between jumps"),
         "sample": Field(Named(Expression()), "state: expression, taken once at the end of each step"),
         "jumps": Field(Named(_JUMP), "listed order is priority"),

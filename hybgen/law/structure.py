@@ -67,6 +67,10 @@ def _record(node: Node, kind: shape.Record, what: str, findings: Findings) -> No
                     f"'{key.text}' and '{other}' do not go together in {what}",
                     hint=f"take '{other}' out",
                 )
+        for other in field.needs:
+            if other not in present:
+                message = f"'{key.text}' has no meaning in {what} without '{other}'"
+                findings.error("HG121", key.span, message, hint=f"give '{other}', or take '{key.text}' out")
     for name, field in kind.fields.items():
         if field.required and name not in present:
             findings.error("HG121", node.span, f"{what} needs '{name}': {field.about}")

@@ -15,6 +15,7 @@ from hybgen.ir.model import (
     Constant,
     Field,
     Function,
+    Grid,
     If,
     Jump,
     Let,
@@ -35,7 +36,7 @@ from hybgen.lower.blocks import Assignment, Lets, Statements, chosen, merged, or
 from hybgen.lower.due import Due
 from hybgen.lower.names import LOCALS, Namer, reserved
 from hybgen.lower.structs import Structs, structs
-from hybgen.step.model import StepAssign, StepInput, StepJump, StepLaw, StepOutput
+from hybgen.step.model import StepAssign, StepGrid, StepInput, StepJump, StepLaw, StepOutput, StepTable
 from hybgen.step.translate import component
 from hybgen.version import VERSION
 
@@ -88,7 +89,7 @@ class _Builder:
             tuple(r.text for r in made.rules),
             tuple(Jump(j.number, m, j.name) for j, m in zip(made.jumps, parts.macros, strict=True)),
             made.jumps_per_step,
-            tuple(Table(parts.values.tables[t.name], t.x, t.y, t.slope, _place(t.span)) for t in made.tables),
+            tuple(_table(t, parts.values.tables[t.name]) for t in made.tables),
             _used(functions, HELPERS),
             _used(functions, ARITY.keys()),
             functions,
@@ -343,6 +344,13 @@ class _Builder:
 
 def _indexes(size: int | None) -> list[int | None]:
     return [None] if size is None else list(range(size))
+
+
+def _table(t: StepTable | StepGrid, name: str) -> Table | Grid:
+    note = _place(t.span)
+    if isinstance(t, StepTable):
+        return Table(name, t.x, t.y, t.slope, note)
+    return Grid(name, t.x, t.y, t.z, t.per_x, t.per_y, note)
 
 
 def _place(span: Span) -> str:

@@ -11,7 +11,7 @@ from hybgen.ir.model import Enum, Member
 from hybgen.law.model import Input, Parameter, State, StateKind
 from hybgen.lower.names import LOCALS, Namer
 from hybgen.lower.values import Values
-from hybgen.step.model import StepLaw
+from hybgen.step.model import StepGrid, StepLaw, StepTable
 
 
 @dataclass(frozen=True, slots=True)
@@ -36,7 +36,7 @@ def structs(made: StepLaw, namer: Namer) -> Structs:
     fields = Namer(namer.taken | _fields(made))
     macros = tuple(fields.unique(f"{prefix}_JUMP_{j.name}".upper()) for j in made.jumps)
     namer.taken.update(macros)
-    tables = {t.name: namer.family(f"{prefix}_{t.name}", ("_x", "_y", "_slope")) for t in made.tables}
+    tables = {t.name: namer.family(f"{prefix}_{t.name}", _arrays(t)) for t in made.tables}
     names, now = _now(made)
     locals_ = _locals(made, namer)
     values = Values(known, names, locals_, tables)
@@ -70,6 +70,11 @@ def structs(made: StepLaw, namer: Namer) -> Structs:
         macros,
         held,
     )
+
+
+def _arrays(table: StepTable | StepGrid) -> tuple[str, ...]:
+    """Endings of the names of a table's arrays."""
+    return ("_x", "_y", "_slope") if isinstance(table, StepTable) else ("_x", "_y", "_z", "_per_x", "_per_y")
 
 
 def _enums(made: StepLaw, namer: Namer) -> tuple[list[Enum], dict[str, tuple[str, tuple[str, ...]]]]:

@@ -21,7 +21,7 @@ _BASES = {
 @dataclass(frozen=True, slots=True)
 class Values:
     """Translates; `enums`: owner -> (type name, enumerators), `names`: members whose name differs, `locals`: definitions,
-    `tables`: curves."""
+    `tables`: look-up functions."""
 
     enums: Mapping[str, tuple[str, tuple[str, ...]]]
     names: Mapping[tuple[RefKind, str], str]

@@ -99,8 +99,8 @@ class Bounds:
         return Range(-top, top)
 
     def _operation(self, node: Op) -> Range:
-        if node.op == "lookup":
-            return self.tables[node.table] if self.finite(node.args[0]) else UNKNOWN
+        if node.table:
+            return self.tables[node.table] if all(self.finite(a) for a in node.args) else UNKNOWN
         if node.type.kind in (Kind.BOOL, Kind.ENUM):
             return _BIT
         if node.op == "select":

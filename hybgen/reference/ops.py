@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
+from fractions import Fraction
 from functools import cache, reduce
 from typing import Any
 
@@ -13,7 +14,7 @@ from hybgen.kernels.run import function
 from hybgen.kernels.table import FIXED, kernel
 from hybgen.kernels.word import ELEMENTARY
 from hybgen.numbers.format import FIXED32, LARGEST_COUNT, Format
-from hybgen.step.model import StepTable
+from hybgen.step.model import StepGrid, StepTable
 
 Array = NDArray[Any]
 Operation = Callable[..., Any]
@@ -106,10 +107,17 @@ def _to_steps(fmt: Format) -> Operation:
     return to_steps
 
 
-def lookup(table: StepTable, fmt: Format) -> Operation:
+def lookup(table: StepTable | StepGrid, fmt: Format) -> Operation:
     """The function of a table."""
-    real = fmt.dtype.type
-    x, y, slope = (np.array([real(float(v)) for v in row], dtype=real) for row in (table.x, table.y, table.slope))
+    return _curve(table, fmt) if isinstance(table, StepTable) else _grid(table, fmt)
+
+
+def _array(values: Sequence[Fraction], fmt: Format) -> Array:
+    return np.array([float(v) for v in values], dtype=fmt.dtype)
+
+
+def _curve(table: StepTable, fmt: Format) -> Operation:
+    x, y, slope = (_array(row, fmt) for row in (table.x, table.y, table.slope))
 
     def look(u: Array) -> Any:
         u = np.asarray(u)
@@ -118,3 +126,32 @@ def lookup(table: StepTable, fmt: Format) -> Operation:
         return np.where(u <= x[0], y[0], np.where(u >= x[-1], y[-1], inner))
 
     return look
+
+
+def _grid(grid: StepGrid, fmt: Format) -> Operation:
+    z = np.stack([_array(row, fmt) for row in grid.z])
+    along_x, along_y = _cell(grid.x, grid.per_x, fmt), _cell(grid.y, grid.per_y, fmt)
+
+    def look(u: Array, v: Array) -> Any:
+        (i, k, s), (j, m, t) = along_x(np.asarray(u)), along_y(np.asarray(v))
+        low = z[i, j] + s * (z[k, j] - z[i, j])
+        high = z[i, m] + s * (z[k, m] - z[i, m])
+        return low + t * (high - low)
+
+    return look
+
+
+def _cell(points: Sequence[Fraction], inverses: Sequence[Fraction], fmt: Format) -> Callable[[Array], Any]:
+    """The points before and after a value, and which part of the way between them it has gone."""
+    x, per = _array(points, fmt), _array(inverses, fmt)
+    last = len(x) - 1
+
+    def cell(u: Array) -> Any:
+        before = np.clip(np.searchsorted(x, u, side="right") - 1, 0, last - 1)
+        first, end = u <= x[0], u >= x[-1]
+        held = first | end
+        i = np.where(first, 0, np.where(end, last, before))
+        part = (np.where(held, x[0], u) - x[before]) * per[before]
+        return i, np.where(held, i, i + 1), np.where(held, fmt.dtype.type(0), part)
+
+    return cell

@@ -103,7 +103,7 @@ class _Building:
             case Ref():
                 self.loads.append((at, node))
             case Op():
-                function = self.planner.tables[node.table] if node.op == "lookup" else self.planner.functions[node.op]
+                function = self.planner.tables[node.table] if node.table else self.planner.functions[node.op]
                 self.work.append((at, function, args))
 
 

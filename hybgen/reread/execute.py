@@ -280,5 +280,7 @@ class Executor:
         name = node.name.name.removeprefix(f"{self.law}_")
         args = tuple(self.value(a, state) for a in node.args.exprs)
         table = self.tables.get(name, "")
-        like = op("lookup" if table else name, *args, table=table)
+        if table:
+            name = "lookup" if len(args) == 1 else "lookup2"
+        like = op(name, *args, table=table)
         return self.interner.op(like.op, args, like)

@@ -8,14 +8,13 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from fractions import Fraction
-from typing import Any
 
 from hybgen.expr.core import INT, REAL, Kind, Node, Op, Ref, RefKind, Type, integer, op, real
 from hybgen.numbers.format import LARGEST_COUNT, Format
-from hybgen.reread import kernels
+from hybgen.reread import kernels, tables
 from hybgen.reread.execute import Executor, NotUnderstood, State
 from hybgen.reread.interned import Judge
-from hybgen.reread.source import Source, body_of, same
+from hybgen.reread.source import Source, body_of, numbers, same
 from hybgen.step.model import Status, StepLaw
 
 _ORDER = ("read", "watch", "due", "take", "give", "advance")
@@ -34,7 +33,7 @@ def wrong(made: StepLaw, source: Source, executor: Executor, judge: Judge) -> It
     yield from _structs(made, source)
     if not _defaults(made, source):
         yield f"{name}_defaults"
-    yield from _tables(made, source)
+    yield from tables.wrong(made, source)
     yield from _helpers(made, source, executor, judge)
     yield from kernels.wrong(name, made.format.name, source)
     if not same(source.functions[f"{name}_jump_name"].body, body_of(_names_text(made, source), name)):
@@ -85,59 +84,9 @@ def _structs(made: StepLaw, source: Source) -> Iterator[str]:
         yield f"the struct {law}_now"
 
 
-def _numbers(node: Any, fmt: Format) -> list[Fraction]:
-    """The constants of an initialiser, nested lists flattened."""
-    match type(node).__name__:
-        case "InitList":
-            return [v for item in node.exprs for v in _numbers(item, fmt)]
-        case "UnaryOp":
-            return [-v for v in _numbers(node.expr, fmt)]
-        case "ID":
-            return [Fraction(node.name == "true")]
-        case _:
-            text = node.value
-            value = Fraction(text.rstrip("fu"))
-            return [fmt.round(value) if node.type in ("float", "double") else value]
-
-
 def _defaults(made: StepLaw, source: Source) -> bool:
     wanted = [Fraction(v) for p in made.parameters for v in p.default]
-    return _numbers(source.initial[f"{made.law.name}_defaults"], made.format) == (wanted or [Fraction(0)])
-
-
-def table_names(made: StepLaw, source: Source) -> dict[str, str]:
-    """Name of a table's function in C, without the law's prefix -> the table (its name, `_` added where it was taken)."""
-    prefix = f"{made.law.name}_"
-    found = [n.removeprefix(prefix).removesuffix("_slope") for n in source.initial if n.endswith("_slope")]
-    names = {t.name for t in made.tables}
-    return {c: c if c in names else c.rstrip("_") for c in found}
-
-
-_LOOKUP = """
-    uint32_t i = 0u;
-    {real} y;
-    if (x <= {name}_x[0]) {{ y = {name}_y[0]; }}
-    else if (x >= {name}_x[{m}]) {{ y = {name}_y[{m}]; }}
-    else {{ {search} y = {name}_y[{i}] + ({name}_slope[{i}] * (x - {name}_x[{i}])); }}
-    return y;
-"""
-_SEARCH = "while ((i < {last}u) && (x >= {name}_x[i + 1u])) {{ i++; }}"
-
-
-def _tables(made: StepLaw, source: Source) -> Iterator[str]:
-    real_type = "float" if made.format.precision == 24 else "double"
-    for c_name, table_name in table_names(made, source).items():
-        name = f"{made.law.name}_{c_name}"
-        table = next(t for t in made.tables if t.name == table_name)
-        for part, values in (("x", table.x), ("y", table.y), ("slope", table.slope)):
-            found = _numbers(source.initial[f"{name}_{part}"], made.format)
-            if found != list(values) or source.arrays[f"{name}_{part}"] != len(values):
-                yield f"{name}_{part}"
-        m = len(table.x) - 1
-        search = _SEARCH.format(last=m - 1, name=name) if m > 1 else ""
-        text = _LOOKUP.format(real=real_type, name=name, m=m, search=search, i="i" if m > 1 else "0")
-        if not same(source.functions[name].body, body_of(text, made.law.name)):
-            yield name
+    return numbers(source.initial[f"{made.law.name}_defaults"], made.format) == (wanted or [Fraction(0)])
 
 
 def _meaning(name: str, a: list[Node], fmt: Format) -> Node:
@@ -185,11 +134,11 @@ _ARITY = {"abs": 1, "min": 2, "max": 2, "clamp": 3, "sign": 1, "finite": 1, "flo
 def _helpers(made: StepLaw, source: Source, executor: Executor, judge: Judge) -> Iterator[str]:
     """Helper functions that do not do what their operation means."""
     prefix = f"{made.law.name}_"
-    tables = table_names(made, source)
+    lookups = tables.names(made, source)
     for full, function in source.functions.items():
         name = full.removeprefix(prefix)
         plain = name[1:] if name.startswith("i") and name[1:] in _ARITY else name
-        if plain not in _ARITY or name in tables:
+        if plain not in _ARITY or name in lookups:
             continue
         type_: Type = INT if plain != name else REAL
         words = [p.name for p in function.decl.type.args.params]

@@ -11,6 +11,7 @@ from hybgen.reread.execute import NotUnderstood
 from hybgen.reread.source import Source, body_of, same
 
 _TYPES = {"uint32_t": "u32", "int32_t": "i32", "uint64_t": "u64", "int64_t": "i64", "bool": "bool"}
+_C_TYPES = {ours: theirs for theirs, ours in _TYPES.items()}
 _MACROS = {"UINT64_C": "u64", "INT64_C": "i64"}
 
 
@@ -81,7 +82,10 @@ class _Reader:
         if name not in self.source.initial:
             return False
         found = [self.word(e, {}) for e in self.source.initial[name].exprs]
-        return found == [number(w, type_) for w in words] and self.source.arrays[name] == len(words)
+        return found == [number(w, type_) for w in words] and self.source.arrays[name] == (
+            _C_TYPES[type_],
+            (len(words),),
+        )
 
     def word(self, node: Any, names: Mapping[str, str]) -> Word:
         """An expression as a word."""
@@ -111,7 +115,7 @@ class _Reader:
                 inner, wanted = self.word(node.expr, names), self.type(node.to_type.type)
                 return inner if inner.op == "const" and inner.type == wanted else Word("cast", wanted, (inner,))
             case "ArrayRef":
-                declared = self.source.types[node.name.name]
+                declared, _ = self.source.arrays[node.name.name]
                 table = node.name.name.removeprefix(f"{self.law}_")
                 return Word("table", self.types[declared], (self.word(node.subscript, names),), table)
             case "FuncCall":

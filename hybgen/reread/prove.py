@@ -27,9 +27,8 @@ from hybgen.expr.core import (
     refs,
     truth,
 )
-from hybgen.reread import frame
+from hybgen.reread import frame, tables
 from hybgen.reread.execute import Executor, NotUnderstood, Place, State
-from hybgen.reread.frame import table_names
 from hybgen.reread.interned import Interner, Judge, Undecided
 from hybgen.reread.source import Source, parse
 from hybgen.step.model import StepAssign, StepInput, StepLaw, StepOutput
@@ -79,8 +78,8 @@ class _Prover:
         self.inputs = {u.name: u.type for u in made.inputs}
         self.flags = _now_names(made)
         enums = self._enum_types()
-        tables = table_names(made, source)
-        self.executor = Executor(source, made.law.name, made.format, enums, self.interner, self.start, tables)
+        lookups = tables.names(made, source)
+        self.executor = Executor(source, made.law.name, made.format, enums, self.interner, self.start, lookups)
         self.judge = Judge(self.interner, self._domains(), self._ends)
         self.names: dict[str, Node] = {}
         for d in made.definitions:

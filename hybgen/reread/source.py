@@ -8,7 +8,10 @@ from __future__ import annotations
 
 import re
 from dataclasses import dataclass
+from fractions import Fraction
 from typing import Any
+
+from hybgen.numbers.format import Format
 
 _TYPES = """typedef _Bool bool; typedef int int32_t; typedef unsigned int uint32_t; typedef unsigned char uint8_t;
 typedef long long int64_t; typedef unsigned long long uint64_t; typedef unsigned long size_t;
@@ -22,10 +25,8 @@ class Source:
     functions: dict[str, Any]
     initial: dict[str, Any]
     """Initialisers of constants, by name."""
-    arrays: dict[str, int]
-    """Declared lengths of constant arrays, by name."""
-    types: dict[str, str]
-    """Types of their elements."""
+    arrays: dict[str, tuple[str, tuple[int, ...]]]
+    """Type and declared lengths of constant arrays, by name."""
     structs: dict[str, list[tuple[str, str, int | None]]]
     """Members of the structs: name, type, length of an array."""
     macros: dict[str, int]
@@ -45,9 +46,9 @@ def parse(header: str, body: str) -> Source:
         raise ValueError(str(error)) from None
     functions = {n.decl.name: n for n in unit.ext if isinstance(n, c_ast.FuncDef)}
     initial = {n.name: n.init for n in unit.ext if isinstance(n, c_ast.Decl) and n.init is not None}
-    declared = [n for n in unit.ext if isinstance(n, c_ast.Decl) and isinstance(n.type, c_ast.ArrayDecl)]
-    arrays = {n.name: int(n.type.dim.value) for n in declared}
-    types = {n.name: " ".join(n.type.type.type.names) for n in declared}
+    arrays = {
+        n.name: _array(n.type) for n in unit.ext if isinstance(n, c_ast.Decl) and isinstance(n.type, c_ast.ArrayDecl)
+    }
     structs: dict[str, list[tuple[str, str, int | None]]] = {}
     enumerators: dict[str, tuple[str, int]] = {}
     for node in unit.ext:
@@ -56,7 +57,15 @@ def parse(header: str, body: str) -> Source:
         if isinstance(node, c_ast.Typedef) and isinstance(node.type.type, c_ast.Enum):
             for row in node.type.type.values.enumerators:
                 enumerators[row.name] = (node.name, int(row.value.value))
-    return Source(functions, initial, arrays, types, structs, macros, enumerators)
+    return Source(functions, initial, arrays, structs, macros, enumerators)
+
+
+def _array(node: Any) -> tuple[str, tuple[int, ...]]:
+    """Type and lengths of an array of arrays."""
+    if type(node).__name__ != "ArrayDecl":
+        return " ".join(node.type.names), ()
+    inner, lengths = _array(node.type)
+    return inner, (int(node.dim.value), *lengths)
 
 
 def _member(node: Any) -> tuple[str, str, int | None]:
@@ -94,7 +103,7 @@ def body_of(statements: str, law: str) -> Any:
     return c_parser.CParser().parse(text).ext[-1].body
 
 
-_FIRST = {"used": "p", "status": "0u", "jump": "0u", "i": "0u", "text": '""'}
+_FIRST = {"used": "p", "status": "0u", "jump": "0u", "text": '""'}
 
 
 def same(found: Any, wanted: Any) -> bool:
@@ -119,3 +128,25 @@ def _shape(node: Any) -> Any:
     kind = type(node).__name__
     parts = [(slot, getattr(node, slot)) for slot in node.__slots__ if slot not in ("coord", "__weakref__")]
     return kind, [(slot, _shape(list(value) if isinstance(value, tuple) else value)) for slot, value in parts]
+
+
+def function_of(text: str) -> Any:
+    """The syntax tree of a function of plain types."""
+    from pycparser import c_parser
+
+    return c_parser.CParser().parse(_TYPES + text).ext[-1]
+
+
+def numbers(node: Any, fmt: Format) -> list[Fraction]:
+    """The constants of an initialiser, nested lists flattened."""
+    match type(node).__name__:
+        case "InitList":
+            return [v for item in node.exprs for v in numbers(item, fmt)]
+        case "UnaryOp":
+            return [-v for v in numbers(node.expr, fmt)]
+        case "ID":
+            return [Fraction(node.name == "true")]
+        case _:
+            text = node.value
+            value = Fraction(text.rstrip("fu"))
+            return [fmt.round(value) if node.type in ("float", "double") else value]

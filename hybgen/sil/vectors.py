@@ -37,9 +37,11 @@ def thresholds(made: StepLaw) -> dict[Key, list[float]]:
             if isinstance(node, Op) and node.op in COMPARISONS:
                 _compared(node.args[0], node.args[1], ends, found)
                 _compared(node.args[1], node.args[0], ends, found)
-            elif isinstance(node, Op) and node.op == "lookup" and isinstance(node.args[0], Ref):
+            elif isinstance(node, Op) and node.table:
                 table = next(t for t in made.tables if t.name == node.table)
-                found.setdefault((node.args[0].kind, node.args[0].name), set()).update(float(x) for x in table.x)
+                for arg, points in zip(node.args, (table.x, table.y), strict=False):
+                    if isinstance(arg, Ref):
+                        found.setdefault((arg.kind, arg.name), set()).update(map(float, points))
     return {k: sorted(v) for k, v in found.items()}
 
 

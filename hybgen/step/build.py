@@ -18,6 +18,7 @@ from hybgen.step.fixed import in_fixed_point
 from hybgen.step.integrate import integrate
 from hybgen.step.model import Definition, Rule, StepAssign, StepJump, StepLaw, StepOutput
 from hybgen.step.normal import Normalizer, watched
+from hybgen.step.tables import table_range, tables
 from hybgen.step.translate import Translator, component, constants_of, timers_of
 
 
@@ -82,7 +83,7 @@ class _Builder:
             declare.parameters(law, self.translator),
             self._rules(normalizer),
             declare.states(law, self.translator),
-            declare.tables(law, self.translator),
+            tables(law, self.translator),
             tuple(definitions),
             _alarms([*(j.condition for j in jumps), *([condition] if condition else [])]),
             jumps,
@@ -124,7 +125,7 @@ class _Builder:
         return leaves
 
     def _table_ranges(self) -> dict[str, Range]:
-        return {t.name: exact_range(min(t.y), max(t.y)) for t in self.law.tables}
+        return {t.name: table_range(t) for t in self.law.tables}
 
     def _normalized(
         self, definitions: Iterable[Definition], bounds: Bounds, leaves: dict[Key, Range]

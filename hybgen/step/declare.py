@@ -1,4 +1,4 @@
-"""The declarations of a law in a number format: inputs, parameters, states, tables, rules."""
+"""The declarations of a law in a number format: inputs, parameters, states, rules."""
 
 from __future__ import annotations
 
@@ -6,9 +6,9 @@ from collections.abc import Iterator
 from fractions import Fraction
 
 from hybgen.expr.core import INT, REAL, Kind, Node, Ref, RefKind, Type, integer, op, real
-from hybgen.law.model import Law, Parameter, State, StateKind, Table, Value
+from hybgen.law.model import Law, Parameter, State, StateKind, Value
 from hybgen.numbers.format import LARGEST_COUNT
-from hybgen.step.model import Rule, StepInput, StepParameter, StepState, StepTable
+from hybgen.step.model import Rule, StepInput, StepParameter, StepState
 from hybgen.step.translate import Translator, component
 
 
@@ -113,30 +113,6 @@ def states(law: Law, translator: Translator) -> tuple[StepState, ...]:
             initial, type_ = tuple(value_of(v, x.type, translator) for v in x.initial), x.type
         made.append(StepState(x.name, x.kind, type_, x.size, x.values, initial, top, x.span))
     return tuple(made)
-
-
-def tables(law: Law, translator: Translator) -> tuple[StepTable, ...]:
-    """The curves, their slopes rounded once from the exact ones."""
-    return tuple(_table(t, translator) for t in law.tables)
-
-
-def _table(table: Table, translator: Translator) -> StepTable:
-    x = tuple(translator.rounded(v, table.span) for v in table.x)
-    if any(a >= b for a, b in zip(x, x[1:], strict=False)):
-        translator.findings.error(
-            "HG405",
-            table.span,
-            f"two points of '{table.name}' have the same x in {translator.format.name}",
-            hint="use float64, or points further apart",
-        )
-    slopes = tuple((d - c) / (b - a) for a, b, c, d in zip(table.x, table.x[1:], table.y, table.y[1:], strict=False))
-    return StepTable(
-        table.name,
-        x,
-        tuple(translator.rounded(v, table.span) for v in table.y),
-        tuple(translator.rounded(v, table.span) for v in slopes),
-        table.span,
-    )
 
 
 def range_rules(law: Law, translator: Translator) -> Iterator[Rule]:

@@ -18,6 +18,7 @@ from hybgen.expr.fold import decide
 from hybgen.kernels.word import ELEMENTARY
 from hybgen.law.model import Law, Value
 from hybgen.numbers.bounds import Bounds, Range
+from hybgen.step.curves import curve, grid
 from hybgen.step.model import (
     Definition,
     Rule,
@@ -28,6 +29,7 @@ from hybgen.step.model import (
     StepOutput,
     StepParameter,
     StepState,
+    StepTable,
 )
 from hybgen.step.scaled import (
     MOST,
@@ -116,10 +118,13 @@ class _Fixed:
     leaves: Mapping[Key, tuple[int, int, int]]
     locals: dict[str, Scaled]
     known: dict[Node, Scaled] = field(default_factory=dict)
+    more: list[Definition] = field(default_factory=list)
+    """Every definition, those of the elaboration too, each before its use."""
 
     def built(self) -> StepLaw:
         made = self.made
-        definitions = tuple(self.definition(d) for d in made.definitions)
+        for d in made.definitions:
+            self.more.append(self.definition(d))
         outputs = tuple(self.output(o) for o in made.outputs)
         fixed = replace(
             made,
@@ -127,7 +132,6 @@ class _Fixed:
             parameters=tuple(self.parameter(p) for p in made.parameters),
             rules=tuple(Rule(self.condition(r.condition), r.text, r.span) for r in made.rules),
             states=tuple(self.state(x) for x in made.states),
-            definitions=definitions,
             alarms=(),
             jumps=tuple(self.jump(j) for j in made.jumps),
             flow_condition=None if made.flow_condition is None else self.condition(made.flow_condition),
@@ -141,7 +145,7 @@ class _Fixed:
             | {(RefKind.OUTPUT, o.name): places for o, places in outputs if places is not None},
         )
         self.findings.stop()
-        return fixed
+        return replace(fixed, definitions=tuple(self.more), tables=())
 
     # ------------------------------------------------------------------ declarations
 
@@ -320,11 +324,26 @@ class _Fixed:
                 return self.floor(args[0], span)
             case "sign":
                 return Scaled(op("isign", args[0].node, span=span), 0, -1, 1)
-            case "lookup":
-                raise Refused("tables are not available in this format yet")
+            case "lookup" | "lookup2":
+                table = next(t for t in self.made.tables if t.name == node.table)
+                if isinstance(table, StepTable):
+                    return curve(table, args[0], span, self.defined(span))
+                return grid(table, args[0], args[1], span, self.defined(span))
         if node.op in ELEMENTARY:
             return _elementary(node.op, args, span)
         return _chosen(node.op, args, span)
+
+    def defined(self, span: Span) -> Callable[[str, Scaled], Scaled]:
+        """Makes definitions; their names have blanks, so no name of the author is the same."""
+
+        def define(name: str, value: Scaled) -> Scaled:
+            if not isinstance(value.node, Op):
+                return value
+            unique = f"{name} number {len(self.more) + 1}"
+            self.more.append(Definition(unique, value.node, span, name))
+            return replace(value, node=Ref(RefKind.LOCAL, unique, INT, None, span))
+
+        return define
 
     def floor(self, x: Scaled, span: Span) -> Scaled:
         if x.places <= 0:

@@ -113,12 +113,38 @@ class StepState:
 @dataclass(frozen=True, slots=True)
 class StepTable:
     """A curve in the format: y[i] + slope[i] * (x - x[i]) for x[i] <= x < x[i+1]; y[0] for x <= x[0]; y[-1] for
-    x >= x[-1]; NaN for NaN."""
+    x >= x[-1]; NaN for NaN. Slopes are those between the rounded points."""
 
     name: str
     x: tuple[Fraction, ...]
     y: tuple[Fraction, ...]
     slope: tuple[Fraction, ...]
+    span: Span
+
+
+@dataclass(frozen=True, slots=True)
+class StepGrid:
+    """A table of two inputs in the format; at (u, v), each operation rounded once, in this order:
+
+    1. along x, i is the last point with x[i] <= u. Between the ends: k = i + 1, s = (u - x[i]) * per_x[i].
+       Below x[0] and at it i = k = 0, from x[-1] on both are the last point, and s = 0.
+    2. along y likewise, from v: j, l, t = (v - y[j]) * per_y[j].
+    3. low = z[i][j] + s * (z[k][j] - z[i][j]); high = z[i][l] + s * (z[k][l] - z[i][l]).
+    4. low + t * (high - low).
+
+    per_x[i] is the rounded inverse of the rounded x[i+1] - x[i], never so large that s could exceed 1. So the value is
+    exact at the points and where the corners around it are equal, held beyond the ends (infinities too), NaN if u or v
+    is NaN, and leaves the hull of the corners by less than 8 * 2**-precision of their largest magnitude: at s = 1 the
+    rounding of z[k][j] - z[i][j] and of the sum make up to 3 of them, and the same once more along y.
+    """
+
+    name: str
+    x: tuple[Fraction, ...]
+    y: tuple[Fraction, ...]
+    z: tuple[tuple[Fraction, ...], ...]
+    """A row for each x."""
+    per_x: tuple[Fraction, ...]
+    per_y: tuple[Fraction, ...]
     span: Span
 
 
@@ -197,7 +223,7 @@ class StepLaw:
     parameters: tuple[StepParameter, ...]
     rules: tuple[Rule, ...]
     states: tuple[StepState, ...]
-    tables: tuple[StepTable, ...]
+    tables: tuple[StepTable | StepGrid, ...]
     definitions: tuple[Definition, ...]
     """Each uses only earlier ones."""
     alarms: tuple[Node, ...]

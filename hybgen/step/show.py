@@ -125,5 +125,5 @@ def _text(node: Node, made: StepLaw) -> str:
                 return f"({f' {_INFIX[node.op]} '.join(args)})"
             if node.op in _PREFIX:
                 return f"({_PREFIX[node.op]}{args[0]})"
-            name = {"select": "choose", "lookup": node.table}.get(node.op, node.op)
+            name = node.table or {"select": "choose"}.get(node.op, node.op)
             return f"{name}({', '.join(args)})"

@@ -44,7 +44,7 @@ NUMBERS = (
         "range",
         "error",
         "points of a table that fall together",
-        "In the number format two points have the same x.",
+        "In the number format two points have the same x, or two of a table of two inputs the same y.",
         "x: [1, 1.00000001]",
         "x: [1, 1.1]",
     ),

@@ -115,8 +115,9 @@ READING = (
     ),
     _row(
         "HG133",
-        "a table that is no curve",
-        "x rises from point to point, and there are as many y as x, two at least.",
+        "points and values of a table that do not fit",
+        "x rises from point to point, and there are as many y as x, two at least. With z, x and y both rise, and z has a "
+        "row for each x with a value for each y.",
         "{x: [0, 0], y: [1, 2]}",
         "{x: [0, 1], y: [1, 2]}",
     ),
