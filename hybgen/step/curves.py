@@ -17,12 +17,18 @@ Define = Callable[[str, Scaled], Scaled]
 
 def curve(table: StepTable, x: Scaled, span: Span, define: Define) -> Scaled:
     """table(x)."""
-    return _line(table.x, table.y, define(f"{table.name} at", x), span)
+    return _line(table.x, table.y, define(f"{table.name} at", _among(table.x, x, span)), span)
+
+
+def _among(points: Numbers, x: Scaled, span: Span) -> Scaled:
+    """x with places that the points have room for too."""
+    return _to(x, min(x.places, room(max(abs(p) for p in points))), span)
 
 
 def grid(table: StepGrid, x: Scaled, y: Scaled, span: Span, define: Define) -> Scaled:
     """table(x, y): between two rows' curves of x (the rows are those of y)."""
-    x, y = define(f"{table.name} at x", x), define(f"{table.name} at y", y)
+    x = define(f"{table.name} at x", _among(table.x, x, span))
+    y = define(f"{table.name} at y", _among(table.y, y, span))
     rows = [
         define(f"{table.name} row {j}", _line(table.x, [z[j] for z in table.z], x, span)) for j in range(len(table.y))
     ]
