@@ -11,7 +11,7 @@ import pytest
 from tests.conftest import ROOT
 
 MAY = {
-    "version": set(), "diag": set(), "kernels": set(), "expr": {"diag"}, "law": {"diag", "expr"}, "numbers": {"expr"},
+    "version": set(), "diag": set(), "kernels": set(), "expr": {"diag"}, "law": {"diag", "expr"}, "numbers": {"expr", "kernels"},
     "step": {"diag", "expr", "law", "kernels", "numbers"}, "reference": {"expr", "law", "numbers", "kernels", "step"}, "ir": {"kernels"},
     "lower": {"diag", "expr", "law", "step", "ir", "kernels", "version"}, "emit": {"ir", "kernels"},
     "checks": {"diag", "expr", "law", "step"}, "pipeline": {"law", "step", "lower", "emit", "reread"},

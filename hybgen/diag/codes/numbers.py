@@ -103,4 +103,33 @@ NUMBERS = (
         "gain: a / b    # with b: {range: [-1, 1]}",
         "gain: a / max(b, 0.01)",
     ),
+    Code(
+        "HG430",
+        "rounding",
+        "note",
+        "the rounding error of a computed jump condition",
+        "The comparison is moved outward by the bound of its rounding error, so that rounding never causes a jump; it is due at "
+        "the latest where the law's comparison holds with the margin.",
+        "set: (a + b) / 2 >= 0.3 m",
+        "set: (a + b) / 2 >= 0.3 m    # see the margin",
+    ),
+    Code(
+        "HG431",
+        "rounding",
+        "warning",
+        "a computed jump condition without a bound of its rounding error",
+        "A quantity without a range, or a division or function that reaches an end of its domain, leaves no bound: the comparison "
+        "stands as written, and rounding may cause a jump that the law forbids.",
+        "x: {}    # set: 3 * x + u >= 0.7",
+        "x: {range: [-2, 2]}",
+    ),
+    Code(
+        "HG432",
+        "rounding",
+        "warning",
+        "a jump condition that its own rounding error hides",
+        "The margin by which the comparison is moved is larger than the comparison can ever hold by: the jump can't happen.",
+        "set: 1e9 * x - 1e9 * y >= 20    # number: float32",
+        "number: float64",
+    ),
 )
