@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
+from dataclasses import replace
 from fractions import Fraction
 
 from hybgen.diag.span import Span
 from hybgen.expr.core import Node, Op, integer, op
 from hybgen.step.model import StepGrid, StepTable
-from hybgen.step.scaled import MOST, Scaled, added, constant, multiplied, raw, room
+from hybgen.step.scaled import MOST, Scaled, added, constant, multiplied, raw, rescaled, room
 
 Numbers = Sequence[Fraction]
 Define = Callable[[str, Scaled], Scaled]
@@ -44,8 +45,7 @@ def grid(table: StepGrid, x: Scaled, y: Scaled, span: Span, define: Define) -> S
 def _to(value: Scaled, places: int, span: Span) -> Scaled:
     if value.places == places:
         return value
-    low, high = (max(-MOST, min(MOST, raw(e, places))) for e in value.ends)
-    return Scaled(op("fixed_scale", value.node, integer(places - value.places), span=span), places, low, high)
+    return rescaled(value, places, span)
 
 
 def _line(xs: Numbers, ys: Numbers, x: Scaled, span: Span) -> Scaled:
@@ -62,7 +62,7 @@ def _line(xs: Numbers, ys: Numbers, x: Scaled, span: Span) -> Scaled:
 
 def _to_constant(made: Scaled, value: Fraction, places: int, span: Span) -> Scaled:
     found = raw(value, places)
-    return Scaled(integer(found, span), places, found, found)
+    return Scaled(integer(found, span), places, found, found, Fraction(2) ** -(places + 1))
 
 
 def _segment(start: Fraction, ys: Numbers, slope: Fraction, x: Scaled, places: int, span: Span) -> Scaled:
@@ -73,7 +73,11 @@ def _segment(start: Fraction, ys: Numbers, slope: Fraction, x: Scaled, places: i
     first, second, third, *shifts = (integer(n, span) for n in numbers)
     ends = sorted(raw(y, places) for y in ys)
     node = op("fixed_line", first, second, x.node, third, *shifts, span=span)
-    return Scaled(node, places, max(-MOST, ends[0] - 1), min(MOST, ends[1] + 1))
+    found = Scaled(node, places, max(-MOST, ends[0] - 1), min(MOST, ends[1] + 1))
+    # rounding of the result and of y, of the slope along the run, of the start; the error of x along the slope
+    run = abs(ys[1] - ys[0]) / abs(slope) if slope else Fraction(0)
+    error = 2 * found.half + Fraction(2) ** -(fine + 1) * run + abs(slope) * (x.half + x.error)
+    return replace(found, error=error)
 
 
 def _chosen(
@@ -93,4 +97,6 @@ def _chosen(
     whole: Op = op("select", op("le", x.node, points[0]), _to(first, places, span).node, inner, span=span)
     ends = [*first.ends, *last.ends, *(e for c in cells for e in c.ends)]
     low, high = raw(min(ends), places), raw(max(ends), places)
-    return Scaled(whole, places, max(-MOST, low), min(MOST, high))
+    # a point that rounding moves, or an error of x, may choose the neighbour: both lines meet at the point
+    error = 2 * max([c.error for c in cells] + [first.error, last.error])
+    return Scaled(whole, places, max(-MOST, low), min(MOST, high), error)

@@ -7,18 +7,16 @@ is stored is rounded to the places of the state and held; so every leaf's interv
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Mapping
-from dataclasses import dataclass, field, replace
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
 from fractions import Fraction
 
 from hybgen.diag.finding import Findings
 from hybgen.diag.span import Span
-from hybgen.expr.core import FALSE, INT, REAL, TRUE, Const, Node, Op, Ref, RefKind, integer, op, truth
-from hybgen.expr.fold import decide
-from hybgen.kernels.word import ELEMENTARY
+from hybgen.expr.core import INT, REAL, Const, Node, Op, Ref, RefKind, integer, op
 from hybgen.law.model import Law, Value
-from hybgen.numbers.bounds import Bounds, Range
-from hybgen.step.curves import curve, grid
+from hybgen.numbers.bounds import Bounds
+from hybgen.step.elaborate import Elaborator, Key, Leaf
 from hybgen.step.model import (
     Definition,
     Rule,
@@ -29,39 +27,27 @@ from hybgen.step.model import (
     StepOutput,
     StepParameter,
     StepState,
-    StepTable,
 )
 from hybgen.step.scaled import (
     MOST,
     Refused,
     Scaled,
-    added,
-    common,
-    constant,
-    divided,
-    fitted,
-    multiplied,
-    ordered,
     raw,
     rescaled,
     room,
 )
-
-Key = tuple[RefKind, str]
-_REALS = ("lt", "le", "gt", "ge")
 
 
 def in_fixed_point(made: StepLaw, bounds: Bounds, findings: Findings) -> StepLaw:
     """The step law on raw integers; findings where a range is missing, nothing fits, or an operation is not defined everywhere."""
     leaves = _leaves(made, findings)
     findings.stop()
-    fixed = _Fixed(made, bounds, findings, leaves, {})
-    return fixed.built()
+    return _Fixed(made, leaves, Elaborator(made, bounds, findings, leaves, {})).built()
 
 
-def _leaves(made: StepLaw, findings: Findings) -> dict[Key, tuple[int, int, int]]:
+def _leaves(made: StepLaw, findings: Findings) -> dict[Key, Leaf]:
     """(places, lowest raw, highest raw) of inputs, parameters and states."""
-    found: dict[Key, tuple[int, int, int]] = {}
+    found: dict[Key, Leaf] = {}
     for u in made.inputs:
         if u.type == REAL:
             held = [Fraction(u.initial), Fraction(u.substitute)]
@@ -108,33 +94,28 @@ def _between(
     return places, min(raws), max(raws)
 
 
-@dataclass(slots=True)
+@dataclass(frozen=True, slots=True)
 class _Fixed:
     """The elaboration of one step law."""
 
     made: StepLaw
-    bounds: Bounds
-    findings: Findings
-    leaves: Mapping[Key, tuple[int, int, int]]
-    locals: dict[str, Scaled]
-    known: dict[Node, Scaled] = field(default_factory=dict)
-    more: list[Definition] = field(default_factory=list)
-    """Every definition, those of the elaboration too, each before its use."""
+    leaves: Mapping[Key, Leaf]
+    expressions: Elaborator
 
     def built(self) -> StepLaw:
         made = self.made
         for d in made.definitions:
-            self.more.append(self.definition(d))
+            self.expressions.more.append(self.definition(d))
         outputs = tuple(self.output(o) for o in made.outputs)
         fixed = replace(
             made,
             inputs=tuple(self.input(u) for u in made.inputs),
             parameters=tuple(self.parameter(p) for p in made.parameters),
-            rules=tuple(Rule(self.condition(r.condition), r.text, r.span) for r in made.rules),
+            rules=tuple(Rule(self.expressions.condition(r.condition), r.text, r.span) for r in made.rules),
             states=tuple(self.state(x) for x in made.states),
             alarms=(),
             jumps=tuple(self.jump(j) for j in made.jumps),
-            flow_condition=None if made.flow_condition is None else self.condition(made.flow_condition),
+            flow_condition=None if made.flow_condition is None else self.expressions.condition(made.flow_condition),
             outputs=tuple(o for o, _ in outputs),
             flow=tuple(self.assign(a) for a in made.flow),
             sample=tuple(self.assign(a) for a in made.sample),
@@ -144,8 +125,13 @@ class _Fixed:
             places={k: v[0] for k, v in self.leaves.items()}
             | {(RefKind.OUTPUT, o.name): places for o, places in outputs if places is not None},
         )
-        self.findings.stop()
-        return replace(fixed, definitions=tuple(self.more), tables=())
+        self.expressions.findings.stop()
+        return replace(
+            fixed,
+            definitions=tuple(self.expressions.more),
+            tables=(),
+            bounds=tuple(dict.fromkeys(self.expressions.records)),
+        )
 
     # ------------------------------------------------------------------ declarations
 
@@ -173,24 +159,25 @@ class _Fixed:
 
     def definition(self, d: Definition) -> Definition:
         if d.expr.type == REAL:
-            value = self.real(d.expr)
+            value = self.expressions.real(d.expr)
             named = Ref(RefKind.LOCAL, d.name, INT, None, d.span)
-            self.locals[d.name] = replace(value, node=named)
+            self.expressions.locals[d.name] = replace(value, node=named)
             return replace(d, expr=value.node)
-        return replace(d, expr=self.other(d.expr))
+        return replace(d, expr=self.expressions.other(d.expr))
 
     def jump(self, j: StepJump) -> StepJump:
-        return replace(j, condition=self.condition(j.condition), assigns=tuple(self.assign(a) for a in j.assigns))
-
-    def condition(self, node: Node) -> Node:
-        return decide(self.other(node))
+        if self.made.law.thresholds == "safe":
+            self.expressions.asking = j.name
+        condition = self.expressions.condition(j.condition)
+        self.expressions.asking = ""
+        return replace(j, condition=condition, assigns=tuple(self.assign(a) for a in j.assigns))
 
     def assign(self, a: StepAssign) -> StepAssign:
         if a.expr.type != REAL:
-            return replace(a, expr=self.other(a.expr))
+            return replace(a, expr=self.expressions.other(a.expr))
         places, low, high = self.leaves[(RefKind.STATE, a.state)]
         ends = (low, high)
-        expr = self.stored(self.real(a.expr), places, ends, a.span)
+        expr = self.stored(self.expressions.real(a.expr), places, ends, a.span)
         inside = self.made.law.state(a.state).limit and a.clamp is not None
         return replace(a, expr=expr, guarded=False, clamp=(low, high) if inside else None)
 
@@ -212,8 +199,8 @@ class _Fixed:
 
     def output(self, o: StepOutput) -> tuple[StepOutput, int | None]:
         if o.expr.type != REAL:
-            return replace(o, expr=self.other(o.expr)), None
-        value = self.real(o.expr)
+            return replace(o, expr=self.expressions.other(o.expr)), None
+        value = self.expressions.real(o.expr)
         low, high = -MOST, MOST
         clamp: tuple[Value, Value] | None = None
         places = value.places
@@ -224,199 +211,3 @@ class _Fixed:
             clamp = (low, high)
         node = self.stored(value, places, (low, high), o.span)
         return replace(o, expr=node, guarded=False, fallback=0, clamp=clamp), places
-
-    # ------------------------------------------------------------------ expressions
-
-    def other(self, node: Node) -> Node:
-        """A boolean, integer or enumeration: its parts that are real are elaborated."""
-        match node:
-            case Op(op="finite"):
-                return TRUE
-            case Op() if node.op in _REALS and node.args[0].type == REAL:
-                return self.tried(node, lambda: self.comparison(node)) or FALSE
-            case Op(op="to_steps"):
-                return self.tried(node, lambda: self.steps(node)) or integer(0)
-            case Op():
-                return Op(node.op, tuple(self.other(a) for a in node.args), node.type, node.table, node.span)
-            case _:
-                return node
-
-    def steps(self, node: Op) -> Node:
-        value = self.real(node.args[0])
-        if value.places < 0:
-            value = rescaled(value, 0, node.span)
-        return op("fixed_steps", value.node, integer(value.places), span=node.span)
-
-    def comparison(self, node: Op) -> Node:
-        """With a constant: exact, whatever its digits (thresholds: nearest - the nearest raw value)."""
-        left, right = node.args
-        mirror = {"lt": "gt", "gt": "lt", "le": "ge", "ge": "le"}
-        if isinstance(right, Const):
-            return self.against(node.op, self.real(left), Fraction(right.value), node.span)
-        if isinstance(left, Const):
-            return self.against(mirror[node.op], self.real(right), Fraction(left.value), node.span)
-        return ordered(node.op, self.real(left), self.real(right), node.span)
-
-    def against(self, name: str, x: Scaled, value: Fraction, span: Span) -> Node:
-        exact = value * Fraction(2) ** x.places
-        if self.made.law.thresholds == "nearest":
-            edge = round(exact)
-        else:
-            edge = math.ceil(exact) if name in ("ge", "lt") else math.floor(exact)
-        if abs(edge) > MOST:
-            return truth((edge > 0) is (name in ("lt", "le")), span)
-        return op(name, x.node, integer(edge, span), span=span)
-
-    def tried(self, node: Node, make: Callable[[], Node]) -> Node | None:
-        """What `make` gives; a finding where it refuses."""
-        try:
-            return make()
-        except Refused as refused:
-            self.findings.error("HG422", node.span, f"fixed32: {refused}", hint="limit it first, such as max(x, 0.01)")
-            return None
-
-    def real(self, node: Node) -> Scaled:
-        """A real expression."""
-        found = self.known.get(node)
-        if found is None:
-            try:
-                found = self.computed(node)
-            except Refused as refused:
-                self.findings.error(
-                    "HG422", node.span, f"fixed32: {refused}", hint="limit it first, such as max(x, 0.01)"
-                )
-                found = Scaled(integer(0), 0, 0, 0)
-            self.known[node] = found
-        return found
-
-    def computed(self, node: Node) -> Scaled:
-        match node:
-            case Const():
-                return constant(Fraction(node.value), node.span)
-            case Ref(kind=RefKind.LOCAL):
-                return self.locals[node.name]
-            case Ref():
-                places, low, high = self.leaves[(node.kind, node.name)]
-                return Scaled(Ref(node.kind, node.name, INT, node.index, node.span), places, low, high)
-            case Op():
-                return self.operation(node)
-
-    def operation(self, node: Op) -> Scaled:
-        span = node.span
-        match node.op:
-            case "select":
-                yes, no = common([self.real(a) for a in node.args[1:]], span)
-                made = op("select", self.condition(node.args[0]), yes.node, no.node, span=span)
-                return Scaled(made, yes.places, min(yes.low, no.low), max(yes.high, no.high))
-            case "to_real":
-                known: Range = self.bounds.of(node.args[0])
-                low, high = max(-MOST, math.floor(known.low)), min(MOST, math.ceil(known.high))
-                return Scaled(self.other(node.args[0]), 0, low, high)
-        args = [self.real(a) for a in node.args]
-        match node.op:
-            case "add" | "sub":
-                return added(args[0], args[1], node.op == "sub", span)
-            case "mul":
-                return multiplied(args[0], args[1], span)
-            case "div":
-                return divided(args[0], args[1], span)
-            case "floor":
-                return self.floor(args[0], span)
-            case "sign":
-                return Scaled(op("isign", args[0].node, span=span), 0, -1, 1)
-            case "lookup" | "lookup2":
-                table = next(t for t in self.made.tables if t.name == node.table)
-                if isinstance(table, StepTable):
-                    return curve(table, args[0], span, self.defined(span))
-                return grid(table, args[0], args[1], span, self.defined(span))
-        if node.op in ELEMENTARY:
-            return _elementary(node.op, args, span)
-        return _chosen(node.op, args, span)
-
-    def defined(self, span: Span) -> Callable[[str, Scaled], Scaled]:
-        """Makes definitions; their names have blanks, so no name of the author is the same."""
-
-        def define(name: str, value: Scaled) -> Scaled:
-            if not isinstance(value.node, Op):
-                return value
-            unique = f"{name} number {len(self.more) + 1}"
-            self.more.append(Definition(unique, value.node, span, name))
-            return replace(value, node=Ref(RefKind.LOCAL, unique, INT, None, span))
-
-        return define
-
-    def floor(self, x: Scaled, span: Span) -> Scaled:
-        if x.places <= 0:
-            return x
-        low, high = (math.floor(e) for e in x.ends)
-        return Scaled(op("fixed_floor", x.node, integer(x.places), span=span), 0, low, high)
-
-
-def _chosen(name: str, args: list[Scaled], span: Span) -> Scaled:
-    """neg, abs, min, max, clamp: no rounding, but to common places."""
-    args = common(args, span)
-    low, high = args[0].low, args[0].high
-    match name:
-        case "neg":
-            low, high = -high, -low
-        case "abs":
-            low, high = max(low, -high, 0), max(-low, high)
-        case "min":
-            low, high = min(low, args[1].low), min(high, args[1].high)
-        case "max":
-            low, high = max(low, args[1].low), max(high, args[1].high)
-        case "clamp":
-            least, most = args[1:]
-            low, high = (
-                max(min(least.low, most.low), min(low, most.low)),
-                min(max(least.high, most.high), max(high, least.high)),
-            )
-    return Scaled(op(f"i{name}", *(a.node for a in args), span=span), args[0].places, low, high)
-
-
-_SLACK = Fraction(1, 10**6)
-
-
-def _elementary(name: str, args: list[Scaled], span: Span) -> Scaled:
-    """An elementary function, on an interval inside its domain."""
-    low, high = _image(name, [(float(a.ends[0]), float(a.ends[1])) for a in args])
-    wide = [Fraction(low) - _SLACK * (1 + abs(Fraction(low))), Fraction(high) + _SLACK * (1 + abs(Fraction(high)))]
-    most = {"sin": 30, "cos": 30, "tanh": 30, "asin": 30, "acos": 29, "atan2": 29, "wrap": 29}.get(name, 62)
-
-    def make(places: int) -> Node:
-        shifts = [*(a.places for a in args), places]
-        return op(f"fixed_{name}", *(a.node for a in args), *map(integer, shifts), span=span)
-
-    return fitted(wide[0], wide[1], most, make)
-
-
-def _image(name: str, ends: list[tuple[float, float]]) -> tuple[float, float]:
-    """The interval of an elementary function's results."""
-    low, high = ends[0]
-    match name:
-        case "sqrt":
-            if low < 0:
-                raise Refused(f"sqrt() of a number that can be {low:.6g}")
-            return math.sqrt(low), math.sqrt(high)
-        case "log":
-            if low <= 0:
-                raise Refused(f"log() of a number that can be {low:.6g}")
-            return math.log(low), math.log(high)
-        case "exp":
-            if high > 40:
-                raise Refused(f"exp() of a number that can be {high:.6g}")
-            return math.exp(max(low, -700.0)), math.exp(high)
-        case "asin" | "acos":
-            if low < -1 or high > 1:
-                raise Refused(f"{name}() of a number between {low:.6g} and {high:.6g}")
-            return (-1.5707964, 1.5707964) if name == "asin" else (0.0, 3.1415927)
-        case "tan":
-            if low <= -1.57 or high >= 1.57:
-                raise Refused(f"tan() of an angle between {low:.6g} and {high:.6g}: pi/2 may be among them")
-            return math.tan(low), math.tan(high)
-        case "hypot":
-            return 0.0, math.hypot(*(max(-a, b) for a, b in ends))
-        case "atan2" | "wrap":
-            return -3.1415927, 3.1415927
-        case _:
-            return -1.0, 1.0

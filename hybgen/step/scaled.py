@@ -7,7 +7,7 @@ room for. Intervals are exact fractions, so this is a proof, operation by operat
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 
 from hybgen.diag.span import Span
@@ -31,6 +31,18 @@ class Scaled:
     places: int
     low: int
     high: int
+    error: Fraction = Fraction(0)
+    """How far the value is from the law's at most, where the law's is exact in real numbers."""
+
+    @property
+    def half(self) -> Fraction:
+        """Half a unit: the error of one rounding."""
+        return Fraction(2) ** -(self.places + 1)
+
+    @property
+    def size(self) -> Fraction:
+        """The largest magnitude."""
+        return max(abs(e) for e in self.ends)
 
     @property
     def ends(self) -> tuple[Fraction, Fraction]:
@@ -56,10 +68,17 @@ def raw(value: Fraction, places: int) -> int:
     return round(value * Fraction(2) ** places)
 
 
-def fitted(low: Fraction, high: Fraction, most: int, make: Callable[[int], Node]) -> Scaled:
-    """A result in [low, high], with at most `most` places; `make` gives its node for the places chosen."""
+def fitted(
+    low: Fraction, high: Fraction, most: int, make: Callable[[int], Node], error: Fraction, exact: int | None = None
+) -> Scaled:
+    """A result in [low, high], with at most `most` places; `make` gives its node for the places chosen.
+
+    `error` is that of the operands; with `exact` places or more the operation itself does not round.
+    """
     places = min(most, room(max(abs(low), abs(high))))
-    return Scaled(make(places), places, raw(low, places), raw(high, places))
+    found = Scaled(make(places), places, raw(low, places), raw(high, places))
+    rounds = exact is None or places < exact
+    return replace(found, error=error + (found.half if rounds else 0))
 
 
 def constant(value: Fraction, span: Span) -> Scaled:
@@ -69,7 +88,8 @@ def constant(value: Fraction, span: Span) -> Scaled:
     if value.denominator == 1 << exact:
         places = min(places, exact)
     found = raw(value, places)
-    return Scaled(integer(found, span), places, found, found)
+    off = abs(value - found * Fraction(2) ** -places)
+    return Scaled(integer(found, span), places, found, found, off)
 
 
 def rescaled(x: Scaled, places: int, span: Span) -> Scaled:
@@ -78,9 +98,9 @@ def rescaled(x: Scaled, places: int, span: Span) -> Scaled:
         return x
     low, high = (max(-MOST, min(MOST, raw(e, places))) for e in x.ends)
     left = max(-FINEST, min(31, places - x.places))
-    if isinstance(x.node, Const):
-        return Scaled(integer(low, span), places, low, high)
-    return Scaled(op("fixed_scale", x.node, integer(left), span=span), places, low, high)
+    node = integer(low, span) if isinstance(x.node, Const) else op("fixed_scale", x.node, integer(left), span=span)
+    found = Scaled(node, places, low, high)
+    return replace(found, error=x.error + (found.half if places < x.places else 0))
 
 
 def common(values: list[Scaled], span: Span) -> list[Scaled]:
@@ -106,7 +126,7 @@ def added(a: Scaled, b: Scaled, minus: bool, span: Span) -> Scaled:
         shifts = (top - a.places, top - b.places, top - places)
         return op("fixed_add", a.node, other, *map(integer, shifts), span=span)
 
-    return fitted(low, high, top, make)
+    return fitted(low, high, top, make, a.error + b.error, top)
 
 
 def _joined(x: Scaled, other: Scaled, span: Span) -> Scaled:
@@ -123,7 +143,8 @@ def multiplied(a: Scaled, b: Scaled, span: Span) -> Scaled:
     def make(places: int) -> Node:
         return op("fixed_mul", a.node, b.node, integer(min(FINEST, whole - places)), span=span)
 
-    return fitted(min(ends), max(ends), whole, make)
+    error = a.size * b.error + b.size * a.error + a.error * b.error
+    return fitted(min(ends), max(ends), whole, make, error, whole)
 
 
 def divided(a: Scaled, b: Scaled, span: Span) -> Scaled:
@@ -135,7 +156,11 @@ def divided(a: Scaled, b: Scaled, span: Span) -> Scaled:
     def make(places: int) -> Node:
         return op("fixed_div", a.node, b.node, integer(max(-31, places - a.places + b.places)), span=span)
 
-    return fitted(min(ends), max(ends), a.places - b.places + 31, make)
+    least = min(abs(e) for e in b.ends) - b.error
+    if least <= 0:
+        raise Refused("the divisor is as small as its own rounding error")
+    error = (a.error + max(abs(e) for e in ends) * b.error) / least
+    return fitted(min(ends), max(ends), a.places - b.places + 31, make, error)
 
 
 def ordered(name: str, a: Scaled, b: Scaled, span: Span) -> Node:
