@@ -40,6 +40,22 @@ class Domain:
     tables: Mapping[str, tuple[float, float, float]]
     """name -> (steepest slope of all inputs together, largest magnitude, largest magnitude of a point)"""
 
+    def rounding(self, value: Fraction) -> float:
+        """How far a constant is from its number of the format, rounded up; infinite beyond the format's range."""
+        try:
+            off = abs(value - self.format.round(value))
+        except OverflowError:
+            return math.inf
+        return math.nextafter(nearest(off), math.inf) if off else 0.0
+
+
+def nearest(value: Fraction) -> float:
+    """The float next to a fraction, infinite beyond the range."""
+    try:
+        return float(value)
+    except OverflowError:
+        return math.inf if value > 0 else -math.inf
+
 
 class Unbounded(Exception):
     """A leaf has no range; the message names it."""
@@ -124,7 +140,7 @@ def _ends(leaves: list[Leaf], domain: Domain) -> list[tuple[float, float]]:
     for kind, name, _ in leaves:
         if (kind, name) not in domain.leaves:
             raise Unbounded(name)
-        found.append(tuple(float(e) for e in domain.leaves[(kind, name)]))
+        found.append(tuple(nearest(e) for e in domain.leaves[(kind, name)]))
     return [(np.nextafter(a, -np.inf), np.nextafter(b, np.inf)) for a, b in found]
 
 
@@ -193,9 +209,9 @@ class _Evaluator:
         match node:
             case Const():
                 exact = Fraction(node.value)
-                off = abs(exact - self.domain.format.round(exact)) if node.type.kind is Kind.REAL else 0
-                value = self.full(float(exact))
-                return Enclosure(_down(value), _up(value), _up(self.full(float(off))) if off else self.full(0.0))
+                value = self.full(nearest(exact))
+                off = self.domain.rounding(exact) if node.type.kind is Kind.REAL else 0.0
+                return Enclosure(_down(value), _up(value), self.full(off))
             case Ref(kind=RefKind.TERM):
                 return self.of(self.domain.terms[(node.name, node.index)])
             case Ref():

@@ -66,14 +66,7 @@ def _leaves(made: StepLaw, findings: Findings) -> dict[Key, Leaf]:
 def _state(x: StepState, law: Law, findings: Findings) -> tuple[int, int, int]:
     """A state that is not limited may reach every raw value: it gets room for twice its range."""
     declared = law.state(x.name)
-    if declared.low is None or declared.high is None:
-        findings.error(
-            "HG420",
-            x.span,
-            f"fixed32 needs a range for state '{x.name}': its resolution follows from it",
-            hint="declare range: [lowest, highest]",
-        )
-        return 0, 0, 0
+    assert declared.low is not None and declared.high is not None, "every real state has a range"
     if declared.limit:
         return _between(declared.low, declared.high, x.name, x.span, findings, [])
     places, _, _ = _between(2 * declared.low, 2 * declared.high, x.name, x.span, findings, [])

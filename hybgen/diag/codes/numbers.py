@@ -76,15 +76,6 @@ NUMBERS = (
         "thresholds: safe",
     ),
     Code(
-        "HG420",
-        "rounding",
-        "error",
-        "a state without a range in fixed point",
-        "In fixed32 each quantity has a scale that follows from its range: a state needs one too.",
-        "x: {initial: 0}",
-        "x: {range: [-2, 2], initial: 0}",
-    ),
-    Code(
         "HG421",
         "rounding",
         "error",
