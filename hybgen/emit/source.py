@@ -26,6 +26,10 @@ CAUTIONS = (
     "Caution: this code can move machines. It was checked against its law in simulation, and simulation is not a "
     "safety case. Local codes, functional-safety standards and a qualified review decide whether it may be used."
 )
+_FIXED = (
+    "Numbers are raw: value * 2^n as int32_t, with n as given for each member (Qm.n), rounded half to even and",
+    "held at the ends; INT32_MIN means no number.",
+)
 _ORDER = ("self", "p", "u", "now", "y")
 
 
@@ -51,9 +55,9 @@ def _environment() -> Any:
     )
 
 
-def emit(program: Program) -> dict[str, str]:
-    """The two files, by name."""
-    pages = _Pages(program, Writer(program))
+def emit(program: Program, conversions: bool = False) -> dict[str, str]:
+    """The two files, by name; `conversions`: with functions between physical and raw values (fixed point)."""
+    pages = _Pages(program, Writer(program), conversions)
     environment = _environment()
     return {
         f"{program.name}.h": environment.get_template("law.h.jinja").render(pages.header()),
@@ -67,12 +71,14 @@ class _Pages:
 
     program: Program
     writer: Writer
+    conversions: bool
 
     def header(self) -> dict[str, Any]:
         program = self.program
         about = textwrap.wrap(comment(f"{program.name}: {program.about}" if program.about else program.name), 100)
         return {
             "name": program.name,
+            "conversions": list(self.converted()) if self.conversions else [],
             "upper": program.name.upper(),
             "guard": f"{program.name.upper()}_H",
             "about": about,
@@ -102,6 +108,7 @@ class _Pages:
             f"Made by hybgen {program.version} from {comment(program.origin)}, SHA-256",
             f"  {program.digest}",
             f"step {program.step}, numbers {program.number}, integration {program.method}",
+            *(_FIXED if program.number == "fixed32" else ()),
             "Compile as C99 (or C++) with -ffp-contract=off, without -ffast-math.",
         ]
 
@@ -129,6 +136,20 @@ class _Pages:
         if not members:
             return [{"text": f"uint8_t none; /* this law has no {word} */"}]
         return [{"text": self.member(m)} for m in members]
+
+    def converted(self) -> Iterator[dict[str, str]]:
+        """The members that are scaled, each name once, with the factor 2**places."""
+        taken = {t.name for t in self.program.tables}
+        for m in (*self.program.inputs, *self.program.parameters, *self.program.outputs):
+            if m.places is not None:
+                names = {}
+                for word in ("raw", "physical"):
+                    name = f"{self.program.name}_{word}_{m.name}"
+                    while name in taken:
+                        name += "_"
+                    taken.add(name)
+                    names[word] = name
+                yield {**names, "factor": f"{2.0**m.places!r}", "inverse": f"{2.0**-m.places!r}"}
 
     def member(self, m: Member) -> str:
         size = "" if m.size is None else f"[{m.size}]"
