@@ -1,0 +1,192 @@
+"""Which steps a self-test makes: a run from the start, then steps from placed states, as few as tell the law from its mutants
+and take each jump, as far as the stimulus can.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass, replace
+
+import numpy as np
+from numpy.typing import NDArray
+
+from hybgen.expr.core import Kind
+from hybgen.reference import Reference
+from hybgen.reference.machine import Fields, layout
+from hybgen.selftests.mutants import mutants
+from hybgen.sil.lockstep import differs
+from hybgen.sil.vectors import Stimulus
+from hybgen.step.model import Status, StepLaw
+
+Mask = NDArray[np.bool_]
+SALT = 0x5E1F
+RUN = 24
+"""Steps from the start."""
+PLACED = 72
+"""At most so many steps from placed states."""
+LANES = 4096
+ROUNDS = 4
+
+
+@dataclass(frozen=True, slots=True)
+class Vectors:
+    """Steps and what the reference makes of them; first axis: steps (of `states`: one more, the state after start first)."""
+
+    inputs: Fields
+    placed: Fields
+    """The states from which the last steps start."""
+    states: Fields
+    outputs: Fields
+    status: NDArray[np.uint32]
+    run: int
+    """Steps from the start; each of the others starts from a placed state."""
+    told: int
+    mutants: int
+    """So many small changes of the law were tried, and so many of them do these steps tell from it."""
+    jumps: tuple[str, ...]
+    """The jumps that are taken."""
+
+
+@dataclass(frozen=True, slots=True)
+class _Pool:
+    """Candidates: one step of each lane."""
+
+    states: Fields
+    inputs: Fields
+
+    def taken(self, lanes: list[int]) -> _Pool:
+        return _Pool({n: a[lanes] for n, a in self.states.items()}, {n: a[lanes] for n, a in self.inputs.items()})
+
+    def stepped(self, made: StepLaw) -> tuple[Reference, Fields]:
+        """The reference after the step, and the outputs."""
+        twin = Reference(made, lanes=len(self.states["jumps"]))
+        for name, array in self.states.items():
+            twin.fields[name][...] = array
+        return twin, twin._advance(self.inputs)
+
+
+def _joined(pools: list[_Pool]) -> _Pool:
+    states = {n: np.concatenate([p.states[n] for p in pools]) for n in pools[0].states}
+    return _Pool(states, {n: np.concatenate([p.inputs[n] for p in pools]) for n in pools[0].inputs})
+
+
+def vectors(made: StepLaw) -> Vectors:
+    """The steps of a law's self-test: the same at every call."""
+    stimulus = Stimulus.of(made, SALT)
+    changed = mutants(made)
+    samples, reached = _from_start(made, stimulus)
+    open_ = list(range(len(changed)))
+    goals: set[str] = set()
+    chosen: list[_Pool] = []
+    room = PLACED
+    for k in range(ROUNDS):
+        pool = _Pool(stimulus.states(LANES), _first(stimulus.inputs(1, LANES)))
+        if k % 2:
+            pool = _Pool(_shuffled(reached, stimulus.random), pool.inputs)
+        lanes = _cover(made, pool, [changed[i] for i in open_], goals, room)
+        if lanes:
+            chosen.append(pool.taken(lanes))
+            told = [_tells(made, chosen[-1], changed[i]).any() for i in open_]
+            open_ = [i for i, t in zip(open_, told, strict=True) if not t]
+            room -= len(lanes)
+    if not chosen:
+        chosen = [_Pool(stimulus.states(1), _first(stimulus.inputs(1, 1)))]
+    return _played(made, samples, _joined(chosen), (len(changed) - len(open_), len(changed)))
+
+
+def _first(inputs: Fields) -> Fields:
+    return {n: a[0] for n, a in inputs.items()}
+
+
+def _shuffled(states: Fields, random: np.random.Generator) -> Fields:
+    order = random.permutation(len(states["jumps"]))[:LANES]
+    return {n: a[order] for n, a in states.items()}
+
+
+def _from_start(made: StepLaw, stimulus: Stimulus) -> tuple[Fields, Fields]:
+    """Samples of the run that sees most (kinds of status and last jumps), and the states that all runs reached."""
+    lanes, steps = 256, RUN
+    twin = Reference(made, lanes=lanes)
+    inputs = stimulus.inputs(steps, lanes)
+    seen = np.zeros((lanes, 32 * (len(made.jumps) + 1)), bool)
+    reached: list[Fields] = []
+    for k in range(steps):
+        twin._advance({n: a[k] for n, a in inputs.items()})
+        seen[np.arange(lanes), 32 * twin.fields["last_jump"].astype(np.int64) + twin.state_status] = True
+        reached.append({n: a.copy() for n, a in twin.fields.items()})
+    best = int(seen.sum(axis=1).argmax())
+    names = reached[0]
+    return {n: a[:, best] for n, a in inputs.items()}, {n: np.concatenate([r[n] for r in reached]) for n in names}
+
+
+def _tells(made: StepLaw, pool: _Pool, other: StepLaw) -> Mask:
+    """In which lanes a step of another law differs."""
+    (twin, outputs), (changed, given) = pool.stepped(made), pool.stepped(other)
+    found: Mask = twin.state_status != changed.state_status
+    for name, array in outputs.items():
+        found = found | differs(array, given[name])
+    for name, array in twin.fields.items():
+        found = found | differs(array, changed.fields[name])
+    return found
+
+
+def _cover(made: StepLaw, pool: _Pool, changed: list[StepLaw], goals: set[str], room: int) -> list[int]:
+    """Lanes that tell the mutants and reach what no goal reached yet, greedily; `goals` grows."""
+    wanted = {n: m for n, m in _events(made, pool) if n not in goals and m.any()}
+    goals |= set(wanted)
+    rows = [*wanted.values(), *(m for m in (_tells(made, pool, c) for c in changed) if m.any())]
+    if not rows:
+        return []
+    missing = np.array(rows)
+    lanes: list[int] = []
+    while len(missing) and len(lanes) < room:
+        lane = int(missing.sum(axis=0).argmax())
+        lanes.append(lane)
+        missing = missing[~missing[:, lane]]
+    return lanes
+
+
+def _events(made: StepLaw, pool: _Pool) -> Iterator[tuple[str, Mask]]:
+    """What a step can show: a jump as the first or the last of the step, a bit of the status, a mode."""
+    once, _ = pool.stepped(replace(made, jumps_per_step=1))
+    twin, _ = pool.stepped(made)
+    for j in made.jumps:
+        for words, machine in (("first", once), ("last", twin)):
+            moved = machine.fields["jumps"] != pool.states["jumps"]
+            yield f"{words} {j.name}", moved & (machine.fields["last_jump"] == j.number)
+    for bit in Status:
+        yield f"status {bit.name}", (twin.state_status & np.uint32(bit)) != 0
+    for x in made.states:
+        if x.type.kind in (Kind.ENUM, Kind.BOOL):
+            for value in range(max(2, len(x.values))):
+                yield f"{x.name} {value}", (twin.fields[x.name] == value) & (pool.states[x.name] == value)
+
+
+def _played(made: StepLaw, samples: Fields, pool: _Pool, told: tuple[int, int]) -> Vectors:
+    """All steps in one machine, in the order of the self-test."""
+    twin = Reference(made)
+    count = len(pool.states["jumps"])
+    states = [{n: a[0].copy() for n, a in twin.fields.items()}]
+    outputs: list[Fields] = []
+    status: list[int] = []
+    jumps: set[int] = set()
+    inputs = {n: np.concatenate([samples[n], pool.inputs[n]]) for n in samples}
+    for k in range(RUN + count):
+        if k >= RUN:
+            for name, array in pool.states.items():
+                twin.fields[name][...] = array[k - RUN]
+        given = twin._advance({n: a[k : k + 1] for n, a in inputs.items()})
+        jumps |= set(twin.trail)
+        outputs.append({n: a[0] for n, a in given.items()})
+        states.append({n: a[0].copy() for n, a in twin.fields.items()})
+        status.append(int(twin.state_status[0]))
+    return Vectors(
+        inputs,
+        pool.states,
+        {n: np.array([s[n] for s in states]) for n, _, _ in layout(made, "state")},
+        {n: np.array([o[n] for o in outputs]) for n, _, _ in layout(made, "outputs")},
+        np.array(status, np.uint32),
+        RUN,
+        *told,
+        tuple(j.name for j in made.jumps if j.number in jumps),
+    )
