@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hybgen.emit.kernels import functions
-from hybgen.emit.text import INDENT, real_literal, wrapped
+from hybgen.emit.text import real_literal, wrapped
 from hybgen.ir.model import Apply, Program
 from hybgen.ir.walk import all_values
 from hybgen.lower.names import Namer
@@ -116,16 +116,15 @@ class _Floating:
             pieces = [f"{{ {', '.join((*row, result))} }}" for row, result in zip(words, results, strict=True)]
             lines = table(type_, stem, f"[{n}][{group.arity + 1}]", pieces)
             operands = [
-                f"const {self.program.real} {x} = {self.make}({stem}[k][{i}]);" for i, x in enumerate("xyzw"[: group.arity])
+                f"const {self.program.real} {x} = {self.make}({stem}[k][{i}]);"
+                for i, x in enumerate("xyzw"[: group.arity])
             ]
             wanted = f"{stem}[k][{group.arity}]"
-        return Test(group.about, name, n, lines, _loop(n, operands, f"({self.text(group)}) != {wanted}"))
+        return Test(group.about, name, n, lines, _loop(n, operands, f"{self.text(group)} != {wanted}"))
 
     def text(self, group: Group) -> str:
         largest = real_literal(self.program.largest, self.program)
-        return group.text.format(
-            real=self.program.real, word=f"uint{self.size}_t", bits=self.bits, largest=largest
-        )
+        return group.text.format(real=self.program.real, word=f"uint{self.size}_t", bits=self.bits, largest=largest)
 
 
 def _loop(rows: int, operands: list[str], differs: str) -> list[str]:

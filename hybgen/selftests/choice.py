@@ -25,6 +25,8 @@ RUN = 24
 PLACED = 72
 """At most so many steps from placed states."""
 LANES = 4096
+TWICE = 2
+"""So often is each mutant told, where that can be."""
 ROUNDS = 4
 
 
@@ -131,18 +133,20 @@ def _tells(made: StepLaw, pool: _Pool, other: StepLaw) -> Mask:
 
 
 def _cover(made: StepLaw, pool: _Pool, changed: list[StepLaw], goals: set[str], room: int) -> list[int]:
-    """Lanes that tell the mutants and reach what no goal reached yet, greedily; `goals` grows."""
+    """Lanes that tell the mutants, and show what was not shown yet, greedily; `goals` grows by it."""
     wanted = {n: m for n, m in _events(made, pool) if n not in goals and m.any()}
     goals |= set(wanted)
     rows = [*wanted.values(), *(m for m in (_tells(made, pool, c) for c in changed) if m.any())]
     if not rows:
         return []
-    missing = np.array(rows)
+    open_ = np.array(rows)
+    need = np.minimum(TWICE, open_.sum(axis=1))
     lanes: list[int] = []
-    while len(missing) and len(lanes) < room:
-        lane = int(missing.sum(axis=0).argmax())
+    while need.any() and len(lanes) < room:
+        lane = int(open_[need > 0].sum(axis=0).argmax())
         lanes.append(lane)
-        missing = missing[~missing[:, lane]]
+        need -= open_[:, lane] & (need > 0)
+        open_[:, lane] = False
     return lanes
 
 

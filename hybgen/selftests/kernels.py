@@ -35,13 +35,15 @@ def edges(pattern: Pattern, random: np.random.Generator) -> list[int]:
     shifts = sorted({abs(a) for a in pattern if a is not None and 0 < abs(a) < 31})
     ties = [odd << (s - 1) for s in shifts for odd in (1, 3) if odd << (s - 1) <= MOST]
     sizes = [1, MOST, 1 << 30, *ties, *(int(v) for v in random.integers(2, MOST, 3))]
-    return list(dict.fromkeys(s * v for v in sizes for s in (1, -1))) + [0]
+    return [*dict.fromkeys(s * v for v in sizes for s in (1, -1)), 0]
 
 
 def rows(name: str, program: Program, random: np.random.Generator) -> tuple[Kernel, list[tuple[int, ...]]]:
     """A kernel, and rows of its arguments with the answer last. numpy and exact integers have to agree on it."""
     made = kernel(name, program.number)
-    arguments = list(dict.fromkeys(row for p in patterns(name, program) for row in _filled(p, random) if _defined(made, row)))
+    arguments = list(
+        dict.fromkeys(row for p in patterns(name, program) for row in _filled(p, random) if _defined(made, row))
+    )
     answers = function(made)(*(np.array(column, np.int32) for column in zip(*arguments, strict=True)))
     found = [(*row, int(answer)) for row, answer in zip(arguments, answers, strict=True)]
     assert all(exact(made, *row[:-1]) == row[-1] for row in found), name

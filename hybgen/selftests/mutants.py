@@ -133,8 +133,9 @@ def _of_clamps(made: StepLaw) -> Iterator[StepLaw]:
     def of_jump(j: Any) -> Iterator[Any]:
         yield from (replace(j, assigns=rows) for rows in _spread(j.assigns, others))
 
-    for name in ("flow", "sample", "outputs"):
-        yield from (replace(made, **{name: rows}) for rows in _spread(getattr(made, name), others))
+    yield from (replace(made, flow=rows) for rows in _spread(made.flow, others))
+    yield from (replace(made, sample=rows) for rows in _spread(made.sample, others))
+    yield from (replace(made, outputs=rows) for rows in _spread(made.outputs, others))
     yield from (replace(made, jumps=rows) for rows in _spread(made.jumps, of_jump))
 
 

@@ -46,7 +46,7 @@ ADD, SUB, MUL, DIV, SUMS = _set("add"), _set("sub"), _set("mul"), _set("div"), _
 
 
 def _order(x: Array, y: Array) -> Array:
-    return (x < y) + 2 * (x <= y) + 4 * (x > y) + 8 * (x >= y)
+    return np.asarray((x < y) + 2 * (x <= y) + 4 * (x > y) + 8 * (x >= y))
 
 
 def _mixed(x: Array, y: Array, z: Array, w: Array) -> Array:
@@ -56,8 +56,8 @@ def _mixed(x: Array, y: Array, z: Array, w: Array) -> Array:
 
 
 GROUPS = (
-    Group("order", "x < y, <=, >, >= (bits 1, 2, 4, 8)", (_set("order"),), 2, "({word})((x < y) ? 1 : 0) | "
-          "({word})((x <= y) ? 2 : 0) | ({word})((x > y) ? 4 : 0) | ({word})((x >= y) ? 8 : 0)", _order),
+    Group("order", "x < y, <=, >, >= (bits 1, 2, 4, 8)", (_set("order"),), 2, "(({word})((x < y) ? 1 : 0) | "
+          "({word})((x <= y) ? 2 : 0) | ({word})((x > y) ? 4 : 0) | ({word})((x >= y) ? 8 : 0))", _order),
     Group("finite", "x is finite", (_set("finite"),), 1, "({word})(((x >= -{largest}) && (x <= {largest})) ? 1 : 0)",
           lambda x: np.isfinite(x) * 1),
     Group("add", "x + y", (ADD,), 2, "{bits}(x + y)", np.add),
@@ -77,7 +77,7 @@ GROUPS = (
     Group("cancelled", "(x * y) / x (other if regrouped or in excess precision)", (MUL, DIV), 2, "{bits}((x * y) / x)",
           lambda x, y: x * y / x),
     Group("quotients", "x / w, y / w, z / w together (other if 1 / w is computed once)", (DIV,), 4,
-          "{bits}(x / w) ^ ({bits}(y / w) << 1) ^ ({bits}(z / w) << 2)", _mixed),
+          "({bits}(x / w) ^ ({bits}(y / w) << 1) ^ ({bits}(z / w) << 2))", _mixed),
     Group("tenth", "x / 10 (other if multiplied by 1 / 10)", (DIV,), 1, "{bits}(x / ({real})10)",
           lambda x: x / x.dtype.type(10)),
 )  # fmt: skip

@@ -26,7 +26,7 @@ _WORDS = (Member("last_jump", "word", None, ""), Member("jumps", "word", None, "
 def selftest(law: Law, *, step: Fraction | None = None, number: str | None = None) -> dict[str, str]:
     """NAME_selftest.c of a law, by file name; at its own step (seconds) and number format, or at others.
 
-    The C is C99 without I/O or library: `uint32_t NAME_selftest(void)` gives 0, or 1 and more for the first step that gave
+    The C is C99 without I/O or library: `uint32_t NAME_selftest(void)` gives 0, or 1 and more for the first check that found
     another bit than the reference; the head of the file says what each number means. It goes with the NAME.h and NAME.c that
     `generate` makes of the same law, step and format. Raises LawError where the law does not fit the format or the method.
     """
@@ -91,7 +91,11 @@ class _Page:
 
     def told(self) -> str:
         steps, program = self.steps, self.program
-        taken = f"takes {len(steps.jumps)} of the {len(program.jumps)} jumps of the law" if program.jumps else "has no jumps"
+        taken = (
+            f"takes {len(steps.jumps)} of the {len(program.jumps)} jumps of the law"
+            if program.jumps
+            else "has no jumps"
+        )
         missed = ", ".join(j.name for j in program.jumps if j.name not in steps.jumps)
         return (
             f"It {taken}{f' (not {missed})' if missed else ''}. Of {steps.mutants} small changes of the law (another "
@@ -117,7 +121,11 @@ class _Page:
         yield ""
         told = []
         for place, name, _, values in members((*self.program.states, *_WORDS), self.steps.states):
-            told += [f"    if ({columns.differs(f'self->{place}', f'x_{name}', values, 'k')}) {{", "        same = false;", "    }"]
+            told += [
+                f"    if ({columns.differs(f'self->{place}', f'x_{name}', values, 'k')}) {{",
+                "        same = false;",
+                "    }",
+            ]
         yield from told
         if not any("[k]" in line for line in told):
             yield "    (void)k;"

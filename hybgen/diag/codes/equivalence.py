@@ -32,6 +32,16 @@ EQUIVALENCE = (
         "—",
     ),
     Code(
+        "HG604",
+        "equality",
+        "error",
+        "the self-test fails on the host",
+        "NAME_selftest, compiled for this host, found an operation or a step of the law with another bit than the reference; the "
+        "head of NAME_selftest.c says what its number means. A compiler flag, a compiler fault, or a fault in hybgen.",
+        "CC='gcc -ffp-contract=fast'",
+        "CC=gcc",
+    ),
+    Code(
         "HG610",
         "log",
         "error",
