@@ -21,29 +21,30 @@ from hybgen.selftests.operands import Group, Operands, basics, groups
 
 # Operands pass a volatile variable, so that no compiler computes with them beforehand. The tables are not volatile
 # themselves: compilers then put them into RAM.
+# Local names are among those that no law may have (law/naming.py).
 _PUNNED = "typedef union {{ {real} number; {word} bits; }} {punned};"
-_BITS = """static {word} {bits}({real} number)
+_BITS = """static {word} {bits}({real} x)
 {{
     {punned} p;
 
-    p.number = number;
+    p.number = x;
     return p.bits;
 }}"""
 _MAKE = """/* by way of a volatile variable: nothing is computed beforehand */
-static {real} {make}({word} bits)
+static {real} {make}({word} x)
 {{
-    volatile {word} seen = bits;
+    volatile {word} now = x;
     {punned} p;
 
-    p.bits = seen;
+    p.bits = now;
     return p.number;
 }}"""
 _WHOLE = """/* by way of a volatile variable: nothing is computed beforehand */
-static int32_t {whole}(int32_t value)
+static int32_t {whole}(int32_t x)
 {{
-    volatile int32_t seen = value;
+    volatile int32_t now = x;
 
-    return seen;
+    return now;
 }}"""
 
 
@@ -110,16 +111,16 @@ class _Floating:
             given = self.names.unique(f"{name}_of")
             lines = table("int32_t", given, f"[{n}]", [whole_literal(int(v)) for (v,) in rows])
             lines += table(type_, stem, f"[{n}]", results)
-            operands, wanted = [f"const int32_t x = {self.whole}({given}[k]);"], f"{stem}[k]"
+            operands, wanted = [f"const int32_t x = {self.whole}({given}[i]);"], f"{stem}[i]"
         else:
             words = [[word(int(b), self.size) for b in row] for row in rows.view(np.dtype(f"u{self.size // 8}"))]
             pieces = [f"{{ {', '.join((*row, result))} }}" for row, result in zip(words, results, strict=True)]
             lines = table(type_, stem, f"[{n}][{group.arity + 1}]", pieces)
             operands = [
-                f"const {self.program.real} {x} = {self.make}({stem}[k][{i}]);"
-                for i, x in enumerate("xyzw"[: group.arity])
+                f"const {self.program.real} {x} = {self.make}({stem}[i][{i}]);"
+                for i, x in enumerate("xyab"[: group.arity])
             ]
-            wanted = f"{stem}[k][{group.arity}]"
+            wanted = f"{stem}[i][{group.arity}]"
         return Test(group.about, name, n, lines, _loop(n, operands, f"{self.text(group)} != {wanted}"))
 
     def text(self, group: Group) -> str:
@@ -130,13 +131,13 @@ class _Floating:
 def _loop(rows: int, operands: list[str], differs: str) -> list[str]:
     lines = [
         "    uint32_t answer = 0u;",
-        "    uint32_t k;",
+        "    uint32_t i;",
         "",
-        f"    for (k = 0u; (answer == 0u) && (k < {rows}u); k++) {{",
+        f"    for (i = 0u; (answer == 0u) && (i < {rows}u); i++) {{",
         *(f"        {line}" for line in operands),
         *([""] if operands else []),
         f"        if ({differs}) {{",
-        "            answer = k + 1u;",
+        "            answer = i + 1u;",
         "        }",
         "    }",
         "    return answer;",
@@ -162,8 +163,8 @@ def _copies(
         given = names.unique(f"{name}_rows")
         arity = len(kernel.parameters)
         pieces = [f"{{ {', '.join(whole_literal(v) for v in row)} }}" for row in rows]
-        arguments = ", ".join(f"{whole}({given}[k][{i}])" for i in range(arity))
-        lines = _loop(len(rows), [], f"{stem}_{op}({arguments}) != {given}[k][{arity}]")
+        arguments = ", ".join(f"{whole}({given}[i][{i}])" for i in range(arity))
+        lines = _loop(len(rows), [], f"{stem}_{op}({arguments}) != {given}[i][{arity}]")
         listed = table("int32_t", given, f"[{len(rows)}][{arity + 1}]", pieces)
         found.append(Test(f"{op}, {kernel.about}", name, len(rows), listed, lines))
     return [(stem, text) for text in functions(program.kernels, replace(program, name=stem))], found

@@ -6,11 +6,12 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from hybgen.expr.core import Kind
+from hybgen.expr.core import COMPARISONS, Const, Kind, Node, Op, Ref, RefKind, walk
 from hybgen.reference import Reference
 from hybgen.reference.machine import Fields, layout
 from hybgen.selftests.mutants import mutants
@@ -25,9 +26,7 @@ RUN = 24
 PLACED = 72
 """At most so many steps from placed states."""
 LANES = 4096
-TWICE = 2
-"""So often is each mutant told, where that can be."""
-ROUNDS = 4
+ROUNDS = 6
 
 
 @dataclass(frozen=True, slots=True)
@@ -59,12 +58,12 @@ class _Pool:
     def taken(self, lanes: list[int]) -> _Pool:
         return _Pool({n: a[lanes] for n, a in self.states.items()}, {n: a[lanes] for n, a in self.inputs.items()})
 
-    def stepped(self, made: StepLaw) -> tuple[Reference, Fields]:
-        """The reference after the step, and the outputs."""
+    def stepped(self, made: StepLaw, steps: int = 1) -> tuple[Reference, Fields]:
+        """The reference after the step (or before it), and the outputs."""
         twin = Reference(made, lanes=len(self.states["jumps"]))
         for name, array in self.states.items():
             twin.fields[name][...] = array
-        return twin, twin._advance(self.inputs)
+        return twin, twin._advance(self.inputs) if steps else {}
 
 
 def _joined(pools: list[_Pool]) -> _Pool:
@@ -77,23 +76,69 @@ def vectors(made: StepLaw) -> Vectors:
     stimulus = Stimulus.of(made, SALT)
     changed = mutants(made)
     samples, reached = _from_start(made, stimulus)
-    open_ = list(range(len(changed)))
-    goals: set[str] = set()
+    shown: set[str] = set()
     chosen: list[_Pool] = []
     room = PLACED
     for k in range(ROUNDS):
-        pool = _Pool(stimulus.states(LANES), _first(stimulus.inputs(1, LANES)))
-        if k % 2:
-            pool = _Pool(_shuffled(reached, stimulus.random), pool.inputs)
-        lanes = _cover(made, pool, [changed[i] for i in open_], goals, room)
+        states = _shuffled(reached, stimulus.random) if k % 3 == 1 else stimulus.states(LANES)
+        pool = _Pool(states, _first(stimulus.inputs(1, LANES)))
+        pool = _on_edges(made, pool, stimulus.random) if k % 3 == 2 else pool
+        lanes = _cover(made, pool, changed, shown, room)
         if lanes:
             chosen.append(pool.taken(lanes))
-            told = [_tells(made, chosen[-1], changed[i]).any() for i in open_]
-            open_ = [i for i, t in zip(open_, told, strict=True) if not t]
             room -= len(lanes)
     if not chosen:
         chosen = [_Pool(stimulus.states(1), _first(stimulus.inputs(1, 1)))]
-    return _played(made, samples, _joined(chosen), (len(changed) - len(open_), len(changed)))
+    steps = _joined(chosen)
+    told = sum(bool(_tells(made, steps, other).any()) for other in changed)
+    return _played(made, samples, steps, (told, len(changed)))
+
+
+def _on_edges(made: StepLaw, pool: _Pool, random: np.random.Generator) -> _Pool:
+    """The candidates, in each of them a sample or state put onto what it is compared with, or next to it."""
+    found = {n for t in made.trees() for n in walk(t) if isinstance(n, Op) and n.op in COMPARISONS}
+    sides = [s for n in sorted(found, key=repr) for s in (n.args, n.args[::-1]) if _placeable(*s)]
+    if not sides:
+        return pool
+    lanes = len(pool.states["jumps"])
+    twin, _ = pool.stepped(made, steps=0)
+    values = twin.values([other for _, other in sides], pool.inputs)
+    which, side = random.integers(0, len(sides), lanes), random.integers(-1, 2, lanes)
+    for k, ((one, _), value) in enumerate(zip(sides, values, strict=True)):
+        assert isinstance(one, Ref)
+        array = (pool.inputs if one.kind is RefKind.INPUT else pool.states)[one.name]
+        target = array if one.index is None else array[:, one.index]
+        if target.dtype.kind == "f":
+            ends = np.array([-np.inf, 0, np.inf], target.dtype)[side + 1]
+            value = np.where(side == 0, value, np.nextafter(value, ends))
+        np.copyto(target, value, where=(which == k) & np.isfinite(value) & _inside(made, one, value))
+    return pool
+
+
+def _placeable(one: Node, other: Node) -> bool:
+    """Is this a sample or a state, compared with an expression?"""
+    kinds = (RefKind.INPUT, RefKind.STATE)
+    return (
+        isinstance(one, Ref)
+        and one.kind in kinds
+        and one.type.kind in (Kind.REAL, Kind.INT)
+        and not isinstance(other, Const)
+    )
+
+
+def _inside(made: StepLaw, one: Ref, value: NDArray[Any]) -> Mask:
+    """Is it a value that the sample or the state may have? (A bad sample would be another matter.)"""
+    if one.kind is RefKind.INPUT:
+        u = next(u for u in made.inputs if u.name == one.name)
+        return np.asarray((value >= float(u.low)) & (value <= float(u.high)))
+    x = next(x for x in made.states if x.name == one.name)
+    clamps = [a.clamp for a in (*made.flow, *made.sample) if a.state == x.name and a.clamp is not None]
+    ends = [(0, x.maximum)] if x.maximum is not None else clamps
+    return np.asarray(
+        np.logical_and.reduce(
+            [np.ones(value.shape, bool), *((value >= float(a)) & (value <= float(b)) for a, b in ends)]
+        )
+    )
 
 
 def _first(inputs: Fields) -> Fields:
@@ -132,22 +177,35 @@ def _tells(made: StepLaw, pool: _Pool, other: StepLaw) -> Mask:
     return found
 
 
-def _cover(made: StepLaw, pool: _Pool, changed: list[StepLaw], goals: set[str], room: int) -> list[int]:
-    """Lanes that tell the mutants, and show what was not shown yet, greedily; `goals` grows by it."""
-    wanted = {n: m for n, m in _events(made, pool) if n not in goals and m.any()}
-    goals |= set(wanted)
-    rows = [*wanted.values(), *(m for m in (_tells(made, pool, c) for c in changed) if m.any())]
-    if not rows:
+def _cover(made: StepLaw, pool: _Pool, changed: list[StepLaw], shown: set[str], room: int) -> list[int]:
+    """Lanes that show what was not shown yet, greedily; `shown` grows by it."""
+    wanted = {n: m for n, m in (*_events(made, pool), *_differences(made, pool, changed)) if n not in shown and m.any()}
+    if not wanted:
         return []
-    open_ = np.array(rows)
-    need = np.minimum(TWICE, open_.sum(axis=1))
+    names, missing = list(wanted), np.array(list(wanted.values()))
+    open_ = np.ones(len(names), bool)
     lanes: list[int] = []
-    while need.any() and len(lanes) < room:
-        lane = int(open_[need > 0].sum(axis=0).argmax())
+    while open_.any() and len(lanes) < room:
+        lane = int(missing[open_].sum(axis=0).argmax())
         lanes.append(lane)
-        need -= open_[:, lane] & (need > 0)
-        open_[:, lane] = False
+        shown |= {names[i] for i in np.flatnonzero(open_ & missing[:, lane])}
+        open_ &= ~missing[:, lane]
     return lanes
+
+
+def _differences(made: StepLaw, pool: _Pool, changed: list[StepLaw]) -> Iterator[tuple[str, Mask]]:
+    """Where each mutant is told from the law: anywhere, and from each mode, which may have C of its own."""
+    modes = [
+        (f"{x.name} {v}", pool.states[x.name] == v)
+        for x in made.states
+        if x.type.kind is Kind.ENUM
+        for v in range(len(x.values))
+    ]
+    for k, other in enumerate(changed):
+        told = _tells(made, pool, other)
+        if told.any():
+            yield f"mutant {k}", told
+            yield from ((f"mutant {k} from {name}", told & mode) for name, mode in modes)
 
 
 def _events(made: StepLaw, pool: _Pool) -> Iterator[tuple[str, Mask]]:

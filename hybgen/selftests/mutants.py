@@ -25,19 +25,26 @@ MOST = 400
 
 def mutants(made: StepLaw) -> list[StepLaw]:
     """The law with one small change each, in a fixed order."""
-    found = [*_of_trees(made), *_of_inputs(made), *_of_parameters(made), *_of_clamps(made), *_of_tables(made)]
+    found = [
+        *_of_trees(made),
+        *_of_inputs(made),
+        *_of_parameters(made),
+        *_of_tops(made),
+        *_of_clamps(made),
+        *_of_tables(made),
+    ]
     return found[:: max(1, -(-len(found) // MOST))]
 
 
-def _next(value: Value, fmt: Format, up: bool = True) -> Value | None:
-    """The neighbour of a constant, None beyond the ends."""
+def _near(value: Value, fmt: Format) -> list[Value]:
+    """The neighbours of a constant, as far as there are any."""
     if isinstance(value, bool):
-        return not value
+        return [not value]
     if isinstance(value, int):
-        near = value + (1 if up else -1)
-        return near if abs(near) <= LARGEST_COUNT else None
-    there = np.nextafter(fmt.dtype.type(float(value)), fmt.dtype.type(np.inf if up else -np.inf))
-    return Fraction(float(there)) if np.isfinite(there) else None
+        return [near for near in (value + 1, value - 1) if abs(near) <= LARGEST_COUNT]
+    real = fmt.dtype.type
+    there = (np.nextafter(real(float(value)), real(end)) for end in (np.inf, -np.inf))
+    return [Fraction(float(t)) for t in there if np.isfinite(t)]
 
 
 def _changes(made: StepLaw) -> Iterator[tuple[Node, Node]]:
@@ -53,8 +60,8 @@ def _changes(made: StepLaw) -> Iterator[tuple[Node, Node]]:
                 yield node, replace_op(node)
             elif isinstance(node, Const) and node.type.kind is Kind.ENUM:
                 yield node, Const((int(node.value) + 1) % len(node.type.values), node.type, node.span)
-            elif isinstance(node, Const) and (near := _next(node.value, made.format)) is not None:
-                yield node, Const(near, node.type, node.span)
+            elif isinstance(node, Const):
+                yield from ((node, Const(near, node.type, node.span)) for near in _near(node.value, made.format))
 
 
 def replace_op(node: Op) -> Op:
@@ -107,8 +114,8 @@ def _spread(rows: tuple[Any, ...], work: Callable[[Any], Iterator[Any]]) -> Iter
 def _of_inputs(made: StepLaw) -> Iterator[StepLaw]:
     def others(u: Any) -> Iterator[Any]:
         if u.type.kind is not Kind.BOOL:
-            for end, up in (("low", True), ("high", False)):
-                yield replace(u, **{end: _next(getattr(u, end), made.format, up)})
+            for end in ("low", "high"):
+                yield from (replace(u, **{end: near}) for near in _near(getattr(u, end), made.format))
 
     yield from (replace(made, inputs=rows) for rows in _spread(made.inputs, others))
 
@@ -116,19 +123,28 @@ def _of_inputs(made: StepLaw) -> Iterator[StepLaw]:
 def _of_parameters(made: StepLaw) -> Iterator[StepLaw]:
     def others(p: Any) -> Iterator[Any]:
         for i, value in enumerate(p.default):
-            near = _next(value, made.format)
-            if near is not None:
+            for near in _near(value, made.format):
                 yield replace(p, default=(*p.default[:i], near, *p.default[i + 1 :]))
 
     yield from (replace(made, parameters=rows) for rows in _spread(made.parameters, others))
+
+
+def _of_tops(made: StepLaw) -> Iterator[StepLaw]:
+    """Where timers hold."""
+
+    def others(x: Any) -> Iterator[Any]:
+        if x.kind == "timer":
+            yield from (replace(x, maximum=near) for near in _near(x.maximum, made.format) if int(near) > 0)
+
+    yield from (replace(made, states=rows) for rows in _spread(made.states, others))
 
 
 def _of_clamps(made: StepLaw) -> Iterator[StepLaw]:
     def others(a: Any) -> Iterator[Any]:
         if a.clamp is not None:
             low, high = a.clamp
-            yield replace(a, clamp=(_next(low, made.format), high))
-            yield replace(a, clamp=(low, _next(high, made.format, False)))
+            yield from (replace(a, clamp=(near, high)) for near in _near(low, made.format))
+            yield from (replace(a, clamp=(low, near)) for near in _near(high, made.format))
 
     def of_jump(j: Any) -> Iterator[Any]:
         yield from (replace(j, assigns=rows) for rows in _spread(j.assigns, others))
@@ -142,10 +158,10 @@ def _of_clamps(made: StepLaw) -> Iterator[StepLaw]:
 def _of_tables(made: StepLaw) -> Iterator[StepLaw]:
     def others(table: Any) -> Iterator[Any]:
         if isinstance(table, StepTable):
-            for rows in _spread(table.y, lambda v: iter([_next(v, made.format)])):
+            for rows in _spread(table.y, lambda v: iter(_near(v, made.format))):
                 yield replace(table, y=rows)
         else:
-            for line in _spread(table.z, lambda r: _spread(r, lambda v: iter([_next(v, made.format)]))):
+            for line in _spread(table.z, lambda r: _spread(r, lambda v: iter(_near(v, made.format)))):
                 yield replace(table, z=line)
 
     yield from (replace(made, tables=rows) for rows in _spread(made.tables, others))

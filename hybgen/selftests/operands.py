@@ -31,9 +31,9 @@ class Group:
     """The law has to use an operation of each set."""
     arity: int
     text: str
-    """C on x, y, z, w; a format text with `real` (the type), `word`, `bits` and `largest`."""
+    """C on x, y, a, b; a format text with `real` (the type), `word`, `bits` and `largest`."""
     work: Callable[..., Any]
-    """numpy on x, y, z, w: numbers, or whole numbers that C stores as a word."""
+    """numpy on x, y, a, b: numbers, or whole numbers that C stores as a word."""
     whole: bool = False
     """Are the operands int32_t?"""
 
@@ -69,15 +69,15 @@ GROUPS = (
           lambda x: x.astype(np.int32)),
     Group("zero", "x + 0 (other if the sign of zero is lost)", (ADD,), 1, "{bits}(x + ({real})0)",
           lambda x: x + x.dtype.type(0)),
-    Group("fused", "(x * y) + z (other if fused)", (MUL, ADD), 3, "{bits}((x * y) + z)", lambda x, y, z: x * y + z),
-    Group("fused_less", "(x * y) - z (other if fused)", (MUL, SUB), 3, "{bits}((x * y) - z)", lambda x, y, z: x * y - z),
-    Group("fused_from", "z - (x * y) (other if fused)", (MUL, SUB), 3, "{bits}(z - (x * y))", lambda x, y, z: z - x * y),
+    Group("fused", "(x * y) + a (other if fused)", (MUL, ADD), 3, "{bits}((x * y) + a)", lambda x, y, z: x * y + z),
+    Group("fused_less", "(x * y) - a (other if fused)", (MUL, SUB), 3, "{bits}((x * y) - a)", lambda x, y, z: x * y - z),
+    Group("fused_from", "a - (x * y) (other if fused)", (MUL, SUB), 3, "{bits}(a - (x * y))", lambda x, y, z: z - x * y),
     Group("regrouped", "(x + y) - x (other if regrouped or in excess precision)", (SUMS,), 2, "{bits}((x + y) - x)",
           lambda x, y: (x + y) - x),
     Group("cancelled", "(x * y) / x (other if regrouped or in excess precision)", (MUL, DIV), 2, "{bits}((x * y) / x)",
           lambda x, y: x * y / x),
-    Group("quotients", "x / w, y / w, z / w together (other if 1 / w is computed once)", (DIV,), 4,
-          "({bits}(x / w) ^ ({bits}(y / w) << 1) ^ ({bits}(z / w) << 2))", _mixed),
+    Group("quotients", "x / b, y / b, a / b together (other if 1 / b is computed once)", (DIV,), 4,
+          "({bits}(x / b) ^ ({bits}(y / b) << 1) ^ ({bits}(a / b) << 2))", _mixed),
     Group("tenth", "x / 10 (other if multiplied by 1 / 10)", (DIV,), 1, "{bits}(x / ({real})10)",
           lambda x: x / x.dtype.type(10)),
 )  # fmt: skip

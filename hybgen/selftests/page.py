@@ -18,24 +18,24 @@ from hybgen.selftests.arithmetic import Test, tests
 from hybgen.selftests.choice import SALT, Vectors, vectors
 from hybgen.selftests.columns import Columns, members
 from hybgen.sil.vectors import generator
-from hybgen.step import build
+from hybgen.step import StepLaw, build
 
 _WORDS = (Member("last_jump", "word", None, ""), Member("jumps", "word", None, ""))
 
 
-def selftest(law: Law, *, step: Fraction | None = None, number: str | None = None) -> dict[str, str]:
+def selftest(law: Law | StepLaw, *, step: Fraction | None = None, number: str | None = None) -> dict[str, str]:
     """NAME_selftest.c of a law, by file name; at its own step (seconds) and number format, or at others.
 
     The C is C99 without I/O or library: `uint32_t NAME_selftest(void)` gives 0, or 1 and more for the first check that found
     another bit than the reference; the head of the file says what each number means. It goes with the NAME.h and NAME.c that
     `generate` makes of the same law, step and format. Raises LawError where the law does not fit the format or the method.
     """
-    made = build(law, step=step, number=number)
+    made = build(law, step=step, number=number) if isinstance(law, Law) else law
     program = lower(made)
-    names = Namer(reserved(law.name) | _declared(program))
+    names = Namer(reserved(program.name) | _declared(program))
     arithmetic = tests(program, names, generator(made, SALT + 1))
     page = _Page(program, names, vectors(made), arithmetic.bits, arithmetic.real)
-    return {f"{law.name}_selftest.c": render("selftest.c.jinja", page.values(arithmetic.pieces, arithmetic.tests))}
+    return {f"{program.name}_selftest.c": render("selftest.c.jinja", page.values(arithmetic.pieces, arithmetic.tests))}
 
 
 def _declared(program: Program) -> set[str]:
@@ -117,43 +117,43 @@ class _Page:
 
     def state(self, columns: Columns) -> Iterator[str]:
         """Is the state that of the row?"""
-        yield "    bool same = true;"
+        yield "    bool answer = true;"
         yield ""
         told = []
         for place, name, _, values in members((*self.program.states, *_WORDS), self.steps.states):
             told += [
-                f"    if ({columns.differs(f'self->{place}', f'x_{name}', values, 'k')}) {{",
-                "        same = false;",
+                f"    if ({columns.differs(f'self->{place}', f'x_{name}', values, 'i')}) {{",
+                "        answer = false;",
                 "    }",
             ]
         yield from told
-        if not any("[k]" in line for line in told):
-            yield "    (void)k;"
-        yield "    return same;"
+        if not any("[i]" in line for line in told):
+            yield "    (void)i;"
+        yield "    return answer;"
 
     def law(self, columns: Columns, state: str) -> Iterator[str]:
         program, steps, law = self.program, self.steps, self.program.name
-        yield f"    {law} instance;"
-        yield f"    {law} *volatile place = &instance;"
-        yield f"    {law} *const self = place; /* no compiler knows what it points at: nothing is computed beforehand */"
+        yield f"    {law} used;"
+        yield f"    {law} *volatile now = &used;"
+        yield f"    {law} *const self = now; /* no compiler knows what it points at: nothing is computed beforehand */"
         yield f"    {law}_inputs u;"
         yield f"    {law}_outputs y;"
         yield "    uint32_t status;"
         yield "    uint32_t answer = 0u;"
-        yield "    uint32_t k;"
+        yield "    uint32_t i;"
         yield ""
         yield f"    {law}_init(self);"
         yield f"    if (!{state}(self, 0u)) {{"
         yield "        answer = 1u;"
         yield "    }"
-        yield f"    for (k = 0u; (answer == 0u) && (k < {len(steps.status)}u); k++) {{"
-        yield f"        if (k >= {steps.run}u) {{"
-        index = f"k - {steps.run}u"
+        yield f"    for (i = 0u; (answer == 0u) && (i < {len(steps.status)}u); i++) {{"
+        yield f"        if (i >= {steps.run}u) {{"
+        index = f"i - {steps.run}u"
         for place, name, type_, values in members((*program.states, *_WORDS), steps.placed):
             yield f"            {columns.stored(f'self->{place}', type_, f'from_{name}', values, index)}"
         yield "        }"
         for place, name, type_, values in members(program.inputs, steps.inputs):
-            yield f"        {columns.stored(f'u.{place}', type_, f'u_{name}', values, 'k')}"
+            yield f"        {columns.stored(f'u.{place}', type_, f'u_{name}', values, 'i')}"
         if not program.inputs:
             yield "        u.none = 0u;"
         yield f"        status = {law}_step(self, &{law}_defaults, &u, &y);"
@@ -162,12 +162,12 @@ class _Page:
         yield "    return answer;"
 
     def compared(self, columns: Columns, state: str) -> Iterator[str]:
-        wrong = [columns.differs("status", "status", self.steps.status, "k")]
+        wrong = [columns.differs("status", "status", self.steps.status, "i")]
         for place, name, _, values in members(self.program.outputs, self.steps.outputs):
-            wrong.append(columns.differs(f"y.{place}", f"y_{name}", values, "k"))
-        for condition in (*wrong, f"!{state}(self, k + 1u)"):
+            wrong.append(columns.differs(f"y.{place}", f"y_{name}", values, "i"))
+        for condition in (*wrong, f"!{state}(self, i + 1u)"):
             yield f"        if ({condition}) {{"
-            yield "            answer = k + 2u;"
+            yield "            answer = i + 2u;"
             yield "        }"
 
 
