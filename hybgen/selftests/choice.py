@@ -90,7 +90,7 @@ def vectors(made: StepLaw) -> Vectors:
     if not chosen:
         chosen = [_Pool(stimulus.states(1), _first(stimulus.inputs(1, 1)))]
     steps = _joined(chosen)
-    told = sum(bool(_tells(made, steps, other).any()) for other in changed)
+    told = sum(bool(_tells(made, steps, other)[0].any()) for other in changed)
     return _played(made, samples, steps, (told, len(changed)))
 
 
@@ -166,15 +166,17 @@ def _from_start(made: StepLaw, stimulus: Stimulus) -> tuple[Fields, Fields]:
     return {n: a[:, best] for n, a in inputs.items()}, {n: np.concatenate([r[n] for r in reached]) for n in names}
 
 
-def _tells(made: StepLaw, pool: _Pool, other: StepLaw) -> Mask:
-    """In which lanes a step of another law differs."""
+def _tells(made: StepLaw, pool: _Pool, other: StepLaw) -> tuple[Mask, Mask]:
+    """In which lanes a step of another law differs, and in which it takes other jumps."""
     (twin, outputs), (changed, given) = pool.stepped(made), pool.stepped(other)
-    found: Mask = twin.state_status != changed.state_status
+    jumping: Mask = differs(twin.fields["jumps"], changed.fields["jumps"])
+    jumping = jumping | differs(twin.fields["last_jump"], changed.fields["last_jump"])
+    found = jumping | (twin.state_status != changed.state_status)
     for name, array in outputs.items():
         found = found | differs(array, given[name])
     for name, array in twin.fields.items():
         found = found | differs(array, changed.fields[name])
-    return found
+    return found, jumping
 
 
 def _cover(made: StepLaw, pool: _Pool, changed: list[StepLaw], shown: set[str], room: int) -> list[int]:
@@ -202,9 +204,10 @@ def _differences(made: StepLaw, pool: _Pool, changed: list[StepLaw]) -> Iterator
         for v in range(len(x.values))
     ]
     for k, other in enumerate(changed):
-        told = _tells(made, pool, other)
+        told, jumping = _tells(made, pool, other)
         if told.any():
             yield f"mutant {k}", told
+            yield f"mutant {k} by its jumps", jumping
             yield from ((f"mutant {k} from {name}", told & mode) for name, mode in modes)
 
 
