@@ -380,8 +380,8 @@ def test_preflight_runs_it_and_a_failure_is_a_finding(
     law = tmp_path / "blend.yaml"
     law.write_text(textwrap.dedent(BLEND.format(number="float32")).lstrip(), encoding="ascii")
     to = tmp_path / "evidence"
-    monkeypatch.setattr(board, "FLAGS", ("-std=c99", "-O2", "-mfma", "-ffp-contract=fast", "-fPIC", "-shared"))
-    monkeypatch.setattr(board.answer, "__defaults__", (board.FLAGS,))
+    flags = ("-std=c99", "-O2", "-mfma", "-ffp-contract=fast", "-fPIC", "-shared")
+    monkeypatch.setattr(board.answer, "__defaults__", (flags,))
     monkeypatch.setenv("CC", "clang")
     assert main(["preflight", str(law), "--to", str(to)]) == 1
     told = capsys.readouterr().out

@@ -25,7 +25,7 @@ RUN = 24
 """Steps from the start."""
 PLACED = 72
 """At most so many steps from placed states."""
-LANES = 4096
+LANES = 2048
 ROUNDS = 6
 
 
@@ -58,12 +58,36 @@ class _Pool:
     def taken(self, lanes: list[int]) -> _Pool:
         return _Pool({n: a[lanes] for n, a in self.states.items()}, {n: a[lanes] for n, a in self.inputs.items()})
 
-    def stepped(self, made: StepLaw, steps: int = 1) -> tuple[Reference, Fields]:
-        """The reference after the step (or before it), and the outputs."""
-        twin = Reference(made, lanes=len(self.states["jumps"]))
+    def placed(self, machine: Reference) -> Reference:
+        """The machine (or one like it with as many lanes) in the states of the candidates."""
+        lanes = len(self.states["jumps"])
+        machine = machine if machine.lanes == lanes else machine._spawn(lanes)
         for name, array in self.states.items():
-            twin.fields[name][...] = array
-        return twin, twin._advance(self.inputs) if steps else {}
+            machine.fields[name][...] = array
+        return machine
+
+    def stepped(self, machine: Reference) -> _After:
+        """The step of every candidate."""
+        machine = self.placed(machine)
+        outputs = machine._advance(self.inputs)
+        fields = {n: a.copy() for n, a in machine.fields.items()} | {f"output {n}": a for n, a in outputs.items()}
+        return _After(fields, machine.state_status)
+
+
+@dataclass(frozen=True, slots=True)
+class _After:
+    """Outputs and states after a step, and its status."""
+
+    fields: Fields
+    status: NDArray[np.uint32]
+
+    def differs(self, other: _After) -> tuple[Mask, Mask]:
+        """In which lanes two laws differ, and in which they take other jumps."""
+        found: Mask = self.status != other.status
+        for name, array in self.fields.items():
+            found = found | differs(array, other.fields[name])
+        jumps: Mask = differs(self.fields["jumps"], other.fields["jumps"])
+        return found, jumps | differs(self.fields["last_jump"], other.fields["last_jump"])
 
 
 def _joined(pools: list[_Pool]) -> _Pool:
@@ -74,7 +98,7 @@ def _joined(pools: list[_Pool]) -> _Pool:
 def vectors(made: StepLaw) -> Vectors:
     """The steps of a law's self-test: the same at every call."""
     stimulus = Stimulus.of(made, SALT)
-    changed = mutants(made)
+    machine, changed = Reference(made, lanes=LANES), [Reference(m, lanes=LANES) for m in mutants(made)]
     samples, reached = _from_start(made, stimulus)
     shown: set[str] = set()
     chosen: list[_Pool] = []
@@ -82,27 +106,28 @@ def vectors(made: StepLaw) -> Vectors:
     for k in range(ROUNDS):
         states = _shuffled(reached, stimulus.random) if k % 3 == 1 else stimulus.states(LANES)
         pool = _Pool(states, _first(stimulus.inputs(1, LANES)))
-        pool = _on_edges(made, pool, stimulus.random) if k % 3 == 2 else pool
-        lanes = _cover(made, pool, changed, shown, room)
+        pool = _on_edges(machine, pool, stimulus.random) if k % 3 == 2 else pool
+        lanes = _cover(machine, pool, changed, shown, room)
         if lanes:
             chosen.append(pool.taken(lanes))
             room -= len(lanes)
     if not chosen:
         chosen = [_Pool(stimulus.states(1), _first(stimulus.inputs(1, 1)))]
     steps = _joined(chosen)
-    told = sum(bool(_tells(made, steps, other)[0].any()) for other in changed)
+    after = steps.stepped(machine)
+    told = sum(bool(after.differs(steps.stepped(other))[0].any()) for other in changed)
     return _played(made, samples, steps, (told, len(changed)))
 
 
-def _on_edges(made: StepLaw, pool: _Pool, random: np.random.Generator) -> _Pool:
+def _on_edges(machine: Reference, pool: _Pool, random: np.random.Generator) -> _Pool:
     """The candidates, in each of them a sample or state put onto what it is compared with, or next to it."""
+    made = machine.step_law
     found = {n for t in made.trees() for n in walk(t) if isinstance(n, Op) and n.op in COMPARISONS}
     sides = [s for n in sorted(found, key=repr) for s in (n.args, n.args[::-1]) if _placeable(*s)]
     if not sides:
         return pool
     lanes = len(pool.states["jumps"])
-    twin, _ = pool.stepped(made, steps=0)
-    values = twin.values([other for _, other in sides], pool.inputs)
+    values = pool.placed(machine).values([other for _, other in sides], pool.inputs)
     which, side = random.integers(0, len(sides), lanes), random.integers(-1, 2, lanes)
     for k, ((one, _), value) in enumerate(zip(sides, values, strict=True)):
         assert isinstance(one, Ref)
@@ -166,22 +191,11 @@ def _from_start(made: StepLaw, stimulus: Stimulus) -> tuple[Fields, Fields]:
     return {n: a[:, best] for n, a in inputs.items()}, {n: np.concatenate([r[n] for r in reached]) for n in names}
 
 
-def _tells(made: StepLaw, pool: _Pool, other: StepLaw) -> tuple[Mask, Mask]:
-    """In which lanes a step of another law differs, and in which it takes other jumps."""
-    (twin, outputs), (changed, given) = pool.stepped(made), pool.stepped(other)
-    jumping: Mask = differs(twin.fields["jumps"], changed.fields["jumps"])
-    jumping = jumping | differs(twin.fields["last_jump"], changed.fields["last_jump"])
-    found = jumping | (twin.state_status != changed.state_status)
-    for name, array in outputs.items():
-        found = found | differs(array, given[name])
-    for name, array in twin.fields.items():
-        found = found | differs(array, changed.fields[name])
-    return found, jumping
-
-
-def _cover(made: StepLaw, pool: _Pool, changed: list[StepLaw], shown: set[str], room: int) -> list[int]:
+def _cover(machine: Reference, pool: _Pool, changed: list[Reference], shown: set[str], room: int) -> list[int]:
     """Lanes that show what was not shown yet, greedily; `shown` grows by it."""
-    wanted = {n: m for n, m in (*_events(made, pool), *_differences(made, pool, changed)) if n not in shown and m.any()}
+    wanted = {
+        n: m for n, m in (*_events(machine, pool), *_differences(machine, pool, changed)) if n not in shown and m.any()
+    }
     if not wanted:
         return []
     names, missing = list(wanted), np.array(list(wanted.values()))
@@ -195,36 +209,37 @@ def _cover(made: StepLaw, pool: _Pool, changed: list[StepLaw], shown: set[str], 
     return lanes
 
 
-def _differences(made: StepLaw, pool: _Pool, changed: list[StepLaw]) -> Iterator[tuple[str, Mask]]:
+def _differences(machine: Reference, pool: _Pool, changed: list[Reference]) -> Iterator[tuple[str, Mask]]:
     """Where each mutant is told from the law: anywhere, and from each mode, which may have C of its own."""
     modes = [
         (f"{x.name} {v}", pool.states[x.name] == v)
-        for x in made.states
+        for x in machine.step_law.states
         if x.type.kind is Kind.ENUM
         for v in range(len(x.values))
     ]
+    after = pool.stepped(machine)
     for k, other in enumerate(changed):
-        told, jumping = _tells(made, pool, other)
+        told, jumping = after.differs(pool.stepped(other))
         if told.any():
             yield f"mutant {k}", told
             yield f"mutant {k} by its jumps", jumping
             yield from ((f"mutant {k} from {name}", told & mode) for name, mode in modes)
 
 
-def _events(made: StepLaw, pool: _Pool) -> Iterator[tuple[str, Mask]]:
+def _events(machine: Reference, pool: _Pool) -> Iterator[tuple[str, Mask]]:
     """What a step can show: a jump as the first or the last of the step, a bit of the status, a mode."""
-    once, _ = pool.stepped(replace(made, jumps_per_step=1))
-    twin, _ = pool.stepped(made)
+    made = machine.step_law
+    once, whole = pool.stepped(Reference(replace(made, jumps_per_step=1), lanes=LANES)), pool.stepped(machine)
     for j in made.jumps:
-        for words, machine in (("first", once), ("last", twin)):
-            moved = machine.fields["jumps"] != pool.states["jumps"]
-            yield f"{words} {j.name}", moved & (machine.fields["last_jump"] == j.number)
+        for words, after in (("first", once), ("last", whole)):
+            moved = after.fields["jumps"] != pool.states["jumps"]
+            yield f"{words} {j.name}", moved & (after.fields["last_jump"] == j.number)
     for bit in Status:
-        yield f"status {bit.name}", (twin.state_status & np.uint32(bit)) != 0
+        yield f"status {bit.name}", (whole.status & np.uint32(bit)) != 0
     for x in made.states:
         if x.type.kind in (Kind.ENUM, Kind.BOOL):
             for value in range(max(2, len(x.values))):
-                yield f"{x.name} {value}", (twin.fields[x.name] == value) & (pool.states[x.name] == value)
+                yield f"{x.name} {value}", (whole.fields[x.name] == value) & (pool.states[x.name] == value)
 
 
 def _played(made: StepLaw, samples: Fields, pool: _Pool, told: tuple[int, int]) -> Vectors:

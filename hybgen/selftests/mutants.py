@@ -19,7 +19,7 @@ from hybgen.step.model import StepAssign, StepLaw, StepTable
 
 _OTHER = {"lt": "le", "le": "lt", "gt": "ge", "ge": "gt", "eq": "ne", "ne": "eq"}
 _SHIFTS = ("left", "right", "places", "wanted")
-MOST = 400
+MOST = 250
 """So many mutants of a law are enough; of more, evenly spread ones are taken."""
 
 
