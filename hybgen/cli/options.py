@@ -26,10 +26,15 @@ def parser() -> argparse.ArgumentParser:
     top.add_argument("--version", action="version", version=f"hybgen {VERSION}")
     commands = top.add_subparsers(dest="command", required=True, metavar="COMMAND")
     _law(commands, "check", "check a law: language, units, names, reachability, memory kept over jumps")
-    generate = _law(commands, "generate", "write NAME.h and NAME.c")
+    generate = _law(commands, "generate", "write NAME.h and NAME.c, with --selftest a test of the target")
     generate.add_argument("--to", default=".", metavar="DIR", help="folder to write into (made if missing)")
     generate.add_argument(
         "--conversions", action="store_true", help="fixed32: functions between physical and raw values in NAME.h"
+    )
+    generate.add_argument(
+        "--selftest",
+        action="store_true",
+        help="NAME_selftest.c too: run on the target, it answers 0 if every bit is right",
     )
     sil = _law(commands, "sil", "compare reference and compiled C, bit for bit, at every step")
     sil.add_argument("--target", default="host", choices=("host",), help="where the C runs (this version: host)")
@@ -41,7 +46,7 @@ def parser() -> argparse.ArgumentParser:
     )
     show = _law(commands, "show", "print what a stage made of a law")
     show.add_argument("--stage", default="step", choices=STAGES, help="default: step")
-    preflight = _law(commands, "preflight", "check, generate, compile, compare; evidence into a folder")
+    preflight = _law(commands, "preflight", "check, generate, compile, self-test, compare; evidence into a folder")
     preflight.add_argument("--to", default=None, metavar="DIR", help="evidence folder (default NAME_evidence)")
     new = _common(commands.add_parser("new", help="write a commented law to start from"))
     new.add_argument("name", metavar="NAME", help="a C identifier; the file is NAME.yaml")

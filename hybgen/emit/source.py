@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import textwrap
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from functools import cache
 from pathlib import Path
@@ -58,10 +58,32 @@ def _environment() -> Any:
 def emit(program: Program, conversions: bool = False) -> dict[str, str]:
     """The two files, by name; `conversions`: with functions between physical and raw values (fixed point)."""
     pages = _Pages(program, Writer(program), conversions)
-    environment = _environment()
     return {
-        f"{program.name}.h": environment.get_template("law.h.jinja").render(pages.header()),
-        f"{program.name}.c": environment.get_template("law.c.jinja").render(pages.source()),
+        f"{program.name}.h": render("law.h.jinja", pages.header()),
+        f"{program.name}.c": render("law.c.jinja", pages.source()),
+    }
+
+
+def render(template: str, values: Mapping[str, Any]) -> str:
+    """A template laid out."""
+    text: str = _environment().get_template(template).render(values)
+    return text
+
+
+def common(program: Program) -> dict[str, Any]:
+    """What the heads of all C files have in common, and their guards against flags that change results."""
+    return {
+        "name": program.name,
+        "upper": program.name.upper(),
+        "facts": [
+            f"Made by hybgen {program.version} from {comment(program.origin)}, SHA-256",
+            f"  {program.digest}",
+            f"step {program.step}, numbers {program.number}, integration {program.method}",
+            *(_FIXED if program.number == "fixed32" else ()),
+            "Compile as C99 (or C++) with -ffp-contract=off, without -ffast-math.",
+        ],
+        "cautions": textwrap.wrap(CAUTIONS, 100),
+        "excess": " && (__FLT_EVAL_METHOD__ != 1)" if program.real == "double" else "",
     }
 
 
@@ -77,13 +99,10 @@ class _Pages:
         program = self.program
         about = textwrap.wrap(comment(f"{program.name}: {program.about}" if program.about else program.name), 100)
         return {
-            "name": program.name,
+            **common(program),
             "conversions": list(self.converted()) if self.conversions else [],
-            "upper": program.name.upper(),
             "guard": f"{program.name.upper()}_H",
             "about": about,
-            "facts": self.facts(),
-            "cautions": textwrap.wrap(CAUTIONS, 100),
             "step": program.step,
             "status": [{"name": n, "value": v, "note": note} for n, v, note in STATUS],
             "jumps": program.jumps,
@@ -101,16 +120,6 @@ class _Pages:
             "structs": self.structs(),
             "rules": [f"{i}: {comment(r)}" for i, r in enumerate(program.rules, 1)] or ["(there is none)"],
         }
-
-    def facts(self) -> list[str]:
-        program = self.program
-        return [
-            f"Made by hybgen {program.version} from {comment(program.origin)}, SHA-256",
-            f"  {program.digest}",
-            f"step {program.step}, numbers {program.number}, integration {program.method}",
-            *(_FIXED if program.number == "fixed32" else ()),
-            "Compile as C99 (or C++) with -ffp-contract=off, without -ffast-math.",
-        ]
 
     def structs(self) -> list[dict[str, Any]]:
         program, name = self.program, self.program.name
@@ -165,11 +174,7 @@ class _Pages:
         helpers = [helper(h, program) for h in program.helpers if h not in LOOKUPS]
         helpers += [*functions(program.kernels, program), *lookups(program, tables)]
         return {
-            "name": program.name,
-            "upper": program.name.upper(),
-            "facts": self.facts(),
-            "cautions": textwrap.wrap(CAUTIONS, 100),
-            "excess": " && (__FLT_EVAL_METHOD__ != 1)" if program.real == "double" else "",
+            **common(program),
             "now": [{"text": self.member(m)} for m in program.now],
             "defaults": self.defaults(),
             "helpers": helpers,
@@ -326,4 +331,4 @@ class _Pages:
         yield "    }"
 
 
-__all__ = ["emit", "templates_folder"]
+__all__ = ["common", "emit", "render", "templates_folder"]
