@@ -332,11 +332,20 @@ EQUAL = {
         f"{end} in y->voltage = charger_clamp({word}, 0.0f, 16.0f);"
         for end in ("0.0", "16.0")
         for word in ("goal", "hold")
+    }
+    | {f"{what} in if ((now->battery - goal) >= 1.0705294e-06f) {{" for what in (">=", "1.0705294e-06")},
+    "heater": {
+        f"{what} in && (((now->box - (p->target + p->band)) >= 9.536745e-07f) || !now->enabled)) {{"
+        for what in (">=", "9.536745e-07")
+    }
+    | {
+        f"{what} in && ((now->box - (p->target - p->band)) <= (-9.536745e-07f))) {{" for what in ("<=", "-9.536745e-07")
     },
 }
 """Changes that change nothing, at their first place: at the end of a range its end is given in either case; winch: the drive
 is held in two ways at once, `hand` is no larger, and tracking keeps the integral inside; charger: with the default
-parameters the voltage is never near 0 V or 16 V."""
+parameters the voltage is never near 0 V or 16 V; margins: differences of numbers of that size are whole units in their last place, of
+which none lies at the margin."""
 
 
 @pytest.mark.parametrize("path", SPECS, ids=lambda p: p.stem)

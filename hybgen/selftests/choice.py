@@ -11,7 +11,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from hybgen.expr.core import COMPARISONS, Const, Kind, Node, Op, Ref, RefKind, walk
+from hybgen.expr.core import COMPARISONS, Const, Kind, Node, Op, Ref, RefKind, op, walk
 from hybgen.reference import Reference
 from hybgen.reference.machine import Fields, layout
 from hybgen.selftests.mutants import mutants
@@ -123,7 +123,7 @@ def _on_edges(machine: Reference, pool: _Pool, random: np.random.Generator) -> _
     """The candidates, in each of them a sample or state put onto what it is compared with, or next to it."""
     made = machine.step_law
     found = {n for t in made.trees() for n in walk(t) if isinstance(n, Op) and n.op in COMPARISONS}
-    sides = [s for n in sorted(found, key=repr) for s in (n.args, n.args[::-1]) if _placeable(*s)]
+    sides = [s for n in sorted(found, key=repr) for s in _sides(n) if _placeable(*s)]
     if not sides:
         return pool
     lanes = len(pool.states["jumps"])
@@ -138,6 +138,14 @@ def _on_edges(machine: Reference, pool: _Pool, random: np.random.Generator) -> _
             value = np.where(side == 0, value, np.nextafter(value, ends))
         np.copyto(target, value, where=(which == k) & np.isfinite(value) & _inside(made, one, value))
     return pool
+
+
+def _sides(comparison: Op) -> list[tuple[Node, Node]]:
+    """What stands on each side of a comparison; of a difference against a margin, each part against the other and the margin."""
+    a, b = comparison.args
+    if isinstance(a, Op) and a.op == "sub" and isinstance(b, Const):
+        return [(a.args[0], op("add", a.args[1], b)), (a.args[1], op("sub", a.args[0], b))]
+    return [(a, b), (b, a)]
 
 
 def _placeable(one: Node, other: Node) -> bool:
