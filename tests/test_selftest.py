@@ -161,7 +161,7 @@ def test_a_state_may_be_called_selftest() -> None:
 
 def test_random_laws() -> None:
     count = 0
-    for seed in range(24):
+    for seed in range(14):
         try:
             law = read(law_text(random.Random(seed), "any_law").encode(), "any_law.yaml")
             files = files_of(law, NUMBERS[seed % 2])
@@ -169,7 +169,7 @@ def test_random_laws() -> None:
             continue
         count += 1
         assert board.answer(files, "any_law", PLAIN) == 0, seed
-    assert count >= 20
+    assert count >= 11
 
 
 @pytest.mark.parametrize("number", NUMBERS)

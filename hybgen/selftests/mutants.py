@@ -57,14 +57,14 @@ def _changes(made: StepLaw) -> Iterator[tuple[Node, Node]]:
                 continue
             seen.add((node, node.span))
             if isinstance(node, Op) and node.op in _OTHER:
-                yield node, replace_op(node)
+                yield node, _flipped(node)
             elif isinstance(node, Const) and node.type.kind is Kind.ENUM:
                 yield node, Const((int(node.value) + 1) % len(node.type.values), node.type, node.span)
             elif isinstance(node, Const):
                 yield from ((node, Const(near, node.type, node.span)) for near in _near(node.value, made.format))
 
 
-def replace_op(node: Op) -> Op:
+def _flipped(node: Op) -> Op:
     """The comparison that answers otherwise where both sides are equal."""
     return Op(_OTHER[node.op], node.args, BOOL, span=node.span)
 
@@ -86,10 +86,15 @@ def _of_trees(made: StepLaw) -> Iterator[StepLaw]:
         def change(node: Node, old: Node = old, new: Node = new) -> Node:
             return new if node == old and node.span == old.span else node
 
-        yield _changed(made, lambda tree, change=change: rebuild(tree, change))  # type: ignore[misc]
+        yield _changed(made, change)
 
 
-def _changed(made: StepLaw, work: Callable[[Node], Node]) -> StepLaw:
+def _changed(made: StepLaw, change: Callable[[Node], Node]) -> StepLaw:
+    """The law with `change` applied to every node of its trees."""
+
+    def work(tree: Node) -> Node:
+        return rebuild(tree, change)
+
     def assigns(rows: tuple[StepAssign, ...]) -> tuple[StepAssign, ...]:
         return tuple(replace(a, expr=work(a.expr)) for a in rows)
 
