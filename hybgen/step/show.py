@@ -36,6 +36,7 @@ def show(made: StepLaw) -> str:
 
 def _lines(made: StepLaw) -> Iterator[str]:
     yield f"step law {made.law.name}: {made.format.name}, step {float(made.step):.9g} s, method {made.method}"
+    yield from _scales(made)
     yield ""
     yield "snapshot"
     for u in made.inputs:
@@ -56,6 +57,7 @@ def _lines(made: StepLaw) -> Iterator[str]:
     yield f"jumps: at most {made.jumps_per_step} in one step, first in order; prefer {made.law.prefer}"
     for jump in made.jumps:
         yield f"  {jump.number} {jump.name}: {expression(jump.condition, made)}"
+        yield from _bounds(made, jump.name)
         for a in jump.assigns:
             yield f"      {_assign(a, made)}"
     yield ""
@@ -74,6 +76,24 @@ def _lines(made: StepLaw) -> Iterator[str]:
         yield "sample"
         for a in made.sample:
             yield f"  {_assign(a, made)}"
+
+
+def _scales(made: StepLaw) -> Iterator[str]:
+    """Fixed point: the scale of each quantity."""
+    if made.places:
+        yield ""
+        yield "scales (raw = value * 2^n)"
+        for (kind, name), places in made.places.items():
+            yield f"  {kind} {name}: Q{31 - places}.{places}, resolution {2.0**-places:.3g}"
+
+
+def _bounds(made: StepLaw, jump: str) -> Iterator[str]:
+    """What rounding does to the jump's computed comparisons."""
+    for b in made.bounds:
+        if b.jump == jump and b.error is not None and b.margin is not None:
+            yield f"      rounding at most {b.error:.3g}, due {b.margin:.3g} beyond at the latest    [{b.span.place}]"
+        elif b.jump == jump:
+            yield f"      rounding without a bound: {b.why}    [{b.span.place}]"
 
 
 def _assign(a: StepAssign, made: StepLaw) -> str:
