@@ -6,7 +6,8 @@ from collections.abc import Iterator
 from fractions import Fraction
 
 from hybgen.expr.core import Const, Kind, Node, Op, Ref, RefKind
-from hybgen.step.model import StepAssign, StepLaw, StepOutput
+from hybgen.step.model import ConditionBound, StepAssign, StepLaw, StepOutput
+from hybgen.step.quantity import upward
 from hybgen.step.translate import component
 
 _INFIX = {
@@ -56,6 +57,7 @@ def _lines(made: StepLaw) -> Iterator[str]:
     yield f"jumps: at most {made.jumps_per_step} in one step, first in order; prefer {made.law.prefer}"
     for jump in made.jumps:
         yield f"  {jump.number} {jump.name}: {expression(jump.condition, made)}"
+        yield from (f"      {_bound(b)}" for b in made.bounds if b.jump == jump.name)
         for a in jump.assigns:
             yield f"      {_assign(a, made)}"
     yield ""
@@ -74,6 +76,16 @@ def _lines(made: StepLaw) -> Iterator[str]:
         yield "sample"
         for a in made.sample:
             yield f"  {_assign(a, made)}"
+
+
+def _bound(b: ConditionBound) -> str:
+    """What rounding does to one comparison."""
+    place = f"line {b.span.line}, {b.text}" if b.text else f"line {b.span.line}"
+    if b.error is None or b.margin is None:
+        return f"rounding without a bound ({place}): {b.why}"
+    unit = f" {b.unit}" if b.unit and b.unit != "1" else ""
+    found = f"rounding at most {upward(b.error, 3)}{unit}, at the latest {upward(b.margin, 3)}{unit} beyond ({place})"
+    return f"{found} {b.within}" if b.within else found
 
 
 def _assign(a: StepAssign, made: StepLaw) -> str:
