@@ -24,21 +24,25 @@ def findings(made: StepLaw) -> Iterator[Finding]:
 def _bounded(b: ConditionBound) -> Finding:
     code, verdict, severity, hint = "HG430", Verdict.PROVED, Severity.NOTE, None
     value = None
-    if b.error is None or b.margin is None:
+    if b.error is None:
         code, verdict, severity = "HG431", Verdict.OPEN, Severity.WARNING
         message = f"rounding may cause '{b.jump}': there is no bound of the error here: {b.why}"
         hint = "declare ranges, keep divisors and arguments inside their domains"
         return Finding(code, "rounding", verdict, severity, b.span, b.jump, message, hint=hint)
     value = {"margin": b.margin, "unit": b.unit, "error": b.error, "within": b.within or None}
+    late = (
+        "how late it may be has no bound"
+        if b.margin is None
+        else f"it is due {_amount(b.margin, b)} beyond at the latest"
+    )
+    message = (
+        f"rounding never causes '{b.jump}': its error here is at most {_amount(b.error, b)}, "
+        f"{late}{f'; {b.within}' if b.within else ''}"
+    )
     if b.never:
         code, verdict, severity = "HG432", Verdict.REFUTED, Severity.WARNING
-        message = f"'{b.jump}' can't happen: rounding delays it by {_amount(b.margin, b)}, more than its condition can hold by"
+        message = f"'{b.jump}' can't happen: its rounding error of {_amount(b.error, b)} is more than its condition can hold by"
         hint = "use float64, or another form of the condition"
-    else:
-        message = (
-            f"rounding never causes '{b.jump}': its error here is at most {_amount(b.error, b)}, "
-            f"it is due {_amount(b.margin, b)} beyond at the latest{f'; {b.within}' if b.within else ''}"
-        )
     return Finding(code, "rounding", verdict, severity, b.span, b.jump, message, value=value, hint=hint)
 
 
@@ -59,7 +63,7 @@ def _outweighed(b: ConditionBound, pairs: set[frozenset[str]]) -> Iterator[Findi
         pairs.add(pair)
         message = (
             f"rounding delays '{b.jump}' by up to {_amount(b.margin, b)}; between it and '{b.gap[0]}' are only "
-            f"{_amount(b.gap[1], b)}"
+            f"{b.gap[1]:.3g}{_unit(b)}"
         )
         yield _warning("HG434", b, message, value | {"gap": b.gap[1]}, hint)
 
@@ -69,4 +73,8 @@ def _warning(code: str, b: ConditionBound, message: str, value: dict[str, object
 
 
 def _amount(size: float, b: ConditionBound) -> str:
-    return f"{upward(size, 3)}{f' {b.unit}' if b.unit and b.unit != '1' else ''}"
+    return f"{upward(size, 3)}{_unit(b)}"
+
+
+def _unit(b: ConditionBound) -> str:
+    return f" {b.unit}" if b.unit and b.unit != "1" else ""

@@ -187,13 +187,6 @@ def whole(node: Node, domain: Domain) -> Enclosure:
         return _Evaluator(domain, at, 1, {}).of(node)
 
 
-def torn(node: Op, domain: Domain) -> bool:
-    """Can a clamp have its ends the other way round (then it is a choice), with an operand that is off? Raises Unbounded."""
-    x, low, high = (whole(a, domain) for a in node.args)
-    inexact = x.error[0] > 0 or low.error[0] > 0 or high.error[0] > 0
-    return inexact and node.args[1:] not in domain.ordered and bool(low.high[0] > high.low[0])
-
-
 def turned(node: Node) -> tuple[Node, Fraction] | None:
     """(angle, half a turn) of a wrapped angle: wrap(x), or in degrees x + turn * floor(1/2 - x / turn)."""
     match node:

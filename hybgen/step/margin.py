@@ -17,9 +17,9 @@ from hybgen.expr.constant import PI
 from hybgen.expr.core import OPPOSITE, REAL, Const, Kind, Node, Op, Ref, RefKind, op, real, rebuild, truth, walk
 from hybgen.expr.fold import fold
 from hybgen.law.model import Law, StateKind, Table
-from hybgen.numbers.format import FIXED32, Rounding
+from hybgen.numbers.format import FIXED32, FLOAT64, Rounding
 from hybgen.numbers.lookups import Lookup
-from hybgen.numbers.rounding import Difference, Domain, Unbounded, leaves_of, torn, turned, whole
+from hybgen.numbers.rounding import Difference, Domain, Unbounded, leaves_of, turned, whole
 from hybgen.step import declare
 from hybgen.step.model import ConditionBound
 from hybgen.step.quantity import Edges, disturbance, text_of, unit_text
@@ -135,11 +135,19 @@ class Margins:
     def choosing(self, node: Op) -> bool:
         """Is it a choice by a computed condition, or a clamp that may be one?"""
         if node.op == "clamp":
-            try:
-                return torn(node, self.domain)
-            except Unbounded:
-                return False
+            return self.torn(node)
         return node.op == "select" and self.inexact(node.args[0])
+
+    def torn(self, node: Op) -> bool:
+        """May the ends of a clamp be the other way round, while one of its operands is computed?"""
+        if node.args[1:] in self.domain.ordered or all(isinstance(a, Ref) and self.stored(a) for a in node.args):
+            return False
+        ranges = replace(self.domain, format=FLOAT64)
+        try:
+            low, high = (whole(a, ranges) for a in node.args[1:])
+        except Unbounded:
+            return True
+        return bool(low.high[0] > high.low[0])
 
     def either(self, jump: str, node: Op) -> Node:
         """A comparison; with a choice inside, one for each case."""
@@ -237,12 +245,12 @@ class Margins:
         noise = None
         if any(kind is RefKind.INPUT and name in noises for kind, name, _ in leaves_of(node, self.domain)):
             noise = replace(gap, domain=replace(self.domain, noise=noises)).around()
-        opposite = self.edges.gap(jump, node)
+        opposite, late = self.edges.gap(jump, node), gap.latest(limit)
         return ConditionBound(
             jump,
             node.span,
             error,
-            gap.latest(limit),
+            late if math.isfinite(late) else None,
             limit >= gap.reach(),
             "",
             text_of(node.span),

@@ -191,6 +191,7 @@ class ConditionBound:
     error: float | None
     """The largest rounding error where it matters; None: no bound, and the comparison is as the author wrote it."""
     margin: float | None
+    """None with a known error: a divisor near 0 or the like leaves the delay without a bound."""
     never: bool
     """Is it moved further than it can ever hold by?"""
     why: str
@@ -272,12 +273,14 @@ class StepLaw:
     def rounding(self, jump: str) -> str:
         """What the comment above a jump's condition adds: nothing where rounding can't mistake it."""
         mine = [b for b in self.bounds if b.jump == jump]
-        worst = [b for b in mine if b.error is not None and b.margin is not None]
-        if len(worst) < len(mine):
+        if any(b.error is None for b in mine):
             return "; rounding without a bound"
-        if not worst:
+        if not mine:
             return ""
-        error, margin = max(b.error or 0.0 for b in worst), max(b.margin or 0.0 for b in worst)
+        error = max(b.error or 0.0 for b in mine)
+        if any(b.margin is None for b in mine):
+            return f"; rounding at most {upward(error, 2)}, without a bound of the delay"
+        margin = max(b.margin or 0.0 for b in mine)
         return f"; rounding at most {upward(error, 2)}, jumps at the latest {upward(margin, 2)} beyond"
 
     def roots(self) -> Iterator[Node]:

@@ -22,9 +22,10 @@ _UP = ("ge", "gt")
 
 def upward(value: float, digits: int) -> str:
     """A bound with a few digits, never below it."""
+    if value == 0:
+        return "0"
     exact = Decimal(value)
-    place = Decimal(1).scaleb(exact.adjusted() - digits + 1)
-    return f"{exact.quantize(place, ROUND_CEILING) if value else 0:.{digits}g}"
+    return f"{float(exact.quantize(Decimal(1).scaleb(exact.adjusted() - digits + 1), ROUND_CEILING)):.{digits}g}"
 
 
 def text_of(span: Span) -> str:
