@@ -1,6 +1,6 @@
 """Random whole laws: the C compiles without a warning, equals the reference in every bit, and proves when read back.
 
-The default run takes 1,000 laws; `pytest -m campaign tests/test_random_laws.py` takes 50,000 (HYBGEN_LAWS sets another number).
+The default run takes 600 laws, and 120 in fixed point; `pytest -m campaign tests/test_random_laws.py` takes 50,000 (HYBGEN_LAWS sets another number).
 """
 
 from __future__ import annotations
@@ -65,14 +65,14 @@ def check_batch(seeds: range, number: str | None = None) -> int:
 
 @pytest.mark.parametrize("part", range(10))
 def test_random_laws_equal_their_reference_in_every_bit(part: int) -> None:
-    count = sum(check_batch(range(first, first + BATCH)) for first in range(part * 100, (part + 1) * 100, BATCH))
-    assert count >= 95
+    count = sum(check_batch(range(first, first + BATCH)) for first in range(part * 60, (part + 1) * 60, BATCH))
+    assert count >= 57
 
 
 @pytest.mark.parametrize("part", range(4))
 def test_random_laws_in_fixed_point_equal_their_reference(part: int) -> None:
-    firsts = range(20000 + part * 60, 20000 + (part + 1) * 60, BATCH)
-    assert sum(check_batch(range(first, first + BATCH), "fixed32") for first in firsts) >= 42
+    firsts = range(20000 + part * 30, 20000 + (part + 1) * 30, 15)
+    assert sum(check_batch(range(first, first + 15), "fixed32") for first in firsts) >= 22
 
 
 @pytest.mark.campaign

@@ -10,6 +10,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 Array = NDArray[np.float64]
+TINY = 5e-324
+"""The smallest positive number."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -47,12 +49,18 @@ def _mul(a: Enclosure, b: Enclosure) -> tuple[Array, Array, Array]:
 
 
 def _div(a: Enclosure, b: Enclosure) -> tuple[Array, Array, Array]:
+    """A divisor that is 0 at one end only leaves the quotient one side; the error has no bound then."""
     least = np.minimum(np.abs(b.low), np.abs(b.high)) - b.error
-    open_ = (b.low <= 0) & (b.high >= 0) | (least <= 0)
-    low, high = _corners(a, b, np.divide)
+    around = (b.low < 0) & (b.high > 0) | (b.low == 0) & (b.high == 0)
+    ends = Enclosure(np.where(b.low == 0, TINY, b.low), np.where(b.high == 0, -TINY, b.high), b.error)
+    low, high = _corners(a, ends, np.divide)
     ratio = np.maximum(np.abs(low), np.abs(high))
-    error = np.where(open_, np.inf, (a.error + ratio * b.error) / np.where(least > 0, least, 1.0))
-    return np.where(open_, -np.inf, low), np.where(open_, np.inf, high), error
+    error = (a.error + ratio * b.error) / np.where(least > 0, least, 1.0)
+    return (
+        np.where(around, -np.inf, low),
+        np.where(around, np.inf, high),
+        np.where(around | (least <= 0), np.inf, error),
+    )
 
 
 ARITHMETIC: dict[str, Callable[..., tuple[Array, Array, Array]]] = {"add": _add, "sub": _sub, "mul": _mul, "div": _div}
@@ -69,6 +77,11 @@ def _abs(a: Enclosure) -> Enclosure:
 
 def _clamp(x: Enclosure, low: Enclosure, high: Enclosure) -> Enclosure:
     error = np.maximum(np.maximum(x.error, low.error), high.error)
+    # with its ends the other way round it falls from one to the other where x passes `low`
+    crossed = low.high + low.error > high.low - high.error
+    torn = crossed & (error > 0) & (x.low - x.error < low.high + low.error) & (x.high + x.error > low.low - low.error)
+    fall = np.maximum(low.high - high.low, 0.0)
+    error = np.where(torn, error + fall, error)
     bottom = np.maximum(np.minimum(low.low, high.low), np.minimum(x.low, high.low))
     top = np.minimum(np.maximum(low.high, high.high), np.maximum(x.high, low.high))
     return Enclosure(bottom, top, error)
@@ -82,7 +95,7 @@ EXACT: dict[str, Callable[..., Enclosure]] = {
     "clamp": _clamp,
     "iadd": lambda a, b: Enclosure(a.low + b.low, a.high + b.high, a.error + b.error),
     "isub": lambda a, b: Enclosure(a.low - b.high, a.high - b.low, a.error + b.error),
-    "imul": lambda a, b: Enclosure(*_corners(a, b, np.multiply), a.error),
+    "imul": lambda a, b: Enclosure(*_mul(a, b)),
     "ineg": lambda a: Enclosure(-a.high, -a.low, a.error),
     "iabs": _abs,
     "imin": _pair(np.minimum),
@@ -93,12 +106,14 @@ EXACT: dict[str, Callable[..., Enclosure]] = {
 
 
 def floor_of(a: Enclosure) -> Enclosure:
+    """Exact in itself; an error of the argument can carry it over whole numbers."""
     low, high = np.floor(a.low), np.floor(a.high)
     sure = (a.error == 0) | (np.floor(a.low - a.error) == np.floor(a.high + a.error))
-    return Enclosure(low, high, np.where(sure, 0.0, np.ceil(a.error) + 1))
+    return Enclosure(low, high, np.where(sure, 0.0, np.ceil(a.error)))
 
 
 def sign_of(a: Enclosure) -> Enclosure:
+    """Exact in itself; an error of the argument can carry it over zero."""
     sure = (a.error == 0) | (a.low > a.error) | (a.high < -a.error)
     return Enclosure(np.sign(a.low), np.sign(a.high), np.where(sure, 0.0, 2.0))
 
@@ -112,7 +127,7 @@ def _wide(low: Array, high: Array) -> tuple[Array, Array]:
 def _sqrt(a: Enclosure) -> tuple[Array, Array, Array]:
     low, high = _wide(np.sqrt(np.maximum(a.low, 0.0)), np.sqrt(np.maximum(a.high, 0.0)))
     least = np.maximum(a.low - a.error, 0.0)
-    return low, high, np.minimum(np.sqrt(a.error), a.error / (2 * np.sqrt(least)))
+    return low, high, np.fmin(np.sqrt(a.error), a.error / (2 * np.sqrt(least)))  # 0 / 0 is no number
 
 
 def _exp(a: Enclosure) -> tuple[Array, Array, Array]:
@@ -130,7 +145,8 @@ def _wave(function: Callable[[Any], Any]) -> Callable[[Enclosure], tuple[Array, 
     def bounds(a: Enclosure) -> tuple[Array, Array, Array]:
         middle, reach = (a.low + a.high) / 2, (a.high - a.low) / 2
         centre = function(middle)
-        return np.maximum(centre - reach - 1e-15, -1.0), np.minimum(centre + reach + 1e-15, 1.0), a.error
+        reach = reach + 1e-15 * (1 + np.abs(middle) + reach)
+        return np.maximum(centre - reach, -1.0), np.minimum(centre + reach, 1.0), a.error
 
     return bounds
 

@@ -2,13 +2,14 @@
 
 Forward error analysis (N. J. Higham, Accuracy and Stability of Numerical Algorithms, 2nd ed. 2002, ch. 3; from memory) on intervals
 (R. E. Moore, 1966; from memory), over boxes that are halved and dropped where the comparison can't be mistaken: only a
-box in which the exact difference can be below 0 while the computed one is not matters. Everything is rounded outward.
+box in which the exact difference can be below 0 while the computed one is not matters. Everything is rounded outward. A result that
+may overflow has no bound.
 """
 
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from fractions import Fraction
 
@@ -20,11 +21,14 @@ from hybgen.expr.core import Const, Kind, Node, Op, Ref, RefKind
 from hybgen.kernels.errors import ULP
 from hybgen.numbers.enclosures import ARITHMETIC, ELEMENTARY, EXACT, Array, Enclosure, floor_of, sign_of, wrap_of
 from hybgen.numbers.format import Format
+from hybgen.numbers.lookups import Lookup
 
 Leaf = tuple[RefKind, str, int | None]
 
-MOST_BOXES = 4096
-ROUNDS = 40
+MOST_BOXES = 2048
+ROUNDS = 64
+NEARLY = 0.75
+"""Boxes whose score is this share of the worst are halved together."""
 GROW = 1 + 2.0**-40
 """Covers the rounding of the analysis itself, which is in float64."""
 
@@ -37,16 +41,40 @@ class Domain:
     leaves: Mapping[tuple[RefKind, str], tuple[Fraction, Fraction]]
     terms: Mapping[tuple[str, int | None], Node]
     timers: Mapping[str, Fraction]
-    tables: Mapping[str, tuple[float, float, float]]
-    """name -> (steepest slope of all inputs together, largest magnitude, largest magnitude of a point)"""
+    tables: Mapping[str, Lookup]
+    ordered: frozenset[tuple[Node, Node]] = frozenset()
+    """Pairs of which the first is never above the second, because a rule on the parameters says so."""
+    noise: Mapping[str, float] | None = None
+    """None: operations round. Otherwise nothing rounds, and samples are off by this much: what noise does to a comparison."""
 
-    def rounding(self, value: Fraction) -> float:
+    def constant(self, value: Fraction) -> float:
         """How far a constant is from its number of the format, rounded up; infinite beyond the format's range."""
+        if self.noise is not None:
+            return 0.0
         try:
             off = abs(value - self.format.round(value))
         except OverflowError:
             return math.inf
         return math.nextafter(nearest(off), math.inf) if off else 0.0
+
+    def half(self, size: Array) -> Array:
+        """Half a unit in the last place of results up to a magnitude: the error of one rounding."""
+        if self.noise is not None:
+            return np.zeros(np.shape(size))
+        fmt = self.format
+        known = np.isfinite(size)
+        exponent = np.frexp(np.where(known, np.maximum(size, 2.0**-1000), 1.0))[1] - fmt.precision
+        return np.where(known, np.ldexp(0.5, np.maximum(exponent, max(fmt.least, -1070)).astype(int)), np.inf)
+
+    @property
+    def unit(self) -> float:
+        """The relative error of one rounding."""
+        return 0.0 if self.noise is not None else 2.0**-self.format.precision
+
+    @property
+    def top(self) -> float:
+        """Beyond this a result may be computed as infinite."""
+        return nearest(self.format.max) * (1 - 2.0**-20)
 
 
 def nearest(value: Fraction) -> float:
@@ -80,42 +108,83 @@ def leaves_of(node: Node, domain: Domain, found: dict[Leaf, None] | None = None)
     return found
 
 
-def difference(left: Node, right: Node, domain: Domain) -> tuple[float, float]:
-    """(bound of the error of computed left - computed right, largest exact left - right).
+@dataclass(frozen=True, slots=True)
+class Difference:
+    """left - right on a domain, where the subtraction itself counts as exact.
 
-    The bound holds for every point of the domain where left - right is below 0 and is computed as 0 or more. The
-    subtraction itself counts as exact. Raises Unbounded.
+    `outward`: a constant side counts as exact, because the caller moves it outward itself.
     """
-    leaves = list(leaves_of(left, domain) | leaves_of(right, domain))
-    low, high = (
-        (np.array([[end] for end in ends]) for ends in zip(*_ends(leaves, domain), strict=True))
-        if leaves
-        else (
-            np.zeros((0, 1)),
-            np.zeros((0, 1)),
-        )
-    )
-    largest = -math.inf
-    for turn in range(ROUNDS):
-        error, below, above = _gap(left, right, leaves, low, high, domain)
-        largest = max(largest, float(above.max())) if turn == 0 else largest
-        touching = (below < 0) & (above >= -error)
-        if not touching.any():
-            return 0.0, largest
-        low, high, error = low[:, touching], high[:, touching], error[touching]
-        if not leaves or 2 * low.shape[1] > MOST_BOXES:
-            break
-        low, high = _halved(low, high, turn % len(leaves))
-    return float(error.max()), largest
+
+    left: Node
+    right: Node
+    domain: Domain
+    outward: bool
+
+    def error(self) -> float:
+        """A bound of |computed - exact| where the exact difference is 0 or less and the computed one may be 0 or more.
+
+        Raises Unbounded.
+        """
+        return self._worst(lambda below, above, off: np.where((below <= 0) & (above >= -off), off, 0.0))
+
+    def latest(self, threshold: float) -> float:
+        """The largest exact difference at which the computed one may still be at or below a threshold."""
+
+        def score(below: Array, above: Array, off: Array) -> Array:
+            return np.where(below <= threshold + off, np.minimum(above, threshold + off), 0.0)
+
+        return self._worst(score, MOST_BOXES // 4)
+
+    def around(self) -> float:
+        """A bound of |computed - exact| where either may be on another side of 0 than the other."""
+        return self._worst(lambda below, above, off: np.where((below <= off) & (above >= -off), off, 0.0), 64)
+
+    def reach(self) -> float:
+        """A bound of the largest exact difference."""
+        return self._worst(lambda below, above, off: np.maximum(above, 0.0), 64)
+
+    def _worst(self, score: Callable[[Array, Array, Array], Array], budget: int = MOST_BOXES) -> float:
+        """The largest score of all boxes, after halving the worst ones again and again."""
+        leaves = list(leaves_of(self.left, self.domain) | leaves_of(self.right, self.domain))
+        ends = np.array(_ends(leaves, self.domain)).reshape(-1, 2)
+        low, high = ends[:, :1], ends[:, 1:]
+        scores, depth = score(*self._gap(leaves, low, high)), np.zeros(1, int)
+        best, since, spent = math.inf, 0, 0
+        for _ in range(ROUNDS if leaves else 0):
+            top = scores.max()
+            best, since = (top, 0) if top < 0.98 * best or best == math.inf > top else (best, since + 1)
+            if top <= 0 or spent >= budget or since > (ROUNDS if top == math.inf else 2 * len(leaves) + 2):
+                break
+            split = np.flatnonzero(scores >= NEARLY * top)[: budget - spent]
+            spent += len(split)
+            parts = _halved(low[:, split], high[:, split], depth[split] % len(leaves))
+            kept = np.setdiff1d(np.flatnonzero(scores > 0), split)
+            scores = np.concatenate([scores[kept], score(*self._gap(leaves, *parts))])
+            low, high = (np.concatenate([old[:, kept], new], 1) for old, new in zip((low, high), parts, strict=True))
+            depth = np.concatenate([depth[kept], *[depth[split] + 1] * 2])
+        return max(0.0, float(scores.max()))
+
+    def _gap(self, leaves: list[Leaf], low: Array, high: Array) -> tuple[Array, Array, Array]:
+        """(lowest, highest, error) of the difference in each box."""
+        at = {leaf: (low[i], high[i]) for i, leaf in enumerate(leaves)}
+        evaluator = _Evaluator(self.domain, at, low.shape[1], {})
+        with np.errstate(all="ignore"):
+            a, b = evaluator.of(self.left), evaluator.of(self.right)
+            sides = [
+                e.error for n, e in ((self.left, a), (self.right, b)) if not (self.outward and isinstance(n, Const))
+            ]
+            error = sum(sides, evaluator.full(0.0)) * GROW
+            error = np.where(np.isnan(error), np.inf, error)
+            return _down(a.low - b.high), _up(a.high - b.low), error
 
 
-def largest_error(node: Node, domain: Domain) -> float:
-    """The bound of the error of an expression over the whole domain. Raises Unbounded."""
+def whole(node: Node, domain: Domain) -> Enclosure:
+    """An expression over the whole domain, as one box. Raises Unbounded."""
     leaves = list(leaves_of(node, domain))
     ends = _ends(leaves, domain)
     at = {leaf: (np.array([low]), np.array([high])) for leaf, (low, high) in zip(leaves, ends, strict=True)}
     with np.errstate(all="ignore"):
-        return float(_Evaluator(domain, at, 1, {}).of(node).error[0])
+        return _Evaluator(domain, at, 1, {}).of(node)
 
 
 def interval(node: Node, domain: Domain) -> tuple[float, float]:
@@ -148,34 +217,28 @@ def turned(node: Node) -> tuple[Node, Fraction] | None:
 
 
 def _ends(leaves: list[Leaf], domain: Domain) -> list[tuple[float, float]]:
-    found = []
+    found: list[tuple[float, float]] = []
     for kind, name, _ in leaves:
         if (kind, name) not in domain.leaves:
             raise Unbounded(name)
-        found.append(tuple(nearest(e) for e in domain.leaves[(kind, name)]))
-    return [(np.nextafter(a, -np.inf), np.nextafter(b, np.inf)) for a, b in found]
+        low, high = domain.leaves[(kind, name)]
+        found.append((_below(low), -_below(-high)))
+    return found
 
 
-def _halved(low: Array, high: Array, axis: int) -> tuple[Array, Array]:
-    middle = (low[axis] + high[axis]) / 2
+def _below(value: Fraction) -> float:
+    """The largest float that is not above a fraction."""
+    found = nearest(value)
+    return found if math.isinf(found) or Fraction(found) <= value else math.nextafter(found, -math.inf)
+
+
+def _halved(low: Array, high: Array, axes: NDArray[np.int_]) -> tuple[Array, Array]:
+    """Both halves of each box, along its axis."""
+    boxes = np.arange(low.shape[1])
+    middle = (low[axes, boxes] + high[axes, boxes]) / 2
     first_high, second_low = high.copy(), low.copy()
-    first_high[axis], second_low[axis] = middle, middle
+    first_high[axes, boxes], second_low[axes, boxes] = middle, middle
     return np.concatenate([low, second_low], axis=1), np.concatenate([first_high, high], axis=1)
-
-
-def _gap(
-    left: Node, right: Node, leaves: list[Leaf], low: Array, high: Array, domain: Domain
-) -> tuple[Array, Array, Array]:
-    """(error, lowest, highest) of the exact left - right in each box."""
-    at = {leaf: (low[i], high[i]) for i, leaf in enumerate(leaves)}
-    evaluator = _Evaluator(domain, at, low.shape[1] if leaves else 1, {})
-    with np.errstate(all="ignore"):
-        a, b = evaluator.of(left), evaluator.of(right)
-        # a constant is rounded outward: exact
-        error = sum(
-            0.0 if isinstance(n, Const) else e.error for n, e in ((left, a), (right, b))
-        ) * GROW + evaluator.full(0)
-        return np.where(np.isnan(error), np.inf, error), _down(a.low - b.high), _up(a.high - b.low)
 
 
 def _down(x: Array) -> Array:
@@ -195,18 +258,12 @@ class _Evaluator:
     count: int
     memo: dict[Node, Enclosure]
 
-    def half(self, size: Array) -> Array:
-        """Half a unit in the last place of results up to a magnitude: the error of one rounding."""
-        fmt = self.domain.format
-        exponent = np.frexp(np.where(np.isfinite(size), size, 1.0))[1] - fmt.precision
-        half = np.ldexp(0.5, np.maximum(exponent, fmt.least).astype(int))
-        return np.where(np.isfinite(size), half, np.inf)
-
     def rounded(self, low: Array, high: Array, error: Array, units: float = 0.5) -> Enclosure:
         """A result with the error of its operands, and that of its own rounding (in units in the last place)."""
         low, high, error = _down(low), _up(high), np.where(np.isnan(error), np.inf, error * GROW)
         size = np.maximum(np.abs(low), np.abs(high)) + error
-        return Enclosure(low, high, (error + 2 * units * self.half(size)) * GROW)
+        total = (error + 2 * units * self.domain.half(size)) * GROW
+        return Enclosure(low, high, np.where(size < self.domain.top, total, np.inf))
 
     def of(self, node: Node) -> Enclosure:
         found = self.memo.get(node)
@@ -222,20 +279,26 @@ class _Evaluator:
             case Const():
                 exact = Fraction(node.value)
                 value = self.full(nearest(exact))
-                off = self.domain.rounding(exact) if node.type.kind is Kind.REAL else 0.0
+                off = self.domain.constant(exact) if node.type.kind is Kind.REAL else 0.0
                 return Enclosure(_down(value), _up(value), self.full(off))
             case Ref(kind=RefKind.TERM):
                 return self.of(self.domain.terms[(node.name, node.index)])
             case Ref():
-                low, high = self.at[(node.kind, node.name, node.index)]
-                made = Enclosure(low, high, self.full(0.0))
-                return self.timer(made) if node.type.kind is Kind.REAL and node.name in self.domain.timers else made
+                return self.leaf(node)
             case Op():
                 return self.operation(node)
 
-    def timer(self, steps: Enclosure) -> Enclosure:
-        """A timer as a real time: its steps become real, times a rounded constant, rounded: three roundings."""
-        return Enclosure(steps.low, steps.high, 3 * self.half(steps.size) * (1 + 2.0**-20))
+    def leaf(self, node: Ref) -> Enclosure:
+        """What is stored is exact; a timer as a real time is its steps, made real, times a rounded constant, rounded."""
+        if node.type.kind in (Kind.BOOL, Kind.ENUM):
+            return Enclosure(self.full(0.0), self.full(1.0), self.full(0.0))
+        low, high = self.at[(node.kind, node.name, node.index)]
+        off = self.full(0.0)
+        if node.type.kind is Kind.REAL and node.kind is RefKind.STATE and node.name in self.domain.timers:
+            off = 3 * self.domain.unit * np.maximum(np.abs(low), np.abs(high)) * GROW
+        elif self.domain.noise is not None and node.kind is RefKind.INPUT:
+            off = self.full(self.domain.noise.get(node.name, 0.0))
+        return Enclosure(low, high, off)
 
     def operation(self, node: Op) -> Enclosure:
         if node.op == "select":
@@ -243,6 +306,8 @@ class _Evaluator:
         if node.op == "add" and (found := turned(node)) is not None:
             return self.turned(self.of(found[0]), float(found[1]))
         args = [self.of(a) for a in node.args]
+        if node.op == "clamp" and node.args[1:] in self.domain.ordered:
+            return EXACT["max"](args[1], EXACT["min"](args[0], args[2]))
         if node.op in EXACT:
             return EXACT[node.op](*args)
         if node.op in ELEMENTARY:
@@ -250,35 +315,31 @@ class _Evaluator:
             return self.rounded(low, high, error, ULP[self.domain.format.name][node.op])
         match node.op:
             case "lookup" | "lookup2":
-                return self.lookup(node, args)
+                return self.domain.tables[node.table].enclosure(args, self.domain.half, self.domain.unit)
             case "floor":
                 return floor_of(args[0])
             case "sign":
                 return sign_of(args[0])
             case "to_real":
-                exact = args[0].size < float(self.domain.format.whole)
-                return Enclosure(args[0].low, args[0].high, np.where(exact, 0.0, self.half(args[0].size)))
+                off = np.where(args[0].size < float(self.domain.format.whole), 0.0, self.domain.half(args[0].size))
+                return Enclosure(args[0].low, args[0].high, args[0].error + off)
             case _:
                 return self.rounded(*ARITHMETIC[node.op](*args))
 
     def turned(self, x: Enclosure, half: float) -> Enclosure:
         """An angle less whole turns, away from the cut: the product of turns, and the sum, are rounded."""
         low, high, _ = wrap_of(x, half)
-        error = x.error + np.where(x.size < half, 0.0, self.half(x.size + 2 * half) + self.half(self.full(half)))
+        error = x.error + np.where(
+            x.size < half, 0.0, self.domain.half(x.size + 2 * half) + self.domain.half(self.full(half))
+        )
         return Enclosure(low, high, error * GROW)
-
-    def lookup(self, node: Op, args: list[Enclosure]) -> Enclosure:
-        """Continuous and as steep as its steepest part; a dozen roundings at the size of its values and points."""
-        slope, size, points = self.domain.tables[node.table]
-        off = sum(a.error + 2 * self.half(np.maximum(np.minimum(a.size, points), points)) for a in args)
-        error = (slope * off + 12 * self.half(self.full(size))) * GROW
-        return Enclosure(self.full(-size), self.full(size), error)
 
     def choice(self, node: Op) -> Enclosure:
         asked, yes, no = node.args
         a, b = self.of(yes), self.of(no)
         low, high, error = np.minimum(a.low, b.low), np.maximum(a.high, b.high), np.maximum(a.error, b.error)
-        return Enclosure(low, high, np.where(self.sure(asked), error, high - low + error))
+        doubtful = high - low + error
+        return Enclosure(low, high, np.where(self.sure(asked), error, np.where(np.isnan(doubtful), np.inf, doubtful)))
 
     def sure(self, condition: Node) -> NDArray[np.bool_]:
         """In which boxes is the condition certainly answered as the exact one?"""
@@ -297,7 +358,13 @@ class _Evaluator:
 
     def decided(self, left: Node, right: Node) -> NDArray[np.bool_]:
         a, b = self.of(left), self.of(right)
-        # a constant against an exact number is rounded so that the answer is exact
-        first, second = (0.0 if isinstance(n, Const) else e.error for n, e in ((left, a), (right, b)))
-        error = first + second
-        return np.asarray((error == 0) | (a.low - b.high > error) | (b.low - a.high > error))
+        # a constant is rounded outward, by up to a whole unit: against an exact number the answer is exact
+        first, second = (
+            self.domain.half(e.size) * 2 * (e.error > 0) if isinstance(n, Const) else e.error
+            for n, e in ((left, a), (right, b))
+        )
+        exact = [e.error == 0 for n, e in ((left, a), (right, b)) if not isinstance(n, Const)]
+        error = (first + second) * GROW
+        return np.asarray(
+            np.logical_and.reduce(exact) | (_down(a.low - b.high) > error) | (_down(b.low - a.high) > error)
+        )

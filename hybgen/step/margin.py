@@ -1,27 +1,34 @@
 """Jump conditions that rounding can only delay: each computed comparison is moved outward by the bound of its rounding error.
 
 Against a constant c: `f >= c` becomes `f >= c'`, c' the float at or above c + E. Otherwise `f >= g` becomes `f - g >= e`, e one
-float above E: a difference that rounds to e or more is above E. Comparisons that rounding can't mistake stay as they are.
+float above E: a difference that rounds to e or more is above E. Comparisons that rounding can't mistake stay as they are. A comparison with
+a choice between values, made by a computed condition, is written as one comparison for each case. The flow condition and the
+conditions inside other values are not moved: where flow and jump both may, either is a solution of the law.
 """
 
 from __future__ import annotations
 
 import math
 from collections.abc import Iterator
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from fractions import Fraction
 
 from hybgen.expr.constant import PI
-from hybgen.expr.core import OPPOSITE, REAL, Const, Kind, Node, Op, Ref, RefKind, op, real, truth, walk
-from hybgen.law.model import Grid, Law, StateKind, Table
-from hybgen.numbers.format import FIXED32, Rounding
-from hybgen.numbers.rounding import Domain, Unbounded, difference, largest_error, turned
+from hybgen.expr.core import OPPOSITE, REAL, Const, Kind, Node, Op, Ref, RefKind, op, real, rebuild, truth, walk
+from hybgen.expr.fold import fold
+from hybgen.law.model import Law, StateKind, Table
+from hybgen.numbers.format import FIXED32, FLOAT64, Rounding
+from hybgen.numbers.lookups import Lookup
+from hybgen.numbers.rounding import Difference, Domain, Unbounded, leaves_of, turned, whole
 from hybgen.step import declare
 from hybgen.step.model import ConditionBound
+from hybgen.step.quantity import Edges, disturbance, text_of, unit_text
 from hybgen.step.translate import Translator
 
 _MIRROR = {"ge": "le", "le": "ge", "gt": "lt", "lt": "gt"}
 _UP = ("ge", "gt")
+MOST_CHOICES = 3
+"""So many choices by computed conditions in one comparison are written out."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -31,6 +38,7 @@ class Margins:
     law: Law
     translator: Translator
     domain: Domain
+    edges: Edges
     records: list[ConditionBound] = field(default_factory=list)
     known: dict[Node, bool] = field(default_factory=dict)
 
@@ -43,8 +51,12 @@ class Margins:
             for i, e in enumerate(t.exprs)
         }
         timers = {n: translator.step / u.scale for n, u in translator.timers.items()}
-        tables = {t.name: _table(t) for t in law.tables}
-        return cls(law, translator, Domain(translator.format, _leaves(law, translator), terms, timers, tables))
+        tables = {
+            t.name: Lookup.of((t.x,), t.y) if isinstance(t, Table) else Lookup.of((t.x, t.y), t.z) for t in law.tables
+        }
+        domain = Domain(translator.format, _leaves(law, translator), terms, timers, tables, _ordered(law, translator))
+        edges = Edges.of(law, {j.name: translator.exact(j.condition) for j in law.jumps}, terms)
+        return cls(law, translator, domain, edges)
 
     def condition(self, jump: str, condition: Node) -> Node:
         """The translated condition of a jump."""
@@ -61,8 +73,8 @@ class Margins:
             case Op(op="and" | "or"):
                 name = node.op if positive else ("or" if node.op == "and" else "and")
                 return op(name, *(self.made(jump, a, positive) for a in node.args), span=node.span)
-            case Op(op="lt" | "le" | "gt" | "ge") if node.args[0].type == REAL:
-                return self.comparison(
+            case Op() if node.op in OPPOSITE and node.args[0].type.kind is not Kind.BOOL:
+                return self.either(
                     jump, node if positive else Op(OPPOSITE[node.op], node.args, node.type, "", node.span)
                 )
             case Op(op="select") if self.inexact(node.args[0]):
@@ -95,7 +107,7 @@ class Margins:
         if node not in self.known:
             self.known[node] = any(
                 self.inexact(self.domain.terms[(n.name, n.index)])
-                if isinstance(n, Ref) and n.kind is RefKind.TERM and n.type.kind is Kind.BOOL
+                if isinstance(n, Ref) and n.kind is RefKind.TERM
                 else self.computed(n)
                 for n in walk(node)
             )
@@ -116,32 +128,92 @@ class Margins:
             isinstance(node, Ref) and node.kind is not RefKind.TERM and not self.timer(node)
         )
 
+    def choices(self, node: Node) -> list[Op]:
+        """The choices by computed conditions in an expression, through terms, each once."""
+        return list(dict.fromkeys(n for n, _ in self.inside(node) if isinstance(n, Op) and self.choosing(n)))
+
+    def choosing(self, node: Op) -> bool:
+        """Is it a choice by a computed condition, or a clamp that may be one?"""
+        if node.op == "clamp":
+            return self.torn(node)
+        return node.op == "select" and self.inexact(node.args[0])
+
+    def torn(self, node: Op) -> bool:
+        """May the ends of a clamp be the other way round, while one of its operands is computed?"""
+        if node.args[1:] in self.domain.ordered or all(isinstance(a, Ref) and self.stored(a) for a in node.args):
+            return False
+        ranges = replace(self.domain, format=FLOAT64)
+        try:
+            low, high = (whole(a, ranges) for a in node.args[1:])
+        except Unbounded:
+            return True
+        return bool(low.high[0] > high.low[0])
+
+    def either(self, jump: str, node: Op) -> Node:
+        """A comparison; with a choice inside, one for each case."""
+        found = self.choices(node)
+        if not found or len(found) > MOST_CHOICES:
+            if found and node.args[0].type != REAL:
+                self.note(jump, node, None, None, f"it has more than {MOST_CHOICES} choices by computed conditions")
+            return self.comparison(jump, node)
+        asked, yes, no = _cases(found[-1])
+        cases = [
+            op("and", condition, self.chosen(node, found[-1], value), span=node.span)
+            for condition, value in ((asked, yes), (op("not", asked, span=asked.span), no))
+        ]
+        return self.made(jump, fold(op("or", *cases, span=node.span)), True)
+
+    def chosen(self, node: Node, choice: Op, value: Node) -> Node:
+        """The expression with a choice made; terms that have it are written out."""
+
+        def change(here: Node) -> Node:
+            if here == choice:
+                return value
+            if isinstance(here, Ref) and here.kind is RefKind.TERM:
+                body = self.domain.terms[(here.name, here.index)]
+                if any(inner == choice for inner, _ in self.inside(body)):
+                    return rebuild(body, change)
+            return here
+
+        return rebuild(node, change)
+
     def comparison(self, jump: str, node: Op) -> Node:
         """A comparison, moved where it has to be; the cut of an angle is guarded."""
         plain = self.translator.translate(node)
+        if any(self.timer(a) for a in node.args) and not all(self.whole_time(a) for a in node.args):
+            self.note(jump, node, None, None, "a computed time is rounded to whole steps")
         if not self.computed(node) or self.domain.format is FIXED32:
             return plain
         name, (left, right) = node.op, node.args
         if isinstance(left, Const):
             name, left, right = _MIRROR[name], right, left
         try:
-            moved, error, margin, reach = self.moved(name, left, right, node)
-            guards = [g for side in (left, right) for g in self.cuts(side)]
+            moved, record = self.moved(jump, name, left, right, node)
+            guards = list(dict.fromkeys(g for side in (left, right) for g in self.cuts(side)))
         except Unbounded as missing:
             self.note(jump, node, None, None, f"'{missing}' has no range")
             return plain
-        if not math.isfinite(error):
-            self.note(
-                jump, node, None, None, "the error has no bound (a divisor or an argument reaches an end of its domain)"
-            )
+        if not math.isfinite(record.error or 0.0):
+            why = "the error has no bound (a divisor or an argument reaches an end of its domain, or a result may overflow)"
+            self.note(jump, node, None, None, why)
             return plain
-        if error == 0 and not guards:
+        if record.error == 0 and not guards:
             return plain
-        self.note(jump, node, error, margin, "", never=margin >= reach)
+        self.records.append(replace(record, within=self.within(node, bool(guards))))
         return op("and", moved, *guards, span=node.span) if guards else moved
 
-    def moved(self, name: str, left: Node, right: Node, node: Op) -> tuple[Node, float, float, float]:
-        """(the comparison, the error's bound, how far beyond the exact surface it holds at the latest, how far it can be)."""
+    def whole_time(self, node: Node) -> bool:
+        """A timer, or a time that is made whole steps from a constant or a parameter."""
+        match node:
+            case Op(op="select"):
+                return all(self.whole_time(a) for a in node.args[1:])
+            case Op(op="mul", args=(inner, Const())):
+                return self.whole_time(inner)
+            case _:
+                return self.timer(node) or self.stored(node)
+
+    def moved(self, jump: str, name: str, left: Node, right: Node, node: Op) -> tuple[Node, ConditionBound]:
+        """The comparison moved, and what is to be said about it."""
         up = name in _UP
         first, second = (left, right) if up else (right, left)
         constant = isinstance(right, Const)
@@ -151,23 +223,48 @@ class Margins:
             a, b = left.args
             other = b if left.op == "sub" else op("neg", b)
             first, second = (a, other) if up else (other, a)
-        error, reach = difference(first, second, self.domain)
-        translated = self.translator.translate(left)
+        gap = Difference(first, second, self.domain, outward=not zero)
+        error = gap.error()
         if error == 0 or not math.isfinite(error):
-            return self.translator.translate(node), error, 0.0, reach
-        if constant and not zero:
-            assert isinstance(right, Const)
+            return self.translator.translate(node), ConditionBound(jump, node.span, error, 0.0, False, "")
+        translated = self.translator.translate(left)
+        if isinstance(right, Const) and not zero:
             exact = Fraction(right.value)
             edge = self.rounded(exact + (Fraction(error) if up else -Fraction(error)), up)
-            return (
-                op(name, translated, real(edge, right.span), span=node.span),
-                error,
-                float(abs(edge - exact)) + error,
-                reach,
-            )
-        edge = self.above(error)
-        gap = translated if zero else op("sub", translated, self.translator.translate(right), span=node.span)
-        return op(name, gap, real(edge if up else -edge), span=node.span), error, float(edge) + error, reach
+            threshold, made = abs(edge - exact), op(name, translated, real(edge, right.span), span=node.span)
+        else:
+            threshold = self.above(error)
+            change = translated if zero else op("sub", translated, self.translator.translate(right), span=node.span)
+            made = op(name, change, real(threshold if up else -threshold), span=node.span)
+        return made, self.record(jump, node, gap, error, threshold)
+
+    def record(self, jump: str, node: Op, gap: Difference, error: float, threshold: Fraction) -> ConditionBound:
+        """What is said about a comparison that is moved by a threshold."""
+        limit = math.nextafter(float(threshold), math.inf)
+        noises = disturbance(self.law)
+        noise = None
+        if any(kind is RefKind.INPUT and name in noises for kind, name, _ in leaves_of(node, self.domain)):
+            noise = replace(gap, domain=replace(self.domain, noise=noises)).around()
+        opposite, late = self.edges.gap(jump, node), gap.latest(limit)
+        return ConditionBound(
+            jump,
+            node.span,
+            error,
+            late if math.isfinite(late) else None,
+            limit >= gap.reach(),
+            "",
+            text_of(node.span),
+            unit_text(node, self.law),
+            noise=noise,
+            gap=(opposite[0], float(opposite[1])) if opposite else None,
+        )
+
+    def within(self, node: Op, turned_: bool) -> str:
+        """What the bound takes for granted, and nothing enforces."""
+        free = {x.name for x in self.law.states if x.kind is StateKind.REAL and not x.limit}
+        names = [n for k, n, _ in leaves_of(node, self.domain) if k is RefKind.STATE and n in free]
+        parts = [f"while {', '.join(dict.fromkeys(names))} is inside the declared range"] if names else []
+        return "; ".join([*parts, *(["an angle next to half a turn makes no jump"] if turned_ else [])])
 
     def rounded(self, value: Fraction, up: bool) -> Fraction:
         return self.translator.rounded(value, how=Rounding.UP if up else Rounding.DOWN)
@@ -184,7 +281,7 @@ class Margins:
             if found is None:
                 continue
             angle, half = found
-            error = largest_error(angle, self.domain)
+            error = float(whole(angle, self.domain).error[0])
             if error == 0 and half == PI:
                 continue
             slack = Fraction(error) + 8 * half / 2**self.domain.format.precision
@@ -199,45 +296,54 @@ class Margins:
                 body = self.domain.terms[(here.name, here.index)]
                 yield from ((inner, here if inner is body else name) for inner, name in self.inside(body))
 
-    def note(
-        self, jump: str, node: Op, error: float | None, margin: float | None, why: str, never: bool = False
-    ) -> None:
-        self.records.append(ConditionBound(jump, node.span, error, margin, never, why))
+    def note(self, jump: str, node: Op, error: float | None, margin: float | None, why: str) -> None:
+        text, unit = text_of(node.span), unit_text(node, self.law)
+        self.records.append(ConditionBound(jump, node.span, error, margin, False, why, text, unit))
+
+
+def _cases(node: Op) -> tuple[Node, ...]:
+    """(condition, value where it holds, value where not) of a choice or a clamp."""
+    if node.op == "select":
+        return node.args
+    x, low, high = node.args
+    above = op("select", op("gt", x, high, span=node.span), high, x, span=node.span)
+    return op("lt", x, low, span=node.span), low, above
+
+
+def _ordered(law: Law, translator: Translator) -> frozenset[tuple[Node, Node]]:
+    """Pairs of stored parameters and constants of which a rule that the program enforces says first <= second."""
+    found = set()
+    for assumption in law.assume:
+        todo = [translator.exact(assumption.condition)]
+        while todo:
+            match todo.pop():
+                case Op(op="and", args=parts):
+                    todo += parts
+                case Op(op="lt" | "le", args=(Ref(kind=RefKind.PARAMETER) as a, Ref(kind=RefKind.PARAMETER) as b)):
+                    found.add((a, b))
+                case Op(op="gt" | "ge", args=(Ref(kind=RefKind.PARAMETER) as a, Ref(kind=RefKind.PARAMETER) as b)):
+                    found.add((b, a))
+                case _:
+                    pass
+    return frozenset(found)
 
 
 def _leaves(law: Law, translator: Translator) -> dict[tuple[RefKind, str], tuple[Fraction, Fraction]]:
-    """Ranges of samples, tunable parameters, states, counts and timers (as real times too)."""
-    found: dict[tuple[RefKind, str], tuple[Fraction, Fraction]] = {}
+    """Ranges of samples, tunable parameters, states, counts and timers (as real times too), with their ends as they are
+    rounded."""
+    found: dict[tuple[RefKind, str], list[Fraction]] = {}
     for u in law.inputs:
         if u.low is not None and u.high is not None:
-            ends = [
-                Fraction(v) for v in (u.low, u.high, u.initial, u.substitute if u.substitute is not None else u.low)
-            ]
-            found[(RefKind.INPUT, u.name)] = min(ends), max(ends)
+            substitute = u.substitute if u.substitute is not None else u.low
+            found[(RefKind.INPUT, u.name)] = [Fraction(v) for v in (u.low, u.high, u.initial, substitute)]
     for p in law.tunables:
         if p.low is not None and p.high is not None:
-            found[(RefKind.PARAMETER, p.name)] = Fraction(p.low), Fraction(p.high)
+            found[(RefKind.PARAMETER, p.name)] = [Fraction(p.low), Fraction(p.high)]
     for x in law.states:
         if x.kind is StateKind.REAL and x.low is not None and x.high is not None:
-            found[(RefKind.STATE, x.name)] = x.low, x.high
+            found[(RefKind.STATE, x.name)] = [x.low, x.high]
         elif ends_ := declare.state_range(x, translator):
             factor = translator.step / x.unit.scale if x.kind is StateKind.TIMER else 1
-            found[(RefKind.STATE, x.name)] = ends_[0] * factor, ends_[1] * factor
-    return found
-
-
-def _table(table: Table | Grid) -> tuple[float, float, float]:
-    """(steepest slope of all inputs together, largest value, largest point)"""
-
-    def steepest(points: tuple[Fraction, ...], rows: list[tuple[Fraction, ...]]) -> Fraction:
-        return max(
-            abs(d - c) / (b - a) for row in rows for a, b, c, d in zip(points, points[1:], row, row[1:], strict=False)
-        )
-
-    if isinstance(table, Table):
-        slope, values, points = steepest(table.x, [table.y]), list(table.y), list(table.x)
-    else:
-        columns = [tuple(row[j] for row in table.z) for j in range(len(table.y))]
-        slope = steepest(table.x, columns) + steepest(table.y, list(table.z))
-        values, points = [v for row in table.z for v in row], [*table.x, *table.y]
-    return (*(float(v) * (1 + 2.0**-40) for v in (slope, max(map(abs, values)), max(map(abs, points)))),)  # type: ignore[return-value]
+            found[(RefKind.STATE, x.name)] = [e * factor for e in ends_]
+    wide = {key: [*ends, *map(translator.rounded, ends)] for key, ends in found.items()}
+    return {key: (min(ends), max(ends)) for key, ends in wide.items()}

@@ -34,6 +34,7 @@ from hybgen.diag.span import Span
 from hybgen.expr.core import Node, RefKind, Type
 from hybgen.law.model import Law, StateKind, Value
 from hybgen.numbers.format import Format
+from hybgen.step.quantity import upward
 
 
 class Status(IntFlag):
@@ -180,8 +181,9 @@ class StepAssign:
 class ConditionBound:
     """What rounding does to one computed comparison of a jump condition.
 
-    The jump is never taken where the law's comparison (in real numbers, at the sampled inputs and the stored state) does not
-    hold, and is due at the latest where it holds with `margin`. Valid inside the declared ranges.
+    The comparison never holds where the law's (in real numbers, at the sampled inputs and the stored state) does not, and
+    holds at the latest where the law's holds with `margin`. Valid inside the declared ranges (`within` says which of them
+    nothing enforces). Times are whole steps in the law too.
     """
 
     jump: str
@@ -189,10 +191,20 @@ class ConditionBound:
     error: float | None
     """The largest rounding error where it matters; None: no bound, and the comparison is as the author wrote it."""
     margin: float | None
+    """None with a known error: a divisor near 0 or the like leaves the delay without a bound."""
     never: bool
-    """Is the margin larger than the comparison can ever hold by?"""
+    """Is it moved further than it can ever hold by?"""
     why: str
     """Why there is no bound."""
+    text: str = ""
+    """The comparison as the author wrote it."""
+    unit: str | None = None
+    """Of error and margin; None where constants leave it open."""
+    within: str = ""
+    noise: float | None = None
+    """What noise and resolution of the samples can do to it at most; None where none is declared."""
+    gap: tuple[str, float] | None = None
+    """The jump with the opposite comparison, and the distance between both (at the default parameters)."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -260,11 +272,16 @@ class StepLaw:
 
     def rounding(self, jump: str) -> str:
         """What the comment above a jump's condition adds: nothing where rounding can't mistake it."""
-        worst = [b for b in self.bounds if b.jump == jump and b.error is not None and b.margin is not None]
-        if not worst:
+        mine = [b for b in self.bounds if b.jump == jump]
+        if any(b.error is None for b in mine):
+            return "; rounding without a bound"
+        if not mine:
             return ""
-        error, margin = max(b.error or 0.0 for b in worst), max(b.margin or 0.0 for b in worst)
-        return f"; rounding at most {error:.2g}, jumps at the latest {margin:.2g} beyond"
+        error = max(b.error or 0.0 for b in mine)
+        if any(b.margin is None for b in mine):
+            return f"; rounding at most {upward(error, 2)}, without a bound of the delay"
+        margin = max(b.margin or 0.0 for b in mine)
+        return f"; rounding at most {upward(error, 2)}, jumps at the latest {upward(margin, 2)} beyond"
 
     def roots(self) -> Iterator[Node]:
         """The expressions that are computed for their own sake: alarms, conditions, new values, outputs."""

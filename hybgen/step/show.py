@@ -6,7 +6,8 @@ from collections.abc import Iterator
 from fractions import Fraction
 
 from hybgen.expr.core import Const, Kind, Node, Op, Ref, RefKind
-from hybgen.step.model import StepAssign, StepLaw, StepOutput
+from hybgen.step.model import ConditionBound, StepAssign, StepJump, StepLaw, StepOutput
+from hybgen.step.quantity import upward
 from hybgen.step.translate import component
 
 _INFIX = {
@@ -56,10 +57,7 @@ def _lines(made: StepLaw) -> Iterator[str]:
     yield ""
     yield f"jumps: at most {made.jumps_per_step} in one step, first in order; prefer {made.law.prefer}"
     for jump in made.jumps:
-        yield f"  {jump.number} {jump.name}: {expression(jump.condition, made)}"
-        yield from _bounds(made, jump.name)
-        for a in jump.assigns:
-            yield f"      {_assign(a, made)}"
+        yield from _jump(jump, made)
     yield ""
     yield "outputs"
     for o in made.outputs:
@@ -87,13 +85,21 @@ def _scales(made: StepLaw) -> Iterator[str]:
             yield f"  {kind} {name}: Q{31 - places}.{places}, resolution {2.0**-places:.3g}"
 
 
-def _bounds(made: StepLaw, jump: str) -> Iterator[str]:
-    """What rounding does to the jump's computed comparisons."""
-    for b in made.bounds:
-        if b.jump == jump and b.error is not None and b.margin is not None:
-            yield f"      rounding at most {b.error:.3g}, due {b.margin:.3g} beyond at the latest    [{b.span.place}]"
-        elif b.jump == jump:
-            yield f"      rounding without a bound: {b.why}    [{b.span.place}]"
+def _jump(jump: StepJump, made: StepLaw) -> Iterator[str]:
+    yield f"  {jump.number} {jump.name}: {expression(jump.condition, made)}"
+    yield from (f"      {_bound(b)}" for b in made.bounds if b.jump == jump.name)
+    yield from (f"      {_assign(a, made)}" for a in jump.assigns)
+
+
+def _bound(b: ConditionBound) -> str:
+    """What rounding does to one comparison."""
+    place = f"line {b.span.line}, {b.text}" if b.text else f"line {b.span.line}"
+    if b.error is None:
+        return f"rounding without a bound ({place}): {b.why}"
+    unit = f" {b.unit}" if b.unit and b.unit != "1" else ""
+    late = "without a bound of the delay" if b.margin is None else f"at the latest {upward(b.margin, 3)}{unit} beyond"
+    found = f"rounding at most {upward(b.error, 3)}{unit}, {late} ({place})"
+    return f"{found} {b.within}" if b.within else found
 
 
 def _assign(a: StepAssign, made: StepLaw) -> str:

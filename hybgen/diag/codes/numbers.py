@@ -150,4 +150,24 @@ NUMBERS = (
         "set: 1e9 * x - 1e9 * y >= 20    # number: float32",
         "number: float64",
     ),
+    Code(
+        "HG433",
+        "rounding",
+        "warning",
+        "a jump that rounding delays by more than the samples are off",
+        "The margin by which the comparison is moved is larger than all that declared noise and resolution of its inputs can do "
+        "to it: the number format is too coarse for the sensor, or the condition cancels.",
+        "set: 1e6 * (level + 1 m) - 1e6 * depth >= 5e5 m    # level: {noise: 1 um}, number: float32",
+        "number: float64",
+    ),
+    Code(
+        "HG434",
+        "rounding",
+        "warning",
+        "a jump that rounding delays by more than its distance to the opposite jump",
+        "Two jumps compare the same quantity with different thresholds, and the margin of one is larger than the difference: the "
+        "hysteresis in C is made of rounding, not of the law's gap. Thresholds are taken at the default parameters.",
+        "up: {set: 3 * x >= 0.30000001}    # down: {set: 3 * x <= 0.3}, number: float32",
+        "number: float64",
+    ),
 )
