@@ -102,7 +102,16 @@ class _Pages:
             f"Made by hybgen {program.version} from {comment(program.origin)}, SHA-256",
             f"  {program.digest}",
             f"step {program.step}, numbers {program.number}, integration {program.method}",
-            "Compile as C99 (or C++) with -ffp-contract=off, without -ffast-math.",
+            *self.numbers(),
+        ]
+
+    def numbers(self) -> list[str]:
+        """What the number format asks of a compiler, and of a reader."""
+        if self.program.number != "fixed32":
+            return ["Compile as C99 (or C++) with -ffp-contract=off, without -ffast-math."]
+        return [
+            "Compile as C99 (or C++). Numbers are raw values: a member in Qm.n is raw / 2^n in its unit;",
+            "-2147483648 means no number. No floating point is used.",
         ]
 
     def structs(self) -> list[dict[str, Any]]:
@@ -148,6 +157,7 @@ class _Pages:
             "upper": program.name.upper(),
             "facts": self.facts(),
             "cautions": textwrap.wrap(CAUTIONS, 100),
+            "floats": program.number != "fixed32",
             "excess": " && (__FLT_EVAL_METHOD__ != 1)" if program.real == "double" else "",
             "now": [{"text": self.member(m)} for m in program.now],
             "defaults": self.defaults(),

@@ -31,6 +31,7 @@ from hybgen.ir.model import (
 )
 from hybgen.ir.verify import verify
 from hybgen.ir.walk import all_values, statements
+from hybgen.kernels.integers import MOST
 from hybgen.kernels.table import ARITY
 from hybgen.lower.blocks import Assignment, Lets, Statements, chosen, merged, ordered, pruned
 from hybgen.lower.due import Due
@@ -228,9 +229,12 @@ class _Builder:
     def _clamped(self, u: StepInput, raw: Field, seen: Field, index: int | None) -> Statement:
         """A finite sample to the nearest end; others as hold."""
         low, high = (self.parts.values.constant(v, u.type) for v in (u.low, u.high))
-        if u.type == INT:
-            return Store(seen, Apply("iclamp", (raw, low, high), "int"))
+        inside = Store(seen, Apply("iclamp", (raw, low, high), "int"))
+        if u.type == INT and not u.scaled:
+            return inside
         held = Store(seen, self._held(u, index))
+        if u.scaled:
+            return If(Apply("ge", (raw, Constant(-MOST, "int")), "bool"), (inside,), (held,))
         return If(Apply("finite", (raw,), "bool"), (Store(seen, Apply("clamp", (raw, low, high), "real")),), (held,))
 
     def _due(self) -> Statements:

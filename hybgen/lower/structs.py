@@ -12,6 +12,7 @@ from hybgen.law.model import Input, Parameter, State, StateKind
 from hybgen.lower.names import LOCALS, Namer
 from hybgen.lower.values import Values
 from hybgen.step.model import StepGrid, StepLaw, StepTable
+from hybgen.step.show import scale
 
 
 @dataclass(frozen=True, slots=True)
@@ -134,7 +135,7 @@ def _joined(*parts: str) -> str:
 def _scale(made: StepLaw, kind: RefKind, name: str, unit: Unit) -> str:
     """Fixed point: how many bits stand before and after the point, and what the last one is worth."""
     places = made.places.get((kind, name))
-    return "" if places is None else f"Q{31 - places}.{places}, resolution {2.0**-places:.3g} {_unit(unit)}".rstrip()
+    return "" if places is None else f"{scale(places)} {_unit(unit)}".rstrip()
 
 
 def _input_note(u: Input, made: StepLaw) -> str:

@@ -19,6 +19,7 @@ from hybgen.kernels.word import ELEMENTARY
 from hybgen.law.model import Law, Value
 from hybgen.numbers.bounds import Bounds, Range
 from hybgen.step.curves import curve, grid
+from hybgen.step.functions import elementary, picked
 from hybgen.step.model import (
     Definition,
     Rule,
@@ -36,10 +37,9 @@ from hybgen.step.scaled import (
     Refused,
     Scaled,
     added,
-    common,
+    chosen,
     constant,
     divided,
-    fitted,
     multiplied,
     ordered,
     raw,
@@ -97,14 +97,20 @@ def _state(x: StepState, law: Law, findings: Findings) -> tuple[int, int, int]:
 def _between(
     low: Fraction, high: Fraction, name: str, span: Span, findings: Findings, others: list[Fraction]
 ) -> tuple[int, int, int]:
-    """Ends are rounded inward, other values to the nearest."""
+    """Ends are rounded inward, other values to the nearest. No end is ± MOST: what is held there is out of range."""
     try:
         places = room(max(abs(v) for v in (low, high, *others)))
+        if max(abs(v) for v in (low, high)) * Fraction(2) ** places > MOST - 1:
+            places -= 1
     except Refused as refused:
         findings.error("HG421", span, f"'{name}' does not fit fixed32: {refused}", hint="use another unit")
         return 0, 0, 0
     unit = Fraction(2) ** places
-    raws = [math.ceil(low * unit), math.floor(high * unit), *(raw(v, places) for v in others)]
+    first, last = math.ceil(low * unit), math.floor(high * unit)
+    if first > last:
+        findings.error("HG421", span, f"'{name}' does not fit fixed32: no raw value lies in its range")
+        return 0, 0, 0
+    raws = [first, last, *(raw(v, places) for v in others)]
     return places, min(raws), max(raws)
 
 
@@ -125,7 +131,7 @@ class _Fixed:
         made = self.made
         for d in made.definitions:
             self.more.append(self.definition(d))
-        outputs = tuple(self.output(o) for o in made.outputs)
+        places = self.output_places()
         fixed = replace(
             made,
             inputs=tuple(self.input(u) for u in made.inputs),
@@ -135,14 +141,14 @@ class _Fixed:
             alarms=(),
             jumps=tuple(self.jump(j) for j in made.jumps),
             flow_condition=None if made.flow_condition is None else self.condition(made.flow_condition),
-            outputs=tuple(o for o, _ in outputs),
+            outputs=tuple(self.output(o, places.get(o.name)) for o in made.outputs),
             flow=tuple(self.assign(a) for a in made.flow),
             sample=tuple(self.assign(a) for a in made.sample),
             law=replace(
                 made.law, outputs=tuple(replace(o, type=INT if o.type == REAL else o.type) for o in made.law.outputs)
             ),
             places={k: v[0] for k, v in self.leaves.items()}
-            | {(RefKind.OUTPUT, o.name): places for o, places in outputs if places is not None},
+            | {(RefKind.OUTPUT, name): p for name, p in places.items()},
         )
         self.findings.stop()
         return replace(fixed, definitions=tuple(self.more), tables=())
@@ -156,7 +162,7 @@ class _Fixed:
         unit = Fraction(2) ** places
         low, high = math.ceil(Fraction(u.low) * unit), math.floor(Fraction(u.high) * unit)
         given, initial = (raw(Fraction(v), places) for v in (u.substitute, u.initial))
-        return replace(u, type=INT, low=low, high=high, substitute=given, initial=initial)
+        return replace(u, type=INT, scaled=True, low=low, high=high, substitute=given, initial=initial)
 
     def parameter(self, p: StepParameter) -> StepParameter:
         if p.type != REAL:
@@ -169,13 +175,14 @@ class _Fixed:
         if x.type != REAL:
             return x
         places, low, high = self.leaves[(RefKind.STATE, x.name)]
-        return replace(x, type=INT, initial=tuple(max(low, min(high, raw(Fraction(v), places))) for v in x.initial))
+        initial = tuple(max(low, min(high, raw(Fraction(v), places))) for v in x.initial)
+        return replace(x, type=INT, initial=initial, low=low, high=high)
 
     def definition(self, d: Definition) -> Definition:
         if d.expr.type == REAL:
             value = self.real(d.expr)
             named = Ref(RefKind.LOCAL, d.name, INT, None, d.span)
-            self.locals[d.name] = replace(value, node=named)
+            self.locals[d.name] = value.named(named)
             return replace(d, expr=value.node)
         return replace(d, expr=self.other(d.expr))
 
@@ -189,41 +196,47 @@ class _Fixed:
         if a.expr.type != REAL:
             return replace(a, expr=self.other(a.expr))
         places, low, high = self.leaves[(RefKind.STATE, a.state)]
-        ends = (low, high)
-        expr = self.stored(self.real(a.expr), places, ends, a.span)
-        inside = self.made.law.state(a.state).limit and a.clamp is not None
-        return replace(a, expr=expr, guarded=False, clamp=(low, high) if inside else None)
+        ends = (low, high) if self.made.law.state(a.state).limit else None
+        expr, clamp = self.stored(a.expr, places, ends, a.span)
+        return replace(a, expr=expr, guarded=False, clamp=clamp)
 
-    def stored(self, value: Scaled, places: int, ends: tuple[int, int], span: Span) -> Node:
-        """A choice is rounded branch by branch: a branch that is the state itself stays as it is; constants are inside the ends."""
-        node = value.node
-        if isinstance(node, Op) and node.op == "select":
-            asked, yes, no = node.args
-            parts = [self.stored(replace(value, node=n), places, ends, span) for n in (yes, no)]
-            return op("select", asked, *parts, span=span)
-        if isinstance(node, Op) and node.op == "fixed_scale" and isinstance(node.args[1], Const):
-            back = node.args[0]
-            if value.places - int(node.args[1].value) == places and int(node.args[1].value) >= 0:
-                return back
-        node = rescaled(value, places, span).node
-        if isinstance(node, Const):
-            return integer(min(max(int(node.value), ends[0]), ends[1]), span)
-        return node
+    def stored(
+        self, node: Node, places: int, ends: tuple[int, int] | None, span: Span
+    ) -> tuple[Node, tuple[Value, Value] | None]:
+        """A real expression with the places of what it is stored in; the ends in which it has to be held, None where it
+        is inside them anyway."""
+        value = rescaled(self.real(node), places, span)
+        if ends is None or (ends[0] <= value.low and value.high <= ends[1]):
+            return value.node, None
+        if isinstance(value.node, Const):
+            return integer(min(max(int(value.node.value), ends[0]), ends[1]), span), None
+        return value.node, ends
 
-    def output(self, o: StepOutput) -> tuple[StepOutput, int | None]:
-        if o.expr.type != REAL:
-            return replace(o, expr=self.other(o.expr)), None
-        value = self.real(o.expr)
-        low, high = -MOST, MOST
-        clamp: tuple[Value, Value] | None = None
-        places = value.places
+    def output_places(self) -> dict[str, int]:
+        """Places of the real outputs: those of the range, and not more than any component leaves room for."""
+        found: dict[str, int] = {}
+        for o in self.made.outputs:
+            if o.expr.type == REAL:
+                value = self.real(o.expr)
+                declared = next(d for d in self.made.law.outputs if d.name == o.name)
+                places = value.places
+                if o.clamp is not None:
+                    places = room(max(abs(Fraction(e)) for e in o.clamp))
+                elif declared.low is not None and declared.high is not None:
+                    most = max(abs(v) for v in (*value.ends, declared.low, declared.high))
+                    places = room(most)
+                found[o.name] = min(places, found.get(o.name, places))
+        return found
+
+    def output(self, o: StepOutput, places: int | None) -> StepOutput:
+        if places is None:
+            return replace(o, expr=self.other(o.expr))
+        ends: tuple[int, int] | None = None
         if o.clamp is not None:
-            ends = [Fraction(c) for c in o.clamp]
-            places = room(max(abs(e) for e in ends))
-            low, high = math.ceil(ends[0] * Fraction(2) ** places), math.floor(ends[1] * Fraction(2) ** places)
-            clamp = (low, high)
-        node = self.stored(value, places, (low, high), o.span)
-        return replace(o, expr=node, guarded=False, fallback=0, clamp=clamp), places
+            low, high = (Fraction(c) * Fraction(2) ** places for c in o.clamp)
+            ends = math.ceil(low), math.floor(high)
+        expr, clamp = self.stored(o.expr, places, ends, o.span)
+        return replace(o, expr=expr, guarded=False, fallback=0, clamp=clamp)
 
     # ------------------------------------------------------------------ expressions
 
@@ -305,9 +318,7 @@ class _Fixed:
         span = node.span
         match node.op:
             case "select":
-                yes, no = common([self.real(a) for a in node.args[1:]], span)
-                made = op("select", self.condition(node.args[0]), yes.node, no.node, span=span)
-                return Scaled(made, yes.places, min(yes.low, no.low), max(yes.high, no.high))
+                return chosen(self.condition(node.args[0]), self.real(node.args[1]), self.real(node.args[2]), span)
             case "to_real":
                 known: Range = self.bounds.of(node.args[0])
                 low, high = max(-MOST, math.floor(known.low)), min(MOST, math.ceil(known.high))
@@ -330,8 +341,8 @@ class _Fixed:
                     return curve(table, args[0], span, self.defined(span))
                 return grid(table, args[0], args[1], span, self.defined(span))
         if node.op in ELEMENTARY:
-            return _elementary(node.op, args, span)
-        return _chosen(node.op, args, span)
+            return elementary(node.op, args, span)
+        return picked(node.op, args, span)
 
     def defined(self, span: Span) -> Callable[[str, Scaled], Scaled]:
         """Makes definitions; their names have blanks, so no name of the author is the same."""
@@ -341,7 +352,7 @@ class _Fixed:
                 return value
             unique = f"{name} number {len(self.more) + 1}"
             self.more.append(Definition(unique, value.node, span, name))
-            return replace(value, node=Ref(RefKind.LOCAL, unique, INT, None, span))
+            return value.named(Ref(RefKind.LOCAL, unique, INT, None, span))
 
         return define
 
@@ -350,73 +361,3 @@ class _Fixed:
             return x
         low, high = (math.floor(e) for e in x.ends)
         return Scaled(op("fixed_floor", x.node, integer(x.places), span=span), 0, low, high)
-
-
-def _chosen(name: str, args: list[Scaled], span: Span) -> Scaled:
-    """neg, abs, min, max, clamp: no rounding, but to common places."""
-    args = common(args, span)
-    low, high = args[0].low, args[0].high
-    match name:
-        case "neg":
-            low, high = -high, -low
-        case "abs":
-            low, high = max(low, -high, 0), max(-low, high)
-        case "min":
-            low, high = min(low, args[1].low), min(high, args[1].high)
-        case "max":
-            low, high = max(low, args[1].low), max(high, args[1].high)
-        case "clamp":
-            least, most = args[1:]
-            low, high = (
-                max(min(least.low, most.low), min(low, most.low)),
-                min(max(least.high, most.high), max(high, least.high)),
-            )
-    return Scaled(op(f"i{name}", *(a.node for a in args), span=span), args[0].places, low, high)
-
-
-_SLACK = Fraction(1, 10**6)
-
-
-def _elementary(name: str, args: list[Scaled], span: Span) -> Scaled:
-    """An elementary function, on an interval inside its domain."""
-    low, high = _image(name, [(float(a.ends[0]), float(a.ends[1])) for a in args])
-    wide = [Fraction(low) - _SLACK * (1 + abs(Fraction(low))), Fraction(high) + _SLACK * (1 + abs(Fraction(high)))]
-    most = {"sin": 30, "cos": 30, "tanh": 30, "asin": 30, "acos": 29, "atan2": 29, "wrap": 29}.get(name, 62)
-
-    def make(places: int) -> Node:
-        shifts = [*(a.places for a in args), places]
-        return op(f"fixed_{name}", *(a.node for a in args), *map(integer, shifts), span=span)
-
-    return fitted(wide[0], wide[1], most, make)
-
-
-def _image(name: str, ends: list[tuple[float, float]]) -> tuple[float, float]:
-    """The interval of an elementary function's results."""
-    low, high = ends[0]
-    match name:
-        case "sqrt":
-            if low < 0:
-                raise Refused(f"sqrt() of a number that can be {low:.6g}")
-            return math.sqrt(low), math.sqrt(high)
-        case "log":
-            if low <= 0:
-                raise Refused(f"log() of a number that can be {low:.6g}")
-            return math.log(low), math.log(high)
-        case "exp":
-            if high > 40:
-                raise Refused(f"exp() of a number that can be {high:.6g}")
-            return math.exp(max(low, -700.0)), math.exp(high)
-        case "asin" | "acos":
-            if low < -1 or high > 1:
-                raise Refused(f"{name}() of a number between {low:.6g} and {high:.6g}")
-            return (-1.5707964, 1.5707964) if name == "asin" else (0.0, 3.1415927)
-        case "tan":
-            if low <= -1.57 or high >= 1.57:
-                raise Refused(f"tan() of an angle between {low:.6g} and {high:.6g}: pi/2 may be among them")
-            return math.tan(low), math.tan(high)
-        case "hypot":
-            return 0.0, math.hypot(*(max(-a, b) for a, b in ends))
-        case "atan2" | "wrap":
-            return -3.1415927, 3.1415927
-        case _:
-            return -1.0, 1.0

@@ -7,7 +7,7 @@ room for. Intervals are exact fractions, so this is a proof, operation by operat
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 
 from hybgen.diag.span import Span
@@ -23,20 +23,34 @@ class Refused(Exception):
 
 
 @dataclass(frozen=True, slots=True)
+class Maker:
+    """The operation that a value comes from, for any number of places from `least` to `most` (held where there is no room)."""
+
+    least: int
+    most: int
+    at: Callable[[int], Scaled]
+
+
+@dataclass(frozen=True, slots=True)
 class Scaled:
-    """raw * 2**-places, low <= raw <= high."""
+    """raw * 2**-places, low <= raw <= high. With `maker` the value can still be had with other places, rounded once."""
 
     node: Node
     """int"""
     places: int
     low: int
     high: int
+    maker: Maker | None = None
 
     @property
     def ends(self) -> tuple[Fraction, Fraction]:
         """The interval of the value."""
         unit = Fraction(2) ** -self.places
         return self.low * unit, self.high * unit
+
+    def named(self, node: Node) -> Scaled:
+        """The same value, read by its name."""
+        return replace(self, node=node, maker=None)
 
 
 def room(largest: Fraction) -> int:
@@ -56,10 +70,18 @@ def raw(value: Fraction, places: int) -> int:
     return round(value * Fraction(2) ** places)
 
 
-def fitted(low: Fraction, high: Fraction, most: int, make: Callable[[int], Node]) -> Scaled:
-    """A result in [low, high], with at most `most` places; `make` gives its node for the places chosen."""
-    places = min(most, room(max(abs(low), abs(high))))
-    return Scaled(make(places), places, raw(low, places), raw(high, places))
+def held(value: Fraction, places: int) -> int:
+    """The nearest raw value that there is."""
+    return max(-MOST, min(MOST, raw(value, places)))
+
+
+def fitted(low: Fraction, high: Fraction, ends: tuple[int, int], make: Callable[[int], Node]) -> Scaled:
+    """A result in [low, high], with as many places as there is room for; `make` gives its node for places inside `ends`."""
+
+    def at(places: int) -> Scaled:
+        return Scaled(make(places), places, held(low, places), held(high, places))
+
+    return replace(at(min(ends[1], room(max(abs(low), abs(high))))), maker=Maker(*ends, at))
 
 
 def constant(value: Fraction, span: Span) -> Scaled:
@@ -73,21 +95,30 @@ def constant(value: Fraction, span: Span) -> Scaled:
 
 
 def rescaled(x: Scaled, places: int, span: Span) -> Scaled:
-    """The same value with other places: rounded where there are fewer, held where there is no room."""
+    """The same value with other places: rounded once where there are fewer, held where there is no room."""
     if x.places == places:
         return x
-    low, high = (max(-MOST, min(MOST, raw(e, places))) for e in x.ends)
-    left = max(-FINEST, min(31, places - x.places))
+    if x.maker is not None and places >= x.maker.least and (places < x.places or x.places < x.maker.most):
+        x = x.maker.at(min(places, x.maker.most))
+        if x.places == places:
+            return x
+    low, high = (held(e, places) for e in x.ends)
     if isinstance(x.node, Const):
         return Scaled(integer(low, span), places, low, high)
+    left = max(-FINEST, min(31, places - x.places))
     return Scaled(op("fixed_scale", x.node, integer(left), span=span), places, low, high)
 
 
 def common(values: list[Scaled], span: Span) -> list[Scaled]:
     """The values with the same places: the most that there is room for."""
-    largest = max(abs(e) for v in values for e in v.ends)
-    places = min(max(v.places for v in values), room(largest))
+    places = shared(values)
     return [rescaled(v, places, span) for v in values]
+
+
+def shared(values: list[Scaled]) -> int:
+    """The most places that any of the values has and there is room for."""
+    largest = max(abs(e) for v in values for e in v.ends)
+    return min(max(v.places for v in values), room(largest))
 
 
 def added(a: Scaled, b: Scaled, minus: bool, span: Span) -> Scaled:
@@ -98,15 +129,20 @@ def added(a: Scaled, b: Scaled, minus: bool, span: Span) -> Scaled:
     (a_low, a_high), (b_low, b_high) = a.ends, b.ends
     low, high = (a_low - b_high, a_high - b_low) if minus else (a_low + b_low, a_high + b_high)
     top = max(a.places, b.places)
+    most = max(abs(low), abs(high))
 
     def make(places: int) -> Node:
-        if a.places == b.places == places:
+        if a.places == b.places == places <= room(most):
             return op("isub" if minus else "iadd", a.node, b.node, span=span)
-        other = op("ineg", b.node, span=span) if minus else b.node
+        other = _negative(b.node, span) if minus else b.node
         shifts = (top - a.places, top - b.places, top - places)
         return op("fixed_add", a.node, other, *map(integer, shifts), span=span)
 
-    return fitted(low, high, top, make)
+    return fitted(low, high, (top - FINEST, top), make)
+
+
+def _negative(node: Node, span: Span) -> Node:
+    return integer(-int(node.value), span) if isinstance(node, Const) else op("ineg", node, span=span)
 
 
 def _joined(x: Scaled, other: Scaled, span: Span) -> Scaled:
@@ -116,26 +152,64 @@ def _joined(x: Scaled, other: Scaled, span: Span) -> Scaled:
 
 
 def multiplied(a: Scaled, b: Scaled, span: Span) -> Scaled:
-    """a * b, rounded once."""
+    """a * b, rounded once; a power of two only moves the point."""
+    for x, factor in ((a, b), (b, a)):
+        if (moved := _moved(x, factor, 1)) is not None:
+            return moved
     ends = [x * y for x in a.ends for y in b.ends]
     whole = a.places + b.places
 
     def make(places: int) -> Node:
         return op("fixed_mul", a.node, b.node, integer(min(FINEST, whole - places)), span=span)
 
-    return fitted(min(ends), max(ends), whole, make)
+    return fitted(min(ends), max(ends), (whole - FINEST, whole), make)
+
+
+def _moved(x: Scaled, factor: Scaled, sign: int) -> Scaled | None:
+    """x * factor**sign for a factor that is a power of two, without an operation; None for others."""
+    if (
+        not isinstance(factor.node, Const)
+        or isinstance(x.node, Const)
+        or factor.low < 1
+        or factor.low & (factor.low - 1)
+    ):
+        return None
+    shift = sign * (factor.places - factor.low.bit_length() + 1)
+    if not COARSEST <= x.places + shift <= FINEST:
+        return None
+    maker = x.maker
+    if maker is not None:
+        at = maker.at
+        maker = Maker(
+            maker.least + shift, maker.most + shift, lambda places: replace(at(places - shift), places=places)
+        )
+    return Scaled(x.node, x.places + shift, x.low, x.high, maker)
+
+
+def chosen(asked: Node, yes: Scaled, no: Scaled, span: Span) -> Scaled:
+    """yes where `asked` holds, else no."""
+
+    def at(places: int) -> Scaled:
+        first, second = (rescaled(x, places, span) for x in (yes, no))
+        node = op("select", asked, first.node, second.node, span=span)
+        return Scaled(node, places, min(first.low, second.low), max(first.high, second.high))
+
+    return replace(at(shared([yes, no])), maker=Maker(COARSEST, FINEST, at))
 
 
 def divided(a: Scaled, b: Scaled, span: Span) -> Scaled:
     """a / b, rounded once; b is not 0."""
     if b.low <= 0 <= b.high:
         raise Refused(f"the divisor can be 0: it lies between {float(b.ends[0]):.6g} and {float(b.ends[1]):.6g}")
+    if (moved := _moved(a, b, -1)) is not None:
+        return moved
     ends = [x / y for x in a.ends for y in b.ends]
+    middle = a.places - b.places
 
     def make(places: int) -> Node:
-        return op("fixed_div", a.node, b.node, integer(max(-31, places - a.places + b.places)), span=span)
+        return op("fixed_div", a.node, b.node, integer(max(-31, places - middle)), span=span)
 
-    return fitted(min(ends), max(ends), a.places - b.places + 31, make)
+    return fitted(min(ends), max(ends), (middle - 31, middle + 31), make)
 
 
 def ordered(name: str, a: Scaled, b: Scaled, span: Span) -> Node:

@@ -47,6 +47,7 @@ def _lines(made: StepLaw) -> Iterator[str]:
             yield f"  {u.name}{size}: good in [{_number(u.low, made)}, {_number(u.high, made)}], else {policy}"
     for i, rule in enumerate(made.rules):
         yield f"  rule {i + 1}: {rule.text}"
+    yield from _scales(made)
     if made.definitions:
         yield ""
         yield "definitions"
@@ -74,6 +75,20 @@ def _lines(made: StepLaw) -> Iterator[str]:
         yield "sample"
         for a in made.sample:
             yield f"  {_assign(a, made)}"
+
+
+def _scales(made: StepLaw) -> Iterator[str]:
+    """Fixed point: the scale of each quantity."""
+    if made.places:
+        yield ""
+        yield "scales: a raw value in Qm.n is raw / 2^n"
+        for (kind, name), places in made.places.items():
+            yield f"  {kind} {name}: {scale(places)}"
+
+
+def scale(places: int) -> str:
+    """Bits before and after the point, and what the last one is worth."""
+    return f"Q{31 - places}.{places}, resolution {2.0**-places:.3g}"
 
 
 def _assign(a: StepAssign, made: StepLaw) -> str:
