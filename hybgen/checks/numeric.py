@@ -51,7 +51,7 @@ def _defaults(made: StepLaw) -> Iterator[Finding]:
 
 def _moved(law: Law, made: StepLaw) -> Iterator[Finding]:
     """What `thresholds: nearest` costs: constants that rounding moves to the side where the law does not jump."""
-    if law.thresholds != "nearest":
+    if law.thresholds != "nearest" or made.places:  # in fixed point the elaboration says so, in physical numbers
         return
     safe = build(replace(law, thresholds="safe"), step=made.step, number=made.format.name)
     for jump, other in zip(made.jumps, safe.jumps, strict=True):

@@ -43,12 +43,6 @@ def structs(made: StepLaw, namer: Namer) -> Structs:
     values = Values(known, names, locals_, tables)
     held = {u.name: f"held_{u.name}" for u in made.inputs if u.held}
     law = made.law
-    states = [Member(x.name, values.type(x.type), x.size, _state_note(law.state(x.name), made)) for x in made.states]
-    states += [
-        Member(held[u.name], values.type(u.type), u.size, f"last good sample of {u.name}")
-        for u in made.inputs
-        if u.held
-    ]
     return Structs(
         tuple(enums),
         tuple(Member(u.name, values.type(u.type), u.size, _input_note(law.input(u.name), made)) for u in made.inputs),
@@ -65,12 +59,23 @@ def structs(made: StepLaw, namer: Namer) -> Structs:
             )
             for o in law.outputs
         ),
-        tuple(states),
+        _states(made, values, held),
         now,
         values,
         macros,
         held,
     )
+
+
+def _states(made: StepLaw, values: Values, held: dict[str, str]) -> tuple[Member, ...]:
+    law = made.law
+    states = [Member(x.name, values.type(x.type), x.size, _state_note(law.state(x.name), made)) for x in made.states]
+    states += [
+        Member(held[u.name], values.type(u.type), u.size, f"last good sample of {u.name}")
+        for u in made.inputs
+        if u.held
+    ]
+    return tuple(states)
 
 
 def _arrays(table: StepTable | StepGrid) -> tuple[str, ...]:

@@ -18,6 +18,7 @@ from hybgen.expr.fold import decide
 from hybgen.kernels.word import ELEMENTARY
 from hybgen.law.model import Law, Value
 from hybgen.numbers.bounds import Bounds, Range
+from hybgen.step import resolution
 from hybgen.step.curves import curve, grid
 from hybgen.step.functions import elementary, picked
 from hybgen.step.model import (
@@ -52,7 +53,7 @@ _REALS = ("lt", "le", "gt", "ge")
 
 
 def in_fixed_point(made: StepLaw, bounds: Bounds, findings: Findings) -> StepLaw:
-    """The step law on raw integers; findings where a range is missing, nothing fits, or an operation is not defined everywhere."""
+    """The step law on raw integers; findings where nothing fits, or an operation is not defined everywhere."""
     leaves = _leaves(made, findings)
     findings.stop()
     fixed = _Fixed(made, bounds, findings, leaves, {})
@@ -80,14 +81,7 @@ def _leaves(made: StepLaw, findings: Findings) -> dict[Key, tuple[int, int, int]
 def _state(x: StepState, law: Law, findings: Findings) -> tuple[int, int, int]:
     """A state that is not limited may reach every raw value: it gets room for twice its range."""
     declared = law.state(x.name)
-    if declared.low is None or declared.high is None:
-        findings.error(
-            "HG420",
-            x.span,
-            f"fixed32 needs a range for state '{x.name}': its resolution follows from it",
-            hint="declare range: [lowest, highest]",
-        )
-        return 0, 0, 0
+    assert declared.low is not None and declared.high is not None, x.name
     if declared.limit:
         return _between(declared.low, declared.high, x.name, x.span, findings, [])
     places, _, _ = _between(2 * declared.low, 2 * declared.high, x.name, x.span, findings, [])
@@ -126,6 +120,8 @@ class _Fixed:
     known: dict[Node, Scaled] = field(default_factory=dict)
     more: list[Definition] = field(default_factory=list)
     """Every definition, those of the elaboration too, each before its use."""
+    current: StepJump | None = None
+    """The jump whose condition is elaborated."""
 
     def built(self) -> StepLaw:
         made = self.made
@@ -151,6 +147,8 @@ class _Fixed:
             | {(RefKind.OUTPUT, name): p for name, p in places.items()},
         )
         self.findings.stop()
+        for finding in resolution.findings(made, self.real, fixed.places):
+            self.findings.add(finding)
         return replace(fixed, definitions=tuple(self.more), tables=())
 
     # ------------------------------------------------------------------ declarations
@@ -187,7 +185,10 @@ class _Fixed:
         return replace(d, expr=self.other(d.expr))
 
     def jump(self, j: StepJump) -> StepJump:
-        return replace(j, condition=self.condition(j.condition), assigns=tuple(self.assign(a) for a in j.assigns))
+        self.current = j
+        condition = self.condition(j.condition)
+        self.current = None
+        return replace(j, condition=condition, assigns=tuple(self.assign(a) for a in j.assigns))
 
     def condition(self, node: Node) -> Node:
         return decide(self.other(node))
@@ -272,10 +273,12 @@ class _Fixed:
 
     def against(self, name: str, x: Scaled, value: Fraction, span: Span) -> Node:
         exact = value * Fraction(2) ** x.places
+        edge = safe = math.ceil(exact) if name in ("ge", "lt") else math.floor(exact)
         if self.made.law.thresholds == "nearest":
             edge = round(exact)
-        else:
-            edge = math.ceil(exact) if name in ("ge", "lt") else math.floor(exact)
+            if edge != safe and self.current is not None:
+                unit = Fraction(2) ** -x.places
+                self.findings.add(resolution.moved(self.current, self.current.span, edge * unit, safe * unit))
         if abs(edge) > MOST:
             return truth((edge > 0) is (name in ("lt", "le")), span)
         return op(name, x.node, integer(edge, span), span=span)
