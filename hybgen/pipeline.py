@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from fractions import Fraction
 
+from hybgen.diag.finding import Findings
 from hybgen.emit import emit
 from hybgen.law.model import Law
 from hybgen.lower import lower
@@ -15,11 +16,20 @@ def generate(law: Law, *, step: Fraction | None = None, number: str | None = Non
     """NAME.h and NAME.c of a law, by file name; at its own step (seconds) and number format, or at others.
 
     The C is read back and has to be the step law, operation by operation; if it were not, that would be a fault in hybgen
-    (AssertionError). What has too many cases to tell is let pass here; preflight reports it. Raises LawError where the law
-    does not fit the format or the method.
+    (AssertionError). Raises LawError where the law does not fit the format or the method, and where its conditions have too
+    many cases for the proof (HG604): what is not proved is not given.
     """
     made = build(law, step=step, number=number)
     files = emit(lower(made))
-    wrong = [w for w in reread(made, files) if w.decided]
+    told = reread(made, files)
+    wrong = [w for w in told if w.decided]
+    if told and not wrong:
+        findings = Findings()
+        where = ", ".join(dict.fromkeys(w.function for w in told))
+        message = f"the C of {law.name} could not be proved equal to its law: too many cases in {where}"
+        findings.error(
+            "HG604", law.flow.span, message, hint="use fewer conditions in one expression; name parts as terms"
+        )
+        findings.stop()
     assert not wrong, f"the C of {law.name} is not its step law: {'; '.join(f'{w.function}: {w.what}' for w in wrong)}"
     return files

@@ -202,10 +202,10 @@ def test_forbidden(what: str) -> None:
 def test_numbers_are_of_the_format() -> None:
     number = r"(?<![\w.])(\d+\.\d*(?:e[+-]?\d+)?|\d+e[+-]?\d+)(f?)\b"
     single, double = (" ".join(code(t) for t in generated(n).values()) for n in ("float32", "float64"))
-    assert "double" not in single and " float " not in double
+    assert not re.search(r"\bdouble\b", single) and " float " not in double
     assert {suffix for _, suffix in re.findall(number, single)} == {"f"}
     assert {suffix for _, suffix in re.findall(number, double)} == {""}
-    assert "0x" not in single + double
+    assert not re.search(r"0x[0-9A-Fa-f.]*p", single + double)
 
 
 def test_a_constant_is_as_short_as_it_can_be() -> None:
@@ -232,7 +232,7 @@ def test_each_condition_and_output_shows_where_it_comes_from(path: Path) -> None
     text = generate(law)[f"{law.name}.c"]
     lines = path.read_text(encoding="utf-8").splitlines()
     for item in law.jumps:
-        place = re.search(rf"/\* {path.name}:(\d+)  {re.escape(item.text)} \*/", text)
+        place = re.search(rf"/\* {path.name}:(\d+)  {re.escape(item.text)}(?:; rounding at most [^*]*)? \*/", text)
         assert place is not None, item.name
         assert item.text in lines[int(place[1]) - 1]
     for place in re.finditer(rf"/\* {path.name}:(\d+)  ", text):

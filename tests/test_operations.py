@@ -22,10 +22,12 @@ from hybgen.expr.core import BOOL, INT, OPS, REAL, Const, Node, Op, Ref, RefKind
 from hybgen.expr.units import ONE
 from hybgen.kernels.floats import kernel
 from hybgen.kernels.run import exact
+from hybgen.kernels.table import FIXED
+from hybgen.kernels.table import kernel as table_kernel
 from hybgen.kernels.word import ELEMENTARY
 from hybgen.law import read
 from hybgen.law.model import Output
-from hybgen.numbers.format import FLOAT32, FORMATS, Format
+from hybgen.numbers.format import FIXED32, FLOAT32, FORMATS, Format
 from hybgen.reference.ops import lookup, operations
 from hybgen.sil.chip import Chip, struct
 from hybgen.step import build
@@ -125,6 +127,12 @@ def lanes(number: str) -> Lanes:
 # ---------------------------------------------------------------------------------------------------- expressions
 
 
+def rows_of(fmt: Format) -> list[Row]:
+    """The rows of the table that a floating-point format has."""
+    assert fmt in FORMATS.values()
+    return [row for row in OPS.values() if row.name not in FIXED]
+
+
 def kinds_of(row: Row) -> Iterator[tuple[str, ...]]:
     """The kinds of operands with which a row of the table can be used."""
     many = "*" in row.takes
@@ -164,7 +172,7 @@ class Bench:
 
     def direct(self) -> Iterator[Op]:
         """Each row on plain operands, in every kind that it takes; each table."""
-        for row in OPS.values():
+        for row in rows_of(self.made.format):
             for kinds in kinds_of(row):
                 small = row.name in BOUNDED
                 enum_first = row.name in ("eq", "ne") and kinds[0] == "enum"
@@ -177,11 +185,11 @@ class Bench:
         """Each row with each row as its first, second, third operand: what parentheses can break."""
         inner = [
             self.apply(row, tuple(self.operand(k, i, True) for i, k in enumerate(kinds)))
-            for row in OPS.values()
+            for row in rows_of(self.made.format)
             for kinds in kinds_of(row)
             if kinds[0] != "enum" and kinds[-1] != "enum" and row.name != "to_steps"
         ]
-        for row in OPS.values():
+        for row in rows_of(self.made.format):
             for kinds in kinds_of(row):
                 for place, kind in enumerate(kinds):
                     for piece in inner:
@@ -341,7 +349,7 @@ def test_every_operation_means_in_c_and_numpy_what_the_table_says(number: str) -
     fmt, bench, values = FORMATS[number], Bench.of(number), lanes(number)
     tables = {t.name: t for t in bench.made.tables}
     nodes = list(bench.direct())
-    assert {n.op for n in nodes} == set(OPS)
+    assert {n.op for n in nodes} == {row.name for row in rows_of(fmt)}
     for op, found in zip(nodes, bench.run(list(nodes), values), strict=True):
         says = meaning(op, fmt, tables)
         few = slice(None, None, 17 if op.op in ELEMENTARY else 1)
@@ -383,3 +391,36 @@ def test_whole_numbers_at_the_ends_of_their_range() -> None:
     constants = [0, 1, -1, 2**31 - 1, 1 - 2**31, -(2**31)]
     found = Bench.of("float32").run([Const(c, INT) for c in constants], {n: a[:1] for n, a in lanes("float32").items()})
     assert [int(y[0]) for y in found] == constants
+
+
+def fixed_rows() -> Iterator[tuple[str, list[Node]]]:
+    """Operations of fixed point on the integers of the bench, with shifts inside their limits."""
+    raws: list[Node] = [Ref(RefKind.STATE, f"int_{letter}", INT) for letter in "abc"]
+    for name, count in FIXED.items():
+        if name == "fixed_line":
+            smaller: list[Node] = [Ref(RefKind.STATE, f"small_{letter}", INT) for letter in "ab"]
+            yield name, [raws[0], raws[1], *smaller, Const(7, INT), Const(9, INT)]
+            continue
+        operands = {"fixed_floor": 1, "fixed_steps": 1, "fixed_scale": 1}.get(name, 2)
+        if name.removeprefix("fixed_") in ELEMENTARY:
+            operands = ELEMENTARY[name.removeprefix("fixed_")]
+        for shift in (0, 3, 17, 30):
+            yield name, [*raws[:operands], *(Const(shift, INT) for _ in range(count - operands))]
+
+
+def test_fixed_point_operations_in_c_and_numpy_are_the_exact_integers() -> None:
+    """What they mean is tested in tests/kernels/test_integers.py, against fractions and mpmath."""
+    values = {n: v for n, v in lanes("float32").items() if not n.startswith("real")}
+    nodes: list[Node] = [Op(name, tuple(args), INT) for name, args in fixed_rows()]
+    assert {n.op for n in nodes if isinstance(n, Op)} == set(FIXED)
+    few = slice(None, None, 61)
+    for node, found in zip(nodes, Bench.of("fixed32").run(nodes, values), strict=True):
+        assert isinstance(node, Op)
+        columns = [in_numpy(a, values, FIXED32, {}) for a in node.args]
+        reference = np.broadcast_to(operations(FIXED32)[node.op](*columns), found.shape)
+        assert not first_difference(found, np.ascontiguousarray(reference), values, node)
+        exactly = [
+            exact(table_kernel(node.op, "fixed32"), *map(int, row))
+            for row in zip(*(c[few] for c in columns), strict=True)
+        ]
+        assert exactly == [int(v) for v in reference[few]], node

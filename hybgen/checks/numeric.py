@@ -12,7 +12,9 @@ from hybgen.expr.core import FALSE, Const, Node, Ref, RefKind, walk
 from hybgen.expr.fold import decide
 from hybgen.law.model import Law
 from hybgen.step import StepLaw, build
+from hybgen.step.build import conditions
 from hybgen.step.chain import longest
+from hybgen.step.model import ConditionBound
 
 
 def fits(law: Law) -> list[Finding]:
@@ -28,7 +30,7 @@ def fits(law: Law) -> list[Finding]:
 def questions(law: Law, step: Fraction | None, number: str | None) -> list[Finding]:
     """Findings of the step law; raises LawError where there is none."""
     made = build(law, step=step, number=number)
-    return [*made.notes, *_defaults(made), *_moved(law, made), _chain(made)]
+    return [*made.notes, *_defaults(made), *_moved(law, made), *_rounding(made), _chain(made)]
 
 
 def _defaults(made: StepLaw) -> Iterator[Finding]:
@@ -51,11 +53,12 @@ def _defaults(made: StepLaw) -> Iterator[Finding]:
 
 def _moved(law: Law, made: StepLaw) -> Iterator[Finding]:
     """What `thresholds: nearest` costs: constants that rounding moves to the side where the law does not jump."""
-    if law.thresholds != "nearest" or made.places:  # in fixed point the elaboration says so, in physical numbers
+    if law.thresholds != "nearest":
         return
-    safe = build(replace(law, thresholds="safe"), step=made.step, number=made.format.name)
-    for jump, other in zip(made.jumps, safe.jumps, strict=True):
-        for near, far in zip(walk(jump.condition), walk(other.condition), strict=True):
+    laws = (law, replace(law, thresholds="safe"))
+    nearest, safe = (conditions(one, step=made.step, number=made.format.name) for one in laws)
+    for jump, condition, other in zip(made.jumps, nearest, safe, strict=True):
+        for near, far in zip(walk(condition), walk(other), strict=True):
             if isinstance(near, Const) and isinstance(far, Const) and near != far:
                 least, most = (made.format.dtype.type(float(c.value)) for c in (near, far))
                 message = (
@@ -71,6 +74,35 @@ def _moved(law: Law, made: StepLaw) -> Iterator[Finding]:
                     message,
                     hint="leave out thresholds: nearest",
                 )
+
+
+def _rounding(made: StepLaw) -> Iterator[Finding]:
+    """What rounding does to the jump conditions."""
+    for b in made.bounds:
+        yield _bounded(b)
+    if not made.bounds and made.law.thresholds == "safe":
+        message = "no jump condition can be mistaken by rounding"
+        span = made.law.flow.span
+        yield Finding("HG430", "rounding", Verdict.PROVED, Severity.NOTE, span, made.law.name, message)
+
+
+def _bounded(b: ConditionBound) -> Finding:
+    code, verdict, severity, hint = "HG430", Verdict.PROVED, Severity.NOTE, None
+    value = {"error": b.error, "margin": b.margin} if b.error is not None and b.margin is not None else None
+    if value is None:
+        code, verdict, severity = "HG431", Verdict.OPEN, Severity.WARNING
+        message = f"rounding may cause '{b.jump}': there is no bound of the error here: {b.why}"
+        hint = "declare ranges, keep divisors and arguments inside their domains"
+    elif b.never:
+        code, verdict, severity = "HG432", Verdict.REFUTED, Severity.WARNING
+        message = f"'{b.jump}' can't happen: rounding delays it by {b.margin:.3g}, more than its condition can hold by"
+        hint = "use float64, or another form of the condition"
+    else:
+        message = (
+            f"rounding never causes '{b.jump}': its error here is at most {b.error:.3g}, "
+            f"it is due {b.margin:.3g} beyond at the latest"
+        )
+    return Finding(code, "rounding", verdict, severity, b.span, b.jump, message, value=value, hint=hint)
 
 
 def _chain(made: StepLaw) -> Finding:

@@ -5,7 +5,7 @@ from __future__ import annotations
 from hybgen.diag.finding import Finding, Severity, Verdict
 from hybgen.law.model import Law
 
-PROPERTIES = ("cover", "overlap", "hysteresis", "dwell", "missed", "range", "rounding", "bump", "method")
+PROPERTIES = ("cover", "overlap", "hysteresis", "dwell", "missed", "range", "bump", "method")
 
 
 def questions(law: Law) -> list[Finding]:

@@ -2,7 +2,7 @@
 the normal range).
 
 float32: above the worst of every float (`python -m tests.kernels.every_float`; atan2 and hypot: 2**30 pairs). float64: above
-what tests/kernels finds against mpmath on random and worst-case points. `wrap` is exact up to its one rounding.
+what tests/kernels finds against mpmath on random and worst-case points. `wrap` is rounded once, next to pi to the float below pi.
 """
 
 from __future__ import annotations
@@ -20,7 +20,7 @@ ULP: dict[str, dict[str, float]] = {
         "log": 0.53,
         "tanh": 0.6,
         "hypot": 0.52,
-        "wrap": 0.51,
+        "wrap": 0.63,
     },
     "float64": {
         "sqrt": 0.5,

@@ -238,7 +238,12 @@ class _Builder:
         return If(Apply("finite", (raw,), "bool"), (Store(seen, Apply("clamp", (raw, low, high), "real")),), (held,))
 
     def _due(self) -> Statements:
-        due = Due(self.made, self.parts.values, self.parts.macros, lambda j: self._note(j.span, j.text))
+        due = Due(
+            self.made,
+            self.parts.values,
+            self.parts.macros,
+            lambda j: self._note(j.span, j.text + self.made.rounding(j.name)),
+        )
         return due.body()
 
     def _take(self) -> Statements:

@@ -8,7 +8,7 @@ from fractions import Fraction
 from hybgen.expr.core import Kind, RefKind, refs
 from hybgen.expr.units import Unit
 from hybgen.ir.model import Enum, Member
-from hybgen.law.model import Input, Parameter, State, StateKind
+from hybgen.law.model import Input, Output, Parameter, State, StateKind
 from hybgen.lower.names import LOCALS, Namer
 from hybgen.lower.values import Values
 from hybgen.step.model import StepGrid, StepLaw, StepTable
@@ -50,15 +50,7 @@ def structs(made: StepLaw, namer: Namer) -> Structs:
             Member(p.name, values.type(p.type), p.size, _parameter_note(law.parameter(p.name), made))
             for p in made.parameters
         ),
-        tuple(
-            Member(
-                o.name,
-                values.type(o.type),
-                o.size,
-                _joined(_unit(o.unit), _range(o.low, o.high), _scale(made, RefKind.OUTPUT, o.name, o.unit), o.about),
-            )
-            for o in law.outputs
-        ),
+        tuple(Member(o.name, values.type(o.type), o.size, _output_note(o, made)) for o in law.outputs),
         _states(made, values, held),
         now,
         values,
@@ -145,6 +137,10 @@ def _scale(made: StepLaw, kind: RefKind, name: str, unit: Unit) -> str:
 
 def _input_note(u: Input, made: StepLaw) -> str:
     return _joined(_unit(u.unit), _range(u.low, u.high), _scale(made, RefKind.INPUT, u.name, u.unit), u.about)
+
+
+def _output_note(o: Output, made: StepLaw) -> str:
+    return _joined(_unit(o.unit), _range(o.low, o.high), _scale(made, RefKind.OUTPUT, o.name, o.unit), o.about)
 
 
 def _parameter_note(p: Parameter, made: StepLaw) -> str:

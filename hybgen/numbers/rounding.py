@@ -8,40 +8,25 @@ box in which the exact difference can be below 0 while the computed one is not m
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Mapping
+from collections.abc import Mapping
 from dataclasses import dataclass
 from fractions import Fraction
-from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
+from hybgen.expr.constant import PI
 from hybgen.expr.core import Const, Kind, Node, Op, Ref, RefKind
 from hybgen.kernels.errors import ULP
-from hybgen.kernels.word import ELEMENTARY
+from hybgen.numbers.enclosures import ARITHMETIC, ELEMENTARY, EXACT, Array, Enclosure, floor_of, sign_of, wrap_of
 from hybgen.numbers.format import Format
 
-Array = NDArray[np.float64]
 Leaf = tuple[RefKind, str, int | None]
 
 MOST_BOXES = 4096
 ROUNDS = 40
 GROW = 1 + 2.0**-40
 """Covers the rounding of the analysis itself, which is in float64."""
-
-
-@dataclass(frozen=True, slots=True)
-class Enclosure:
-    """For each box: the exact value is in [low, high], the computed one at most `error` away from it."""
-
-    low: Array
-    high: Array
-    error: Array
-
-    @property
-    def size(self) -> Array:
-        """The largest magnitude of the computed value."""
-        return np.maximum(np.abs(self.low), np.abs(self.high)) + self.error
 
 
 @dataclass(frozen=True, slots=True)
@@ -54,6 +39,22 @@ class Domain:
     timers: Mapping[str, Fraction]
     tables: Mapping[str, tuple[float, float, float]]
     """name -> (steepest slope of all inputs together, largest magnitude, largest magnitude of a point)"""
+
+    def rounding(self, value: Fraction) -> float:
+        """How far a constant is from its number of the format, rounded up; infinite beyond the format's range."""
+        try:
+            off = abs(value - self.format.round(value))
+        except OverflowError:
+            return math.inf
+        return math.nextafter(nearest(off), math.inf) if off else 0.0
+
+
+def nearest(value: Fraction) -> float:
+    """The float next to a fraction, infinite beyond the range."""
+    try:
+        return float(value)
+    except OverflowError:
+        return math.inf if value > 0 else -math.inf
 
 
 class Unbounded(Exception):
@@ -108,12 +109,38 @@ def difference(left: Node, right: Node, domain: Domain) -> tuple[float, float]:
     return float(error.max()), largest
 
 
+def largest_error(node: Node, domain: Domain) -> float:
+    """The bound of the error of an expression over the whole domain. Raises Unbounded."""
+    leaves = list(leaves_of(node, domain))
+    ends = _ends(leaves, domain)
+    at = {leaf: (np.array([low]), np.array([high])) for leaf, (low, high) in zip(leaves, ends, strict=True)}
+    with np.errstate(all="ignore"):
+        return float(_Evaluator(domain, at, 1, {}).of(node).error[0])
+
+
+def turned(node: Node) -> tuple[Node, Fraction] | None:
+    """(angle, half a turn) of a wrapped angle: wrap(x), or in degrees x + turn * floor(1/2 - x / turn)."""
+    match node:
+        case Op(op="wrap", args=(angle,)):
+            return angle, PI
+        case Op(
+            op="add",
+            args=(
+                angle,
+                Op(op="mul", args=(Const() as turn, Op(op="floor", args=(Op(op="sub", args=(Const(), ratio)),)))),
+            ),
+        ) if isinstance(ratio, Op) and ratio.op == "div" and ratio.args == (angle, turn):
+            return angle, Fraction(turn.value) / 2
+        case _:
+            return None
+
+
 def _ends(leaves: list[Leaf], domain: Domain) -> list[tuple[float, float]]:
     found = []
     for kind, name, _ in leaves:
         if (kind, name) not in domain.leaves:
             raise Unbounded(name)
-        found.append(tuple(float(e) for e in domain.leaves[(kind, name)]))
+        found.append(tuple(nearest(e) for e in domain.leaves[(kind, name)]))
     return [(np.nextafter(a, -np.inf), np.nextafter(b, np.inf)) for a, b in found]
 
 
@@ -132,7 +159,10 @@ def _gap(
     evaluator = _Evaluator(domain, at, low.shape[1] if leaves else 1, {})
     with np.errstate(all="ignore"):
         a, b = evaluator.of(left), evaluator.of(right)
-        error = (a.error + b.error) * GROW
+        # a constant is rounded outward: exact
+        error = sum(
+            0.0 if isinstance(n, Const) else e.error for n, e in ((left, a), (right, b))
+        ) * GROW + evaluator.full(0)
         return np.where(np.isnan(error), np.inf, error), _down(a.low - b.high), _up(a.high - b.low)
 
 
@@ -179,9 +209,9 @@ class _Evaluator:
         match node:
             case Const():
                 exact = Fraction(node.value)
-                off = abs(exact - self.domain.format.round(exact)) if node.type.kind is Kind.REAL else 0
-                value = self.full(float(exact))
-                return Enclosure(_down(value), _up(value), _up(self.full(float(off))) if off else self.full(0.0))
+                value = self.full(nearest(exact))
+                off = self.domain.rounding(exact) if node.type.kind is Kind.REAL else 0.0
+                return Enclosure(_down(value), _up(value), self.full(off))
             case Ref(kind=RefKind.TERM):
                 return self.of(self.domain.terms[(node.name, node.index)])
             case Ref():
@@ -198,24 +228,32 @@ class _Evaluator:
     def operation(self, node: Op) -> Enclosure:
         if node.op == "select":
             return self.choice(node)
+        if node.op == "add" and (found := turned(node)) is not None:
+            return self.turned(self.of(found[0]), float(found[1]))
         args = [self.of(a) for a in node.args]
-        if node.op in _EXACT:
-            return _EXACT[node.op](*args)
+        if node.op in EXACT:
+            return EXACT[node.op](*args)
         if node.op in ELEMENTARY:
-            low, high, error = _ELEMENTARY[node.op](*args)
+            low, high, error = ELEMENTARY[node.op](*args)
             return self.rounded(low, high, error, ULP[self.domain.format.name][node.op])
         match node.op:
             case "lookup" | "lookup2":
                 return self.lookup(node, args)
             case "floor":
-                return _floor(args[0])
+                return floor_of(args[0])
             case "sign":
-                return _sign(args[0])
+                return sign_of(args[0])
             case "to_real":
                 exact = args[0].size < float(self.domain.format.whole)
                 return Enclosure(args[0].low, args[0].high, np.where(exact, 0.0, self.half(args[0].size)))
             case _:
-                return self.rounded(*_ARITHMETIC[node.op](*args))
+                return self.rounded(*ARITHMETIC[node.op](*args))
+
+    def turned(self, x: Enclosure, half: float) -> Enclosure:
+        """An angle less whole turns, away from the cut: the product of turns, and the sum, are rounded."""
+        low, high, _ = wrap_of(x, half)
+        error = x.error + np.where(x.size < half, 0.0, self.half(x.size + 2 * half) + self.half(self.full(half)))
+        return Enclosure(low, high, error * GROW)
 
     def lookup(self, node: Op, args: list[Enclosure]) -> Enclosure:
         """Continuous and as steep as its steepest part; a dozen roundings at the size of its values and points."""
@@ -251,184 +289,3 @@ class _Evaluator:
         first, second = (0.0 if isinstance(n, Const) else e.error for n, e in ((left, a), (right, b)))
         error = first + second
         return np.asarray((error == 0) | (a.low - b.high > error) | (b.low - a.high > error))
-
-
-def _add(a: Enclosure, b: Enclosure) -> tuple[Array, Array, Array]:
-    return a.low + b.low, a.high + b.high, a.error + b.error
-
-
-def _sub(a: Enclosure, b: Enclosure) -> tuple[Array, Array, Array]:
-    return a.low - b.high, a.high - b.low, a.error + b.error
-
-
-def _corners(a: Enclosure, b: Enclosure, work: Callable[[Any, Any], Any]) -> tuple[Array, Array]:
-    corners = np.stack([work(x, y) for x in (a.low, a.high) for y in (b.low, b.high)])
-    return corners.min(axis=0), corners.max(axis=0)
-
-
-def _mul(a: Enclosure, b: Enclosure) -> tuple[Array, Array, Array]:
-    low, high = _corners(a, b, np.multiply)
-    if a is b:
-        low = np.maximum(low, 0.0)
-    return low, high, a.size * b.error + b.size * a.error
-
-
-def _div(a: Enclosure, b: Enclosure) -> tuple[Array, Array, Array]:
-    least = np.minimum(np.abs(b.low), np.abs(b.high)) - b.error
-    open_ = (b.low <= 0) & (b.high >= 0) | (least <= 0)
-    low, high = _corners(a, b, np.divide)
-    ratio = np.maximum(np.abs(low), np.abs(high))
-    error = np.where(open_, np.inf, (a.error + ratio * b.error) / np.where(least > 0, least, 1.0))
-    return np.where(open_, -np.inf, low), np.where(open_, np.inf, high), error
-
-
-_ARITHMETIC: dict[str, Callable[..., tuple[Array, Array, Array]]] = {"add": _add, "sub": _sub, "mul": _mul, "div": _div}
-
-
-def _pair(pick: Callable[[Any, Any], Any]) -> Callable[[Enclosure, Enclosure], Enclosure]:
-    return lambda a, b: Enclosure(pick(a.low, b.low), pick(a.high, b.high), np.maximum(a.error, b.error))
-
-
-def _abs(a: Enclosure) -> Enclosure:
-    low = np.maximum(np.maximum(a.low, -a.high), 0.0)
-    return Enclosure(low, np.maximum(-a.low, a.high), a.error)
-
-
-def _clamp(x: Enclosure, low: Enclosure, high: Enclosure) -> Enclosure:
-    error = np.maximum(np.maximum(x.error, low.error), high.error)
-    bottom = np.maximum(np.minimum(low.low, high.low), np.minimum(x.low, high.low))
-    top = np.minimum(np.maximum(low.high, high.high), np.maximum(x.high, low.high))
-    return Enclosure(bottom, top, error)
-
-
-_EXACT: dict[str, Callable[..., Enclosure]] = {
-    "neg": lambda a: Enclosure(-a.high, -a.low, a.error),
-    "abs": _abs,
-    "min": _pair(np.minimum),
-    "max": _pair(np.maximum),
-    "clamp": _clamp,
-    "iadd": lambda a, b: Enclosure(a.low + b.low, a.high + b.high, a.error + b.error),
-    "isub": lambda a, b: Enclosure(a.low - b.high, a.high - b.low, a.error + b.error),
-    "imul": lambda a, b: Enclosure(*_corners(a, b, np.multiply), a.error),
-    "ineg": lambda a: Enclosure(-a.high, -a.low, a.error),
-    "iabs": _abs,
-    "imin": _pair(np.minimum),
-    "imax": _pair(np.maximum),
-    "iclamp": _clamp,
-    "isign": lambda a: _sign(a),
-}
-
-
-def _floor(a: Enclosure) -> Enclosure:
-    low, high = np.floor(a.low), np.floor(a.high)
-    sure = (a.error == 0) | (np.floor(a.low - a.error) == np.floor(a.high + a.error))
-    return Enclosure(low, high, np.where(sure, 0.0, np.ceil(a.error) + 1))
-
-
-def _sign(a: Enclosure) -> Enclosure:
-    sure = (a.error == 0) | (a.low > a.error) | (a.high < -a.error)
-    return Enclosure(np.sign(a.low), np.sign(a.high), np.where(sure, 0.0, 2.0))
-
-
-def _wide(low: Array, high: Array) -> tuple[Array, Array]:
-    """Wider by four units: what numpy's functions may be off."""
-    slack = 2.0**-50
-    return low - slack * np.abs(low) - 1e-300, high + slack * np.abs(high) + 1e-300
-
-
-def _sqrt(a: Enclosure) -> tuple[Array, Array, Array]:
-    low, high = _wide(np.sqrt(np.maximum(a.low, 0.0)), np.sqrt(np.maximum(a.high, 0.0)))
-    least = np.maximum(a.low - a.error, 0.0)
-    return low, high, np.minimum(np.sqrt(a.error), a.error / (2 * np.sqrt(least)))
-
-
-def _exp(a: Enclosure) -> tuple[Array, Array, Array]:
-    return *_wide(np.exp(a.low), np.exp(a.high)), a.error * np.exp(a.high + a.error) * 1.001
-
-
-def _log(a: Enclosure) -> tuple[Array, Array, Array]:
-    least = a.low - a.error
-    open_ = least <= 0
-    low, high = _wide(np.log(np.where(open_, 1.0, a.low)), np.log(np.where(a.high > 0, a.high, 1.0)))
-    return np.where(open_, -np.inf, low), high, np.where(open_, np.inf, a.error / np.where(open_, 1.0, least))
-
-
-def _wave(function: Callable[[Any], Any]) -> Callable[[Enclosure], tuple[Array, Array, Array]]:
-    def bounds(a: Enclosure) -> tuple[Array, Array, Array]:
-        middle, reach = (a.low + a.high) / 2, (a.high - a.low) / 2
-        centre = function(middle)
-        return np.maximum(centre - reach - 1e-15, -1.0), np.minimum(centre + reach + 1e-15, 1.0), a.error
-
-    return bounds
-
-
-def _tan(a: Enclosure) -> tuple[Array, Array, Array]:
-    reach = a.size
-    open_ = reach >= 1.57
-    low, high = _wide(np.tan(np.where(open_, 0.0, a.low)), np.tan(np.where(open_, 0.0, a.high)))
-    steep = 1.001 / np.cos(np.where(open_, 0.0, reach)) ** 2
-    return np.where(open_, -np.inf, low), np.where(open_, np.inf, high), np.where(open_, np.inf, a.error * steep)
-
-
-def _arc(a: Enclosure, low: Array, high: Array) -> tuple[Array, Array, Array]:
-    """The modulus of continuity at ±1 is that of a square root."""
-    inside = np.minimum(a.size, 1.0)
-    smooth = a.error / np.sqrt(np.maximum(1 - inside * inside, 0.0))
-    return (
-        low - 1e-15,
-        high + 1e-15,
-        np.minimum(np.where(a.size < 1, smooth, np.inf) * 1.001, 1.6 * np.sqrt(2 * a.error)),
-    )
-
-
-def _asin(a: Enclosure) -> tuple[Array, Array, Array]:
-    return _arc(a, np.arcsin(np.clip(a.low, -1, 1)), np.arcsin(np.clip(a.high, -1, 1)))
-
-
-def _acos(a: Enclosure) -> tuple[Array, Array, Array]:
-    return _arc(a, np.arccos(np.clip(a.high, -1, 1)), np.arccos(np.clip(a.low, -1, 1)))
-
-
-def _tanh(a: Enclosure) -> tuple[Array, Array, Array]:
-    return *_wide(np.tanh(a.low), np.tanh(a.high)), a.error
-
-
-def _hypot(a: Enclosure, b: Enclosure) -> tuple[Array, Array, Array]:
-    a, b = _abs(a), _abs(b)
-    return *_wide(np.hypot(a.low, b.low), np.hypot(a.high, b.high)), a.error + b.error
-
-
-def _atan2(y: Enclosure, x: Enclosure) -> tuple[Array, Array, Array]:
-    """Across the cut (y around 0, x below 0) the error is a whole turn, unless both are exact."""
-    near_y, near_x = (np.maximum(np.maximum(v.low, -v.high), 0.0) - v.error for v in (y, x))
-    radius = np.hypot(np.maximum(near_y, 0.0), np.maximum(near_x, 0.0))
-    exact = (y.error == 0) & (x.error == 0)
-    cut = (y.low - y.error <= 0) & (y.high + y.error >= 0) & (x.low - x.error <= 0)
-    error = np.where(radius > 0, (y.error + x.error) / np.where(radius > 0, radius, 1.0) * 1.001, np.inf)
-    error = np.where(exact, 0.0, np.where(cut, 6.2832, np.minimum(error, 6.2832)))
-    corners = np.stack([np.arctan2(v, w) for v in (y.low, y.high) for w in (x.low, x.high)])
-    around = cut | ((y.low <= 0) & (y.high >= 0) & (x.low <= 0) & (x.high >= 0))
-    low, high = corners.min(axis=0) - 1e-15, corners.max(axis=0) + 1e-15
-    return np.where(around, -3.1415927, low), np.where(around, 3.1415927, high), error
-
-
-def _wrap(a: Enclosure) -> tuple[Array, Array, Array]:
-    """Away from the cut: a condition with an inexact argument is guarded against it."""
-    inside = (a.low > -math.pi) & (a.high < math.pi)
-    return np.where(inside, a.low, -3.1415927), np.where(inside, a.high, 3.1415927), a.error
-
-
-_ELEMENTARY: dict[str, Callable[..., tuple[Array, Array, Array]]] = {
-    "sqrt": _sqrt,
-    "exp": _exp,
-    "log": _log,
-    "sin": _wave(np.sin),
-    "cos": _wave(np.cos),
-    "tan": _tan,
-    "asin": _asin,
-    "acos": _acos,
-    "tanh": _tanh,
-    "hypot": _hypot,
-    "atan2": _atan2,
-    "wrap": _wrap,
-}

@@ -16,6 +16,7 @@ from hybgen.step import declare
 from hybgen.step.chain import longest
 from hybgen.step.fixed import in_fixed_point
 from hybgen.step.integrate import integrate
+from hybgen.step.margin import Margins
 from hybgen.step.model import Definition, Rule, StepAssign, StepJump, StepLaw, StepOutput
 from hybgen.step.normal import Normalizer, watched
 from hybgen.step.tables import table_range, tables
@@ -30,9 +31,16 @@ def build(law: Law, *, step: Fraction | None = None, number: str | None = None) 
     fmt = NUMBERS[number or law.number]
     findings = Findings()
     translator = Translator(law, fmt, step or law.step, findings, constants_of(law), timers_of(law), _local_names(law))
-    step_law = _Builder(law, fmt, translator, findings).built()
+    step_law = _Builder(law, fmt, translator, findings, Margins.of(law, translator)).built()
     findings.stop()
     return replace(step_law, notes=findings.sorted())
+
+
+def conditions(law: Law, *, step: Fraction, number: str) -> list[Node]:
+    """The jump conditions in a number format, term by term as the author wrote them: without margins."""
+    names = _local_names(law)
+    translator = Translator(law, NUMBERS[number], step, Findings(), constants_of(law), timers_of(law), names)
+    return [translator.translate(j.condition) for j in law.jumps]
 
 
 def _local_names(law: Law) -> dict[tuple[str, int | None], str]:
@@ -59,6 +67,7 @@ class _Builder:
     format: Format
     translator: Translator
     findings: Findings
+    margins: Margins
 
     def built(self) -> StepLaw:
         law = self.law
@@ -91,6 +100,7 @@ class _Builder:
             outputs,
             flow,
             sample,
+            bounds=tuple(dict.fromkeys(self.margins.records)),
         )
         made = _flagged(_pruned(made))
         if self.format is FIXED32:
@@ -153,7 +163,7 @@ class _Builder:
         return tuple(self._jump(i + 1, j, normalizer, bounds) for i, j in enumerate(self.law.jumps))
 
     def _jump(self, number: int, jump: Jump, normalizer: Normalizer, bounds: Bounds) -> StepJump:
-        condition = decide(normalizer.normal(self.translator.translate(jump.condition)))
+        condition = decide(normalizer.normal(self.margins.condition(jump.name, jump.condition)))
         assigns = tuple(self._assign(a, self._value(a), bounds) for a in jump.assigns)
         return StepJump(jump.name, number, condition, assigns, False, jump.span, jump.text)
 

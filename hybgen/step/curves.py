@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
+from dataclasses import replace
 from fractions import Fraction
 
 from hybgen.diag.span import Span
@@ -62,13 +63,16 @@ def _line(xs: Numbers, ys: Numbers, x: Scaled, span: Span) -> Scaled:
     slopes = [(d - c) / (b - a) for a, b, c, d in zip(points, points[1:], ys, ys[1:], strict=False)]
     places = min(room(max(abs(v) for v in ys)), room(max(abs(m) for m in slopes)))
     cells = [_segment(points[i : i + 2], raw(ys[i], places), m, x, places, span) for i, m in enumerate(slopes)]
+    # the rounding of the points, and the error of x, along the steepest slope
+    aside = max(abs((d - c) / (b - a)) for a, b, c, d in zip(xs, xs[1:], ys, ys[1:], strict=False)) * (x.half + x.error)
+    cells = [replace(c, error=c.error + aside) for c in cells]
     first, last = (_constant(y, places, span) for y in (ys[0], ys[-1]))
     return _chosen(points, cells, first, last, x, span)
 
 
 def _constant(value: Fraction, places: int, span: Span) -> Scaled:
     found = raw(value, places)
-    return Scaled(integer(found, span), places, found, found)
+    return Scaled(integer(found, span), places, found, found, Fraction(2) ** -(places + 1))
 
 
 def _segment(points: Sequence[int], start: int, slope: Fraction, x: Scaled, places: int, span: Span) -> Scaled:
@@ -80,7 +84,10 @@ def _segment(points: Sequence[int], start: int, slope: Fraction, x: Scaled, plac
     begin, steep, first = (integer(n, span) for n in (*numbers, points[0]))
     last = round(start + Fraction(numbers[1] * (points[1] - points[0]), 2**left))
     node = op("fixed_line", begin, steep, x.node, first, *shifts, span=span)
-    return Scaled(node, places, max(-MOST, min(start, last)), min(MOST, max(start, last)))
+    found = Scaled(node, places, max(-MOST, min(start, last)), min(MOST, max(start, last)))
+    # the rounding of the start and of the result, and that of the slope along the run
+    run = Fraction(points[1] - points[0], 2 ** (left + 1)) * Fraction(2) ** -places
+    return replace(found, error=2 * found.half + run)
 
 
 def _chosen(
@@ -100,4 +107,6 @@ def _chosen(
     inner = op("select", op("ge", x.node, marks[-1]), last.node, between(0, len(cells)), span=span)
     whole = op("select", op("le", x.node, marks[0]), first.node, inner, span=span)
     values = (first, last, *cells)
-    return Scaled(whole, first.places, min(v.low for v in values), max(v.high for v in values))
+    # a point that rounding moves, or an error of x, may choose the neighbour: both lines meet at the point
+    error = 2 * max(v.error for v in values)
+    return Scaled(whole, first.places, min(v.low for v in values), max(v.high for v in values), error)

@@ -1,12 +1,17 @@
-"""Functions in fixed point: for each the interval of its results, and from it their places."""
+"""Functions in fixed point: for each the interval of its results, and from it their places; and what errors become."""
 
 from __future__ import annotations
 
 import math
 from fractions import Fraction
 
+import numpy as np
+
 from hybgen.diag.span import Span
 from hybgen.expr.core import Node, integer, op
+from hybgen.kernels.errors import RELATIVE
+from hybgen.numbers.enclosures import ELEMENTARY as FUNCTIONS
+from hybgen.numbers.enclosures import Enclosure
 from hybgen.step.scaled import COARSEST, Refused, Scaled, common, fitted
 
 
@@ -29,7 +34,8 @@ def picked(name: str, args: list[Scaled], span: Span) -> Scaled:
                 max(min(least.low, most.low), min(low, most.low)),
                 min(max(least.high, most.high), max(high, least.high)),
             )
-    return Scaled(op(f"i{name}", *(a.node for a in args), span=span), args[0].places, low, high)
+    error = max(a.error for a in args)
+    return Scaled(op(f"i{name}", *(a.node for a in args), span=span), args[0].places, low, high, error)
 
 
 _SLACK = Fraction(1, 10**6)
@@ -45,7 +51,20 @@ def elementary(name: str, args: list[Scaled], span: Span) -> Scaled:
         shifts = [*(a.places for a in args), places]
         return op(f"fixed_{name}", *(a.node for a in args), *map(integer, shifts), span=span)
 
-    return fitted(wide[0], wide[1], (COARSEST, most), make)
+    error = _propagated(name, args) + Fraction(RELATIVE[name]) * max(map(abs, wide))
+    return fitted(wide[0], wide[1], (COARSEST, most), make, error)
+
+
+def _propagated(name: str, args: list[Scaled]) -> Fraction:
+    """What the errors of the arguments make of the result. Raises Refused where there is no bound."""
+    if not any(a.error for a in args):
+        return Fraction(0)
+    boxes = [Enclosure(*(np.array([float(v)]) for v in (*a.ends, a.error * (1 + Fraction(1, 2**40))))) for a in args]
+    with np.errstate(all="ignore"):
+        error = float(FUNCTIONS[name](*boxes)[2][0])
+    if not math.isfinite(error):
+        raise Refused(f"the argument of {name}() is as near to an end of its domain as its own rounding error")
+    return Fraction(error) * (1 + Fraction(1, 2**40))
 
 
 def _image(name: str, ends: list[tuple[float, float]]) -> tuple[float, float]:

@@ -181,6 +181,25 @@ class StepAssign:
 
 
 @dataclass(frozen=True, slots=True)
+class ConditionBound:
+    """What rounding does to one computed comparison of a jump condition.
+
+    The jump is never taken where the law's comparison (in real numbers, at the sampled inputs and the stored state) does not
+    hold, and is due at the latest where it holds with `margin`. Valid inside the declared ranges.
+    """
+
+    jump: str
+    span: Span
+    error: float | None
+    """The largest rounding error where it matters; None: no bound, and the comparison is as the author wrote it."""
+    margin: float | None
+    never: bool
+    """Is the margin larger than the comparison can ever hold by?"""
+    why: str
+    """Why there is no bound."""
+
+
+@dataclass(frozen=True, slots=True)
 class StepJump:
     """A jump; `number` counts from 1 in the listed order."""
 
@@ -238,8 +257,18 @@ class StepLaw:
     sample: tuple[StepAssign, ...]
     places: Mapping[tuple[RefKind, str], int] = field(default_factory=dict)
     """Fixed point: binary places of inputs, parameters, states and outputs (value = raw * 2**-places); else empty."""
+    bounds: tuple[ConditionBound, ...] = ()
+    """One for each computed comparison of a jump condition."""
     notes: tuple[Finding, ...] = ()
     """What the step changes that the author should know (times that are no whole number of steps)."""
+
+    def rounding(self, jump: str) -> str:
+        """What the comment above a jump's condition adds: nothing where rounding can't mistake it."""
+        worst = [b for b in self.bounds if b.jump == jump and b.error is not None and b.margin is not None]
+        if not worst:
+            return ""
+        error, margin = max(b.error or 0.0 for b in worst), max(b.margin or 0.0 for b in worst)
+        return f"; rounding at most {error:.2g}, jumps at the latest {margin:.2g} beyond"
 
     def roots(self) -> Iterator[Node]:
         """The expressions that are computed for their own sake: alarms, conditions, new values, outputs."""

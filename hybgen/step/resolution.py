@@ -28,7 +28,7 @@ def findings(
     return [*_samples(made, places), *_still(made, value, places), *_gaps(made, value)]
 
 
-def moved(jump: StepJump, span: Span, least: Fraction, most: Fraction) -> Finding:
+def moved(jump: StepJump, least: Fraction, most: Fraction) -> Finding:
     """What `thresholds: nearest` costs: a constant that rounding moves to the side where the law does not jump."""
     message = (
         f"'{jump.name}' compares with {float(least):.10g} in C, where the law needs {float(most):.10g}: "
@@ -39,7 +39,7 @@ def moved(jump: StepJump, span: Span, least: Fraction, most: Fraction) -> Findin
         CODES["HG411"].property,
         Verdict.REFUTED,
         Severity.NOTE,
-        span,
+        jump.span,
         jump.name,
         message,
         hint="leave out thresholds: nearest",

@@ -40,7 +40,19 @@ class Scaled:
     places: int
     low: int
     high: int
+    error: Fraction = Fraction(0)
+    """How far the value is from the law's at most, where the law's is exact in real numbers."""
     maker: Maker | None = None
+
+    @property
+    def half(self) -> Fraction:
+        """Half a unit: the error of one rounding."""
+        return Fraction(2) ** -(self.places + 1)
+
+    @property
+    def size(self) -> Fraction:
+        """The largest magnitude."""
+        return max(abs(e) for e in self.ends)
 
     @property
     def ends(self) -> tuple[Fraction, Fraction]:
@@ -75,11 +87,23 @@ def held(value: Fraction, places: int) -> int:
     return max(-MOST, min(MOST, raw(value, places)))
 
 
-def fitted(low: Fraction, high: Fraction, ends: tuple[int, int], make: Callable[[int], Node]) -> Scaled:
-    """A result in [low, high], with as many places as there is room for; `make` gives its node for places inside `ends`."""
+def fitted(
+    low: Fraction,
+    high: Fraction,
+    ends: tuple[int, int],
+    make: Callable[[int], Node],
+    error: Fraction,
+    exact: int | None = None,
+) -> Scaled:
+    """A result in [low, high], with as many places as there is room for; `make` gives its node for places inside `ends`.
+
+    `error` is that of the operands; with `exact` places or more the operation itself does not round.
+    """
 
     def at(places: int) -> Scaled:
-        return Scaled(make(places), places, held(low, places), held(high, places))
+        found = Scaled(make(places), places, held(low, places), held(high, places))
+        rounds = exact is None or places < exact
+        return replace(found, error=error + (found.half if rounds else 0))
 
     return replace(at(min(ends[1], room(max(abs(low), abs(high))))), maker=Maker(*ends, at))
 
@@ -91,7 +115,7 @@ def constant(value: Fraction, span: Span) -> Scaled:
     if value.denominator == 1 << exact:
         places = min(places, exact)
     found = raw(value, places)
-    return Scaled(integer(found, span), places, found, found)
+    return Scaled(integer(found, span), places, found, found, abs(value - found * Fraction(2) ** -places))
 
 
 def rescaled(x: Scaled, places: int, span: Span) -> Scaled:
@@ -103,10 +127,10 @@ def rescaled(x: Scaled, places: int, span: Span) -> Scaled:
         if x.places == places:
             return x
     low, high = (held(e, places) for e in x.ends)
-    if isinstance(x.node, Const):
-        return Scaled(integer(low, span), places, low, high)
     left = max(-FINEST, min(31, places - x.places))
-    return Scaled(op("fixed_scale", x.node, integer(left), span=span), places, low, high)
+    node = integer(low, span) if isinstance(x.node, Const) else op("fixed_scale", x.node, integer(left), span=span)
+    found = Scaled(node, places, low, high)
+    return replace(found, error=x.error + (found.half if places < x.places else 0))
 
 
 def common(values: list[Scaled], span: Span) -> list[Scaled]:
@@ -138,7 +162,7 @@ def added(a: Scaled, b: Scaled, minus: bool, span: Span) -> Scaled:
         shifts = (top - a.places, top - b.places, top - places)
         return op("fixed_add", a.node, other, *map(integer, shifts), span=span)
 
-    return fitted(low, high, (top - FINEST, top), make)
+    return fitted(low, high, (top - FINEST, top), make, a.error + b.error, top)
 
 
 def _negative(node: Node, span: Span) -> Node:
@@ -162,37 +186,39 @@ def multiplied(a: Scaled, b: Scaled, span: Span) -> Scaled:
     def make(places: int) -> Node:
         return op("fixed_mul", a.node, b.node, integer(min(FINEST, whole - places)), span=span)
 
-    return fitted(min(ends), max(ends), (whole - FINEST, whole), make)
+    error = a.size * b.error + b.size * a.error + a.error * b.error
+    return fitted(min(ends), max(ends), (whole - FINEST, whole), make, error, whole)
 
 
 def _moved(x: Scaled, factor: Scaled, sign: int) -> Scaled | None:
     """x * factor**sign for a factor that is a power of two, without an operation; None for others."""
-    if (
-        not isinstance(factor.node, Const)
-        or isinstance(x.node, Const)
-        or factor.low < 1
-        or factor.low & (factor.low - 1)
-    ):
+    if not isinstance(factor.node, Const) or isinstance(x.node, Const) or factor.error:
+        return None
+    if factor.low < 1 or factor.low & (factor.low - 1):
         return None
     shift = sign * (factor.places - factor.low.bit_length() + 1)
     if not COARSEST <= x.places + shift <= FINEST:
         return None
-    maker = x.maker
-    if maker is not None:
-        at = maker.at
-        maker = Maker(
-            maker.least + shift, maker.most + shift, lambda places: replace(at(places - shift), places=places)
-        )
-    return Scaled(x.node, x.places + shift, x.low, x.high, maker)
+
+    def moved(value: Scaled) -> Scaled:
+        return replace(value, places=value.places + shift, error=value.error / Fraction(2) ** shift, maker=None)
+
+    if x.maker is None:
+        return moved(x)
+    inner = x.maker
+    maker = Maker(inner.least + shift, inner.most + shift, lambda places: moved(inner.at(places - shift)))
+    return replace(moved(x), maker=maker)
 
 
-def chosen(asked: Node, yes: Scaled, no: Scaled, span: Span) -> Scaled:
-    """yes where `asked` holds, else no."""
+def chosen(asked: Node, yes: Scaled, no: Scaled, doubtful: bool, span: Span) -> Scaled:
+    """yes where `asked` holds, else no; `doubtful`: rounding may choose the other one than the law does."""
 
     def at(places: int) -> Scaled:
         first, second = (rescaled(x, places, span) for x in (yes, no))
         node = op("select", asked, first.node, second.node, span=span)
-        return Scaled(node, places, min(first.low, second.low), max(first.high, second.high))
+        found = Scaled(node, places, min(first.low, second.low), max(first.high, second.high))
+        error = max(first.error, second.error)
+        return replace(found, error=error + (found.ends[1] - found.ends[0] if doubtful else 0))
 
     return replace(at(shared([yes, no])), maker=Maker(COARSEST, FINEST, at))
 
@@ -204,12 +230,16 @@ def divided(a: Scaled, b: Scaled, span: Span) -> Scaled:
     if (moved := _moved(a, b, -1)) is not None:
         return moved
     ends = [x / y for x in a.ends for y in b.ends]
+    least = min(abs(e) for e in b.ends) - b.error
+    if least <= 0:
+        raise Refused("the divisor is as small as its own rounding error")
+    error = (a.error + max(abs(e) for e in ends) * b.error) / least
     middle = a.places - b.places
 
     def make(places: int) -> Node:
         return op("fixed_div", a.node, b.node, integer(max(-31, places - middle)), span=span)
 
-    return fitted(min(ends), max(ends), (middle - 31, middle + 31), make)
+    return fitted(min(ends), max(ends), (middle - 31, middle + 31), make, error)
 
 
 def ordered(name: str, a: Scaled, b: Scaled, span: Span) -> Node:

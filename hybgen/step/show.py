@@ -48,11 +48,7 @@ def _lines(made: StepLaw) -> Iterator[str]:
     for i, rule in enumerate(made.rules):
         yield f"  rule {i + 1}: {rule.text}"
     yield from _scales(made)
-    if made.definitions:
-        yield ""
-        yield "definitions"
-        for d in made.definitions:
-            yield f"  {d.name} = {expression(d.expr, made)}"
+    yield from _definitions(made)
     yield ""
     yield f"jumps: at most {made.jumps_per_step} in one step, first in order; prefer {made.law.prefer}"
     for jump in made.jumps:
@@ -75,6 +71,14 @@ def _lines(made: StepLaw) -> Iterator[str]:
         yield "sample"
         for a in made.sample:
             yield f"  {_assign(a, made)}"
+
+
+def _definitions(made: StepLaw) -> Iterator[str]:
+    if made.definitions:
+        yield ""
+        yield "definitions"
+        for d in made.definitions:
+            yield f"  {d.name} = {expression(d.expr, made)}"
 
 
 def _scales(made: StepLaw) -> Iterator[str]:

@@ -77,8 +77,9 @@ static uint32_t heater_due(const heater *self, const heater_parameters *p, const
         } else if (self->silent >= 20) {
             /* heater.yaml:31  mode != fault and silent >= patience */
             answer = HEATER_JUMP_SENSOR_LOST;
-        } else if (now->enabled && (self->since >= 120) && (now->box <= (p->target - p->band))) {
-            /* heater.yaml:43  mode == off and enabled and since >= least_off and box <= target - band */
+        } else if (now->enabled && (self->since >= 120)
+            && ((now->box - (p->target - p->band)) <= (-9.536745e-07f))) {
+            /* heater.yaml:43  mode == off and enabled and since >= least_off and box <= target - band; rounding at most 9.5e-07, jumps at the latest 1.9e-06 beyond */
             answer = HEATER_JUMP_START;
         }
         break;
@@ -92,8 +93,9 @@ static uint32_t heater_due(const heater *self, const heater_parameters *p, const
         } else if (now->box >= 60.0f) {
             /* heater.yaml:35  mode == on and box >= too_hot */
             answer = HEATER_JUMP_OVERHEAT;
-        } else if ((self->since >= 60) && ((now->box >= (p->target + p->band)) || !now->enabled)) {
-            /* heater.yaml:39  mode == on and since >= least_on and (box >= target + band or not enabled) */
+        } else if ((self->since >= 60)
+            && (((now->box - (p->target + p->band)) >= 9.536745e-07f) || !now->enabled)) {
+            /* heater.yaml:39  mode == on and since >= least_on and (box >= target + band or not enabled); rounding at most 9.5e-07, jumps at the latest 1.9e-06 beyond */
             answer = HEATER_JUMP_STOP;
         }
         break;

@@ -32,6 +32,15 @@ EQUIVALENCE = (
         "—",
     ),
     Code(
+        "HG604",
+        "equality",
+        "error",
+        "the C has too many cases to be proved",
+        "Every file is read back and proved to be its step law before it is given; here the proof ran out of its budget of cases.",
+        "a condition of a hundred comparisons",
+        "the same in parts, each a term",
+    ),
+    Code(
         "HG610",
         "log",
         "error",
