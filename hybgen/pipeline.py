@@ -12,15 +12,19 @@ from hybgen.reread import reread
 from hybgen.step import build
 
 
-def generate(law: Law, *, step: Fraction | None = None, number: str | None = None) -> dict[str, str]:
+def generate(
+    law: Law, *, step: Fraction | None = None, number: str | None = None, conversions: bool = False
+) -> dict[str, str]:
     """NAME.h and NAME.c of a law, by file name; at its own step (seconds) and number format, or at others.
+
+    In fixed32, `conversions` adds functions to NAME.h that turn physical numbers into raw values and back.
 
     The C is read back and has to be the step law, operation by operation; if it were not, that would be a fault in hybgen
     (AssertionError). Raises LawError where the law does not fit the format or the method, and where its conditions have too
     many cases for the proof (HG604): what is not proved is not given.
     """
     made = build(law, step=step, number=number)
-    files = emit(lower(made))
+    files = emit(lower(made, conversions=conversions))
     told = reread(made, files)
     wrong = [w for w in told if w.decided]
     if told and not wrong:

@@ -12,7 +12,7 @@ from typing import Any
 from hybgen.emit.helpers import helper, lookups
 from hybgen.emit.kernels import functions
 from hybgen.emit.text import Writer, comment, constant, ctype
-from hybgen.ir.model import LOOKUPS, Apply, Function, Member, Program
+from hybgen.ir.model import LOOKUPS, Apply, Conversion, Function, Member, Program
 from hybgen.ir.walk import all_values
 
 STATUS = (
@@ -93,6 +93,8 @@ class _Pages:
                 for e in program.enums
             ],
             "structs": self.structs(),
+            "nearest": program.nearest,
+            "conversions": [self.conversion(c) for c in program.conversions],
             "rules": [f"{i}: {comment(r)}" for i, r in enumerate(program.rules, 1)] or ["(there is none)"],
         }
 
@@ -111,8 +113,20 @@ class _Pages:
             return ["Compile as C99 (or C++) with -ffp-contract=off, without -ffast-math."]
         return [
             "Compile as C99 (or C++). Numbers are raw values: a member in Qm.n is raw / 2^n in its unit;",
-            "-2147483648 means no number. No floating point is used.",
+            "-2147483648 means no number. The step uses no floating point.",
         ]
+
+    def conversion(self, c: Conversion) -> dict[str, str]:
+        """Powers of two as decimals, so that C++11 can read them too."""
+        up, down = (f"{2.0**p:.1f}" if p >= 0 else f"{2.0**p!r}" for p in (c.places, -c.places))
+        return {
+            "member": c.member,
+            "unit": comment(c.unit),
+            "raw": c.raw,
+            "physical": c.physical,
+            "factor": up,
+            "to_physical": f"(double)raw / {up}" if c.places >= 0 else f"(double)raw * {down}",
+        }
 
     def structs(self) -> list[dict[str, Any]]:
         program, name = self.program, self.program.name

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterable, Iterator, Sequence, Set
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 
 from hybgen.diag.span import Span
@@ -36,7 +36,7 @@ from hybgen.kernels.table import ARITY
 from hybgen.lower.blocks import Assignment, Lets, Statements, chosen, merged, ordered, pruned
 from hybgen.lower.due import Due
 from hybgen.lower.names import LOCALS, Namer, reserved
-from hybgen.lower.structs import Structs, structs
+from hybgen.lower.structs import Structs, converted, structs
 from hybgen.step.model import StepAssign, StepGrid, StepInput, StepJump, StepLaw, StepOutput, StepTable
 from hybgen.step.translate import component
 from hybgen.version import VERSION
@@ -47,12 +47,15 @@ TRUE = Constant(True, "bool")
 _REALS = {"float32": "float", "float64": "double", "fixed32": "int32_t"}
 
 
-def lower(made: StepLaw) -> Program:
-    """The program of a step law, verified."""
+def lower(made: StepLaw, *, conversions: bool = False) -> Program:
+    """The program of a step law, verified; in fixed point with functions from and to physical numbers, if asked."""
     namer = Namer(reserved(made.law.name))
     parts = structs(made, namer)
     builder = _Builder(made, parts)
     program = builder.program()
+    if conversions and made.places:
+        nearest = namer.unique(f"{made.law.name}_nearest")
+        program = replace(program, nearest=nearest, conversions=tuple(converted(made, namer)))
     verify(program)
     return program
 

@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 from fractions import Fraction
 
 from hybgen.expr.core import Kind, RefKind, refs
 from hybgen.expr.units import Unit
-from hybgen.ir.model import Enum, Member
+from hybgen.ir.model import Conversion, Enum, Member
 from hybgen.law.model import Input, Output, Parameter, State, StateKind
 from hybgen.lower.names import LOCALS, Namer
 from hybgen.lower.values import Values
@@ -158,3 +159,17 @@ def _state_note(x: State, made: StepLaw) -> str:
             return _joined(_unit(x.unit), _range(x.low, x.high), _scale(made, RefKind.STATE, x.name, x.unit), x.about)
         case _:
             return x.about
+
+
+def converted(made: StepLaw, namer: Namer) -> Iterator[Conversion]:
+    """The conversions of inputs, parameters and outputs in fixed point, with free names."""
+    law = made.law
+    units = {
+        RefKind.INPUT: {u.name: u.unit for u in law.inputs},
+        RefKind.PARAMETER: {p.name: p.unit for p in law.parameters},
+        RefKind.OUTPUT: {o.name: o.unit for o in law.outputs},
+    }
+    for (kind, name), places in made.places.items():
+        if kind in units:
+            raw, physical = (namer.unique(f"{law.name}_{name}_{word}") for word in ("raw", "physical"))
+            yield Conversion(name, raw, physical, places, _unit(units[kind][name]) or "no unit")

@@ -56,9 +56,12 @@ def layout(made: StepLaw, which: str) -> list[tuple[str, np.dtype[Any], tuple[in
 
 def to_raw(value: Any, places: int) -> Array:
     """Physical values as raw ones: nearest, ties to even; held at the ends; NO_NUMBER for what is not finite."""
-    scaled = np.ldexp(np.asarray(value, np.float64), places)
-    held = np.clip(np.rint(np.where(np.isfinite(scaled), scaled, 0.0)), -LARGEST_COUNT, LARGEST_COUNT)
-    return np.where(np.isfinite(scaled), held, NO_NUMBER).astype(np.int32)
+    given = np.asarray(value, np.float64)
+    finite = np.isfinite(given)
+    with np.errstate(over="ignore"):
+        scaled = np.ldexp(np.where(finite, given, 0.0), places)
+    held = np.clip(np.rint(scaled), -LARGEST_COUNT, LARGEST_COUNT)
+    return np.where(finite, held, NO_NUMBER).astype(np.int32)
 
 
 def to_physical(raw: Any, places: int) -> Array:
