@@ -57,6 +57,8 @@ class Elaborator:
     """The jump whose condition is made."""
     asking: str = ""
     """The same, where its comparisons are moved outward."""
+    refused: bool = False
+    """Was there an operation that is not possible? Then a value may be only a stand-in."""
     records: list[ConditionBound] = field(default_factory=list)
     more: list[Definition] = field(default_factory=list)
     """Every definition, those of the elaboration too, each before its use."""
@@ -134,7 +136,7 @@ class Elaborator:
         edge = safe = math.ceil(exact) if name in ("ge", "lt") else math.floor(exact)
         if self.made.law.thresholds == "nearest":
             edge = round(exact)
-            if edge != safe and self.jump is not None:
+            if edge != safe and self.jump is not None and not self.refused:
                 unit = Fraction(2) ** -x.places
                 self.findings.add(resolution.moved(self.jump, edge * unit, safe * unit))
         if abs(edge) > MOST:
@@ -146,6 +148,7 @@ class Elaborator:
         try:
             return make()
         except Refused as refused:
+            self.refused = True
             self.findings.error("HG422", node.span, f"fixed32: {refused}", hint="limit it first, such as max(x, 0.01)")
             return None
 
@@ -156,6 +159,7 @@ class Elaborator:
             try:
                 found = self.computed(node)
             except Refused as refused:
+                self.refused = True
                 self.findings.error(
                     "HG422", node.span, f"fixed32: {refused}", hint="limit it first, such as max(x, 0.01)"
                 )
