@@ -135,12 +135,14 @@ def test_what_is_stored_is_rounded_to_the_state_and_held() -> None:
 
 def test_ends_of_ranges_are_raw_values_inside_them_and_not_the_last() -> None:
     for e, _, _ in worlds(range(60)):
-        law, rows = e.made.law, [*e.done.inputs, *e.done.parameters]
+        law = e.made.law
+        done = {u.name: (u.low, u.high) for u in e.done.inputs}
+        done |= {p.name: (p.low or 0, p.high or 0) for p in e.done.parameters}
         ranges = {u.name: (RefKind.INPUT, u.low, u.high) for u in law.inputs if u.type == REAL}
         ranges |= {p.name: (RefKind.PARAMETER, p.low, p.high) for p in law.tunables if p.type == REAL}
         for name, (kind, low, high) in ranges.items():
             assert low is not None and high is not None
             unit = Fraction(2) ** e.done.places[(kind, name)]
-            first, last = next((int(r.low or 0), int(r.high or 0)) for r in rows if r.name == name)
+            first, last = (int(v) for v in done[name])
             assert -(2**31) + 1 < first < last < 2**31 - 1
             assert low * unit <= first < low * unit + 1 and high * unit - 1 < last <= high * unit

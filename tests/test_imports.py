@@ -14,7 +14,7 @@ MAY = {
     "version": set(), "diag": set(), "kernels": set(), "expr": {"diag"}, "law": {"diag", "expr"}, "numbers": {"expr", "kernels"},
     "step": {"diag", "expr", "law", "kernels", "numbers"}, "reference": {"expr", "law", "numbers", "kernels", "step"}, "ir": {"kernels"},
     "lower": {"diag", "expr", "law", "step", "ir", "kernels", "version"}, "emit": {"ir", "kernels"},
-    "checks": {"diag", "expr", "law", "step"}, "pipeline": {"diag", "law", "step", "lower", "emit", "reread"},
+    "checks": {"diag", "expr", "law", "numbers", "step"}, "pipeline": {"diag", "law", "step", "lower", "emit", "reread"},
     "reread": {"expr", "numbers", "kernels", "step"},
     "sil": {"diag", "expr", "law", "step", "reference", "lower", "emit"},
 }  # fmt: skip

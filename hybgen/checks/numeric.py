@@ -6,6 +6,7 @@ from collections.abc import Iterator
 from dataclasses import replace
 from fractions import Fraction
 
+from hybgen.checks import coarse
 from hybgen.checks.report import error
 from hybgen.diag.finding import Finding, Severity, Verdict
 from hybgen.expr.core import FALSE, Const, Node, Ref, RefKind, walk
@@ -30,7 +31,7 @@ def fits(law: Law) -> list[Finding]:
 def questions(law: Law, step: Fraction | None, number: str | None) -> list[Finding]:
     """Findings of the step law; raises LawError where there is none."""
     made = build(law, step=step, number=number)
-    return [*made.notes, *_defaults(made), *_moved(law, made), *_rounding(made), _chain(made)]
+    return [*made.notes, *_defaults(made), *_moved(law, made), *_rounding(made), *coarse.questions(made), _chain(made)]
 
 
 def _defaults(made: StepLaw) -> Iterator[Finding]:

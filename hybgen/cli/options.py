@@ -29,7 +29,7 @@ def parser() -> argparse.ArgumentParser:
     generate = _law(commands, "generate", "write NAME.h and NAME.c")
     generate.add_argument("--to", default=".", metavar="DIR", help="folder to write into (made if missing)")
     generate.add_argument(
-        "--conversions", action="store_true", help="fixed32: functions between raw and physical numbers, in NAME.h"
+        "--conversions", action="store_true", help="fixed32: functions between physical and raw values in NAME.h"
     )
     sil = _law(commands, "sil", "compare reference and compiled C, bit for bit, at every step")
     sil.add_argument("--target", default="host", choices=("host",), help="where the C runs (this version: host)")

@@ -7,14 +7,13 @@ from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, field, replace
 from fractions import Fraction
 
-from hybgen.diag.finding import Findings
+from hybgen.diag.finding import Finding, Findings, Severity, Verdict
 from hybgen.diag.span import Span
 from hybgen.expr.core import FALSE, INT, REAL, TRUE, Const, Kind, Node, Op, Ref, RefKind, integer, op, truth, walk
 from hybgen.expr.fold import decide
 from hybgen.kernels.word import ELEMENTARY
 from hybgen.numbers.bounds import Bounds, Range
 from hybgen.numbers.rounding import turned
-from hybgen.step import resolution
 from hybgen.step.curves import curve, grid
 from hybgen.step.functions import elementary, picked
 from hybgen.step.model import (
@@ -138,7 +137,7 @@ class Elaborator:
             edge = round(exact)
             if edge != safe and self.jump is not None and not self.refused:
                 unit = Fraction(2) ** -x.places
-                self.findings.add(resolution.moved(self.jump, edge * unit, safe * unit))
+                self.findings.add(_nearest(self.jump, edge * unit, safe * unit))
         if abs(edge) > MOST:
             return truth((edge > 0) is (name in ("lt", "le")), span)
         return op(name, x.node, integer(edge, span), span=span)
@@ -250,3 +249,13 @@ class Elaborator:
             and any(not isinstance(a, Const) and self.real(a).error > 0 for a in n.args)
             for n in walk(condition)
         )
+
+
+def _nearest(jump: StepJump, least: Fraction, most: Fraction) -> Finding:
+    """What `thresholds: nearest` costs: a constant that rounding moves to the side where the law does not jump."""
+    message = (
+        f"'{jump.name}' compares with {float(least):.10g} in C, where the law needs {float(most):.10g}: "
+        "rounding can cause a jump"
+    )
+    hint = "leave out thresholds: nearest"
+    return Finding("HG411", "rounding", Verdict.REFUTED, Severity.NOTE, jump.span, jump.name, message, hint=hint)

@@ -16,7 +16,6 @@ from hybgen.diag.span import Span
 from hybgen.expr.core import INT, REAL, Const, Node, Ref, RefKind, integer
 from hybgen.law.model import Law, Value
 from hybgen.numbers.bounds import Bounds
-from hybgen.step import resolution
 from hybgen.step.elaborate import Elaborator, Key, Leaf
 from hybgen.step.model import (
     Definition,
@@ -51,12 +50,12 @@ def _leaves(made: StepLaw, findings: Findings) -> dict[Key, Leaf]:
     for u in made.inputs:
         if u.type == REAL:
             held = [Fraction(u.initial), Fraction(u.substitute)]
-            found[(RefKind.INPUT, u.name)] = _between(Fraction(u.low), Fraction(u.high), u.name, u.span, findings, held)
+            found[(RefKind.INPUT, u.name)] = _between(Fraction(u.low), Fraction(u.high), u, findings, held)
     for p in made.parameters:
         if p.type == REAL:
             ends = (min(map(Fraction, p.default)), max(map(Fraction, p.default)))
             low, high = (Fraction(e if v is None else v) for v, e in zip((p.low, p.high), ends, strict=True))
-            found[(RefKind.PARAMETER, p.name)] = _between(low, high, p.name, p.span, findings, [])
+            found[(RefKind.PARAMETER, p.name)] = _between(low, high, p, findings, [])
     for x in made.states:
         if x.type == REAL:
             found[(RefKind.STATE, x.name)] = _state(x, made.law, findings)
@@ -68,26 +67,32 @@ def _state(x: StepState, law: Law, findings: Findings) -> tuple[int, int, int]:
     declared = law.state(x.name)
     assert declared.low is not None and declared.high is not None, "every real state has a range"
     if declared.limit:
-        return _between(declared.low, declared.high, x.name, x.span, findings, [])
-    places, _, _ = _between(2 * declared.low, 2 * declared.high, x.name, x.span, findings, [])
+        return _between(declared.low, declared.high, x, findings, [])
+    places, _, _ = _between(2 * declared.low, 2 * declared.high, x, findings, [])
     return places, -MOST, MOST
 
 
 def _between(
-    low: Fraction, high: Fraction, name: str, span: Span, findings: Findings, others: list[Fraction]
+    low: Fraction,
+    high: Fraction,
+    row: StepInput | StepParameter | StepState,
+    findings: Findings,
+    others: list[Fraction],
 ) -> tuple[int, int, int]:
-    """Ends are rounded inward, other values to the nearest. No end is ± MOST: what is held there is out of range."""
+    """Ends are rounded inward, other values to the nearest. No end of what comes from outside (`sampled`) is ± MOST, where
+    larger values are held: those have to be out of range."""
+    sampled = not isinstance(row, StepState)
     try:
         places = room(max(abs(v) for v in (low, high, *others)))
-        if max(abs(v) for v in (low, high)) * Fraction(2) ** places > MOST - 1:
+        if sampled and max(abs(v) for v in (low, high)) * Fraction(2) ** places > MOST - 1:
             places -= 1
     except Refused as refused:
-        findings.error("HG421", span, f"'{name}' does not fit fixed32: {refused}", hint="use another unit")
+        findings.error("HG421", row.span, f"'{row.name}' does not fit fixed32: {refused}", hint="use another unit")
         return 0, 0, 0
     unit = Fraction(2) ** places
     first, last = math.ceil(low * unit), math.floor(high * unit)
     if first > last:
-        findings.error("HG421", span, f"'{name}' does not fit fixed32: no raw value lies in its range")
+        findings.error("HG421", row.span, f"'{row.name}' does not fit fixed32: no raw value lies in its range")
         return 0, 0, 0
     raws = [first, last, *(raw(v, places) for v in others)]
     return places, min(raws), max(raws)
@@ -125,8 +130,6 @@ class _Fixed:
             | {(RefKind.OUTPUT, name): p for name, p in places.items()},
         )
         self.expressions.findings.stop()
-        for finding in resolution.findings(made, self.expressions.real, fixed.places):
-            self.expressions.findings.add(finding)
         return replace(
             fixed,
             definitions=tuple(self.expressions.more),

@@ -181,6 +181,8 @@ def multiplied(a: Scaled, b: Scaled, span: Span) -> Scaled:
         if (moved := _moved(x, factor, 1)) is not None:
             return moved
     ends = [x * y for x in a.ends for y in b.ends]
+    if a.node == b.node:  # a square is nowhere below 0
+        ends = [max(ends), Fraction(0) if a.low <= 0 <= a.high else min(e * e for e in a.ends)]
     whole = a.places + b.places
 
     def make(places: int) -> Node:
