@@ -21,7 +21,7 @@ def generate(
 
     The C is read back and has to be the step law, operation by operation; if it were not, that would be a fault in hybgen
     (AssertionError). Raises LawError where the law does not fit the format or the method, and where its conditions have too
-    many cases for the proof (HG604): what is not proved is not given.
+    many cases for the proof (HG605): what is not proved is not given.
     """
     made = build(law, step=step, number=number)
     files = emit(lower(made, conversions=conversions))
@@ -32,7 +32,7 @@ def generate(
         where = ", ".join(dict.fromkeys(w.function for w in told))
         message = f"the C of {law.name} could not be proved equal to its law: too many cases in {where}"
         findings.error(
-            "HG604", law.flow.span, message, hint="use fewer conditions in one expression; name parts as terms"
+            "HG605", law.flow.span, message, hint="use fewer conditions in one expression; name parts as terms"
         )
         findings.stop()
     assert not wrong, f"the C of {law.name} is not its step law: {'; '.join(f'{w.function}: {w.what}' for w in wrong)}"

@@ -188,7 +188,7 @@ def test_conversions_of_numbers() -> None:
 
 def test_the_header_says_how_to_read_each_member() -> None:
     header = generate(raft("winch"), number="fixed32")["winch.h"]
-    assert "numbers fixed32" in header and "raw / 2^n" in header and "fast-math" not in header
+    assert "numbers fixed32" in header and "value * 2^n" in header and "fast-math" not in header
     for line in (
         "int32_t wanted; /* m/s; -1 .. 1; Q1.30, resolution 9.31e-10 m/s;",
         "int32_t gain; /* V*s/m; 5 .. 40; Q6.25, resolution 2.98e-08 V*s/m */",

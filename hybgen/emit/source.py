@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import textwrap
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from functools import cache
 from pathlib import Path
@@ -26,6 +26,11 @@ CAUTIONS = (
     "Caution: this code can move machines. It was checked against its law in simulation, and simulation is not a "
     "safety case. Local codes, functional-safety standards and a qualified review decide whether it may be used."
 )
+_FIXED = (
+    "Numbers are raw: value * 2^n as int32_t, with n as given for each member (Qm.n), rounded half to even and",
+    "held at the ends; INT32_MIN means no number. The step uses no floating point. Compile as C99 (or C++).",
+)
+_FLOATS = ("Compile as C99 (or C++) with -ffp-contract=off, without -ffast-math.",)
 _ORDER = ("self", "p", "u", "now", "y")
 
 
@@ -54,10 +59,32 @@ def _environment() -> Any:
 def emit(program: Program) -> dict[str, str]:
     """The two files, by name."""
     pages = _Pages(program, Writer(program))
-    environment = _environment()
     return {
-        f"{program.name}.h": environment.get_template("law.h.jinja").render(pages.header()),
-        f"{program.name}.c": environment.get_template("law.c.jinja").render(pages.source()),
+        f"{program.name}.h": render("law.h.jinja", pages.header()),
+        f"{program.name}.c": render("law.c.jinja", pages.source()),
+    }
+
+
+def render(template: str, values: Mapping[str, Any]) -> str:
+    """A template laid out."""
+    text: str = _environment().get_template(template).render(values)
+    return text
+
+
+def common(program: Program) -> dict[str, Any]:
+    """What the heads of all C files have in common, and their guards against flags that change results."""
+    return {
+        "name": program.name,
+        "upper": program.name.upper(),
+        "facts": [
+            f"Made by hybgen {program.version} from {comment(program.origin)}, SHA-256",
+            f"  {program.digest}",
+            f"step {program.step}, numbers {program.number}, integration {program.method}",
+            *(_FIXED if program.number == "fixed32" else _FLOATS),
+        ],
+        "cautions": textwrap.wrap(CAUTIONS, 100),
+        "floats": program.number != "fixed32",
+        "excess": " && (__FLT_EVAL_METHOD__ != 1)" if program.real == "double" else "",
     }
 
 
@@ -72,12 +99,9 @@ class _Pages:
         program = self.program
         about = textwrap.wrap(comment(f"{program.name}: {program.about}" if program.about else program.name), 100)
         return {
-            "name": program.name,
-            "upper": program.name.upper(),
+            **common(program),
             "guard": f"{program.name.upper()}_H",
             "about": about,
-            "facts": self.facts(),
-            "cautions": textwrap.wrap(CAUTIONS, 100),
             "step": program.step,
             "status": [{"name": n, "value": v, "note": note} for n, v, note in STATUS],
             "jumps": program.jumps,
@@ -97,24 +121,6 @@ class _Pages:
             "conversions": [self.conversion(c) for c in program.conversions],
             "rules": [f"{i}: {comment(r)}" for i, r in enumerate(program.rules, 1)] or ["(there is none)"],
         }
-
-    def facts(self) -> list[str]:
-        program = self.program
-        return [
-            f"Made by hybgen {program.version} from {comment(program.origin)}, SHA-256",
-            f"  {program.digest}",
-            f"step {program.step}, numbers {program.number}, integration {program.method}",
-            *self.numbers(),
-        ]
-
-    def numbers(self) -> list[str]:
-        """What the number format asks of a compiler, and of a reader."""
-        if self.program.number != "fixed32":
-            return ["Compile as C99 (or C++) with -ffp-contract=off, without -ffast-math."]
-        return [
-            "Compile as C99 (or C++). Numbers are raw values: a member in Qm.n is raw / 2^n in its unit;",
-            "-2147483648 means no number. The step uses no floating point.",
-        ]
 
     def conversion(self, c: Conversion) -> dict[str, str]:
         """Powers of two as decimals, so that C++11 can read them too."""
@@ -167,12 +173,7 @@ class _Pages:
         helpers = [helper(h, program) for h in program.helpers if h not in LOOKUPS]
         helpers += [*functions(program.kernels, program), *lookups(program, tables)]
         return {
-            "name": program.name,
-            "upper": program.name.upper(),
-            "facts": self.facts(),
-            "cautions": textwrap.wrap(CAUTIONS, 100),
-            "floats": program.number != "fixed32",
-            "excess": " && (__FLT_EVAL_METHOD__ != 1)" if program.real == "double" else "",
+            **common(program),
             "now": [{"text": self.member(m)} for m in program.now],
             "defaults": self.defaults(),
             "helpers": helpers,
@@ -329,4 +330,4 @@ class _Pages:
         yield "    }"
 
 
-__all__ = ["emit", "templates_folder"]
+__all__ = ["common", "emit", "render", "templates_folder"]
