@@ -17,14 +17,14 @@ def generate(
 ) -> dict[str, str]:
     """NAME.h and NAME.c of a law, by file name; at its own step (seconds) and number format, or at others.
 
-    `conversions`: in fixed point, NAME.h also has functions between physical and raw values.
+    In fixed32, `conversions` adds functions to NAME.h that turn physical numbers into raw values and back.
 
     The C is read back and has to be the step law, operation by operation; if it were not, that would be a fault in hybgen
     (AssertionError). Raises LawError where the law does not fit the format or the method, and where its conditions have too
     many cases for the proof (HG605): what is not proved is not given.
     """
     made = build(law, step=step, number=number)
-    files = emit(lower(made), conversions)
+    files = emit(lower(made, conversions=conversions))
     told = reread(made, files)
     wrong = [w for w in told if w.decided]
     if told and not wrong:

@@ -189,7 +189,7 @@ def test_check_speaks_of_the_format_asked_for() -> None:
 def test_conversions_on_request(compiler: str, tmp_path: Path) -> None:
     """In C as in Python: nearest, ties to even, held, no number for what is not finite."""
     law = law_of(TANK)
-    assert "_raw_level" not in generate(law)["tank.h"]
+    assert "level_raw" not in generate(law)["tank.h"]
     files = generate(law, conversions=True)
     values = [
         0.0,
@@ -212,8 +212,8 @@ int main(void)
     static const double zero = 0.0;
     const double values[] = {{ {rows}, 1.0 / zero, -1.0 / zero, zero / zero }};
     int i;
-    for (i = 0; i < {len(values) + 3}; i++) {{ printf("%d ", (int)tank_raw_level(values[i])); }}
-    printf("%.17g %.17g\\n", tank_physical_level(123456789), tank_physical_force(-5));
+    for (i = 0; i < {len(values) + 3}; i++) {{ printf("%d ", (int)tank_level_raw(values[i])); }}
+    printf("%.17g %.17g\\n", tank_level_physical(123456789), tank_force_physical(-5));
     return 0;
 }}
 """

@@ -12,7 +12,7 @@ from typing import Any
 from hybgen.emit.helpers import helper, lookups
 from hybgen.emit.kernels import functions
 from hybgen.emit.text import Writer, comment, constant, ctype
-from hybgen.ir.model import LOOKUPS, Apply, Function, Member, Program
+from hybgen.ir.model import LOOKUPS, Apply, Conversion, Function, Member, Program
 from hybgen.ir.walk import all_values
 
 STATUS = (
@@ -28,8 +28,9 @@ CAUTIONS = (
 )
 _FIXED = (
     "Numbers are raw: value * 2^n as int32_t, with n as given for each member (Qm.n), rounded half to even and",
-    "held at the ends; INT32_MIN means no number.",
+    "held at the ends; INT32_MIN means no number. The step uses no floating point. Compile as C99 (or C++).",
 )
+_FLOATS = ("Compile as C99 (or C++) with -ffp-contract=off, without -ffast-math.",)
 _ORDER = ("self", "p", "u", "now", "y")
 
 
@@ -55,9 +56,9 @@ def _environment() -> Any:
     )
 
 
-def emit(program: Program, conversions: bool = False) -> dict[str, str]:
-    """The two files, by name; `conversions`: with functions between physical and raw values (fixed point)."""
-    pages = _Pages(program, Writer(program), conversions)
+def emit(program: Program) -> dict[str, str]:
+    """The two files, by name."""
+    pages = _Pages(program, Writer(program))
     return {
         f"{program.name}.h": render("law.h.jinja", pages.header()),
         f"{program.name}.c": render("law.c.jinja", pages.source()),
@@ -79,10 +80,10 @@ def common(program: Program) -> dict[str, Any]:
             f"Made by hybgen {program.version} from {comment(program.origin)}, SHA-256",
             f"  {program.digest}",
             f"step {program.step}, numbers {program.number}, integration {program.method}",
-            *(_FIXED if program.number == "fixed32" else ()),
-            "Compile as C99 (or C++) with -ffp-contract=off, without -ffast-math.",
+            *(_FIXED if program.number == "fixed32" else _FLOATS),
         ],
         "cautions": textwrap.wrap(CAUTIONS, 100),
+        "floats": program.number != "fixed32",
         "excess": " && (__FLT_EVAL_METHOD__ != 1)" if program.real == "double" else "",
     }
 
@@ -93,14 +94,12 @@ class _Pages:
 
     program: Program
     writer: Writer
-    conversions: bool
 
     def header(self) -> dict[str, Any]:
         program = self.program
         about = textwrap.wrap(comment(f"{program.name}: {program.about}" if program.about else program.name), 100)
         return {
             **common(program),
-            "conversions": list(self.converted()) if self.conversions else [],
             "guard": f"{program.name.upper()}_H",
             "about": about,
             "step": program.step,
@@ -118,7 +117,21 @@ class _Pages:
                 for e in program.enums
             ],
             "structs": self.structs(),
+            "nearest": program.nearest,
+            "conversions": [self.conversion(c) for c in program.conversions],
             "rules": [f"{i}: {comment(r)}" for i, r in enumerate(program.rules, 1)] or ["(there is none)"],
+        }
+
+    def conversion(self, c: Conversion) -> dict[str, str]:
+        """Powers of two as decimals, so that C++11 can read them too."""
+        up, down = (f"{2.0**p:.1f}" if p >= 0 else f"{2.0**p!r}" for p in (c.places, -c.places))
+        return {
+            "member": c.member,
+            "unit": comment(c.unit),
+            "raw": c.raw,
+            "physical": c.physical,
+            "factor": up,
+            "to_physical": f"(double)raw / {up}" if c.places >= 0 else f"(double)raw * {down}",
         }
 
     def structs(self) -> list[dict[str, Any]]:
@@ -145,20 +158,6 @@ class _Pages:
         if not members:
             return [{"text": f"uint8_t none; /* this law has no {word} */"}]
         return [{"text": self.member(m)} for m in members]
-
-    def converted(self) -> Iterator[dict[str, str]]:
-        """The members that are scaled, each name once, with the factor 2**places."""
-        taken = {t.name for t in self.program.tables}
-        for m in (*self.program.inputs, *self.program.parameters, *self.program.outputs):
-            if m.places is not None:
-                names = {}
-                for word in ("raw", "physical"):
-                    name = f"{self.program.name}_{word}_{m.name}"
-                    while name in taken:
-                        name += "_"
-                    taken.add(name)
-                    names[word] = name
-                yield {**names, "factor": f"{2.0**m.places!r}", "inverse": f"{2.0**-m.places!r}"}
 
     def member(self, m: Member) -> str:
         size = "" if m.size is None else f"[{m.size}]"

@@ -158,8 +158,6 @@ class Member:
     type: str
     size: int | None
     note: str
-    places: int | None = None
-    """Fixed point: binary places."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -222,6 +220,17 @@ class Jump:
 
 
 @dataclass(frozen=True, slots=True)
+class Conversion:
+    """Functions between a raw value and the physical number it stands for: raw = physical * 2**places."""
+
+    member: str
+    raw: str
+    physical: str
+    places: int
+    unit: str
+
+
+@dataclass(frozen=True, slots=True)
 class Program:
     """One step as functions over structs."""
 
@@ -256,6 +265,9 @@ class Program:
     functions: tuple[Function, ...]
     flow_asked: bool
     """Does the flow depend on a flow condition?"""
+    nearest: str = ""
+    """The function that conversions share."""
+    conversions: tuple[Conversion, ...] = ()
 
     def function(self, name: str) -> Function:
         """The function of this name."""

@@ -10,6 +10,8 @@ from functools import cache
 from hybgen.kernels.word import Builder, Kernel, Word, choose, number
 
 MOST = 2**31 - 1
+NO_NUMBER = -(2**31)
+"""Outside every range; what is below -MOST is no number."""
 
 
 def _power(k: Builder, name: str, count: Word) -> Word:
@@ -83,13 +85,14 @@ def _floor(k: Builder, a: Word, right: Word) -> Word:
 
 
 def _steps(k: Builder, a: Word, right: Word) -> Word:
-    """2**-27 of the value, and two units, above a whole number are that number."""
+    """2**-27 of the value, and two units, but no more than a quarter of a step, above a whole number are that number."""
     k.exit(a <= 0, number(0, "i32"))
     size = k.let("size", a.to("u32").to("u64"))
-    slack = k.let("slack", (size >> 27) + 2)
-    less = k.let("less", choose(size > slack, size - slack, number(1, "u64")))
-    up = less + ((number(1, "u64") << right.to("u32")) - 1)
-    return k.let("steps", (up >> right.to("u32")).to("i32"))
+    unit = k.let("unit", number(1, "u64") << right.to("u32"))
+    most, slack = k.let("most", unit >> 2), k.let("slack", (size >> 27) + 2)
+    held = k.let("held", choose(slack < most, slack, most))
+    less = k.let("less", choose(size > held, size - held, number(1, "u64")))
+    return k.let("steps", ((less + (unit - 1)) >> right.to("u32")).to("i32"))
 
 
 def _line(k: Builder, y: Word, slope: Word, x: Word, start: Word, left: Word, right: Word) -> Word:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterable, Iterator, Sequence, Set
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 
 from hybgen.diag.span import Span
@@ -31,11 +31,12 @@ from hybgen.ir.model import (
 )
 from hybgen.ir.verify import verify
 from hybgen.ir.walk import all_values, statements
+from hybgen.kernels.integers import MOST
 from hybgen.kernels.table import ARITY
 from hybgen.lower.blocks import Assignment, Lets, Statements, chosen, merged, ordered, pruned
 from hybgen.lower.due import Due
 from hybgen.lower.names import LOCALS, Namer, reserved
-from hybgen.lower.structs import Structs, structs
+from hybgen.lower.structs import Structs, converted, structs
 from hybgen.step.model import StepAssign, StepGrid, StepInput, StepJump, StepLaw, StepOutput, StepTable
 from hybgen.step.translate import component
 from hybgen.version import VERSION
@@ -46,12 +47,15 @@ TRUE = Constant(True, "bool")
 _REALS = {"float32": "float", "float64": "double", "fixed32": "int32_t"}
 
 
-def lower(made: StepLaw) -> Program:
-    """The program of a step law, verified."""
+def lower(made: StepLaw, *, conversions: bool = False) -> Program:
+    """The program of a step law, verified; in fixed point with functions from and to physical numbers, if asked."""
     namer = Namer(reserved(made.law.name))
     parts = structs(made, namer)
     builder = _Builder(made, parts)
     program = builder.program()
+    if conversions and made.places:
+        nearest = namer.unique(f"{made.law.name}_nearest")
+        program = replace(program, nearest=nearest, conversions=tuple(converted(made, namer)))
     verify(program)
     return program
 
@@ -228,9 +232,12 @@ class _Builder:
     def _clamped(self, u: StepInput, raw: Field, seen: Field, index: int | None) -> Statement:
         """A finite sample to the nearest end; others as hold."""
         low, high = (self.parts.values.constant(v, u.type) for v in (u.low, u.high))
-        if u.type == INT:
-            return Store(seen, Apply("iclamp", (raw, low, high), "int"))
+        inside = Store(seen, Apply("iclamp", (raw, low, high), "int"))
+        if u.type == INT and not u.scaled:
+            return inside
         held = Store(seen, self._held(u, index))
+        if u.scaled:
+            return If(Apply("ge", (raw, Constant(-MOST, "int")), "bool"), (inside,), (held,))
         return If(Apply("finite", (raw,), "bool"), (Store(seen, Apply("clamp", (raw, low, high), "real")),), (held,))
 
     def _due(self) -> Statements:

@@ -2,16 +2,18 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 from fractions import Fraction
 
 from hybgen.expr.core import Kind, RefKind, refs
 from hybgen.expr.units import Unit
-from hybgen.ir.model import Enum, Member
+from hybgen.ir.model import Conversion, Enum, Member
 from hybgen.law.model import Input, Output, Parameter, State, StateKind
 from hybgen.lower.names import LOCALS, Namer
 from hybgen.lower.values import Values
-from hybgen.step.model import StepGrid, StepInput, StepLaw, StepParameter, StepTable
+from hybgen.step.model import StepGrid, StepLaw, StepTable
+from hybgen.step.show import scale
 
 
 @dataclass(frozen=True, slots=True)
@@ -42,26 +44,31 @@ def structs(made: StepLaw, namer: Namer) -> Structs:
     values = Values(known, names, locals_, tables)
     held = {u.name: f"held_{u.name}" for u in made.inputs if u.held}
     law = made.law
+    return Structs(
+        tuple(enums),
+        tuple(Member(u.name, values.type(u.type), u.size, _input_note(law.input(u.name), made)) for u in made.inputs),
+        tuple(
+            Member(p.name, values.type(p.type), p.size, _parameter_note(law.parameter(p.name), made))
+            for p in made.parameters
+        ),
+        tuple(Member(o.name, values.type(o.type), o.size, _output_note(o, made)) for o in law.outputs),
+        _states(made, values, held),
+        now,
+        values,
+        macros,
+        held,
+    )
+
+
+def _states(made: StepLaw, values: Values, held: dict[str, str]) -> tuple[Member, ...]:
+    law = made.law
     states = [Member(x.name, values.type(x.type), x.size, _state_note(law.state(x.name), made)) for x in made.states]
     states += [
         Member(held[u.name], values.type(u.type), u.size, f"last good sample of {u.name}")
         for u in made.inputs
         if u.held
     ]
-    return Structs(
-        tuple(enums),
-        tuple(_member(u, _input_note(law.input(u.name), made), RefKind.INPUT, values, made) for u in made.inputs),
-        tuple(
-            _member(p, _parameter_note(law.parameter(p.name), made), RefKind.PARAMETER, values, made)
-            for p in made.parameters
-        ),
-        tuple(_member(o, _output_note(o, made), RefKind.OUTPUT, values, made) for o in law.outputs),
-        tuple(states),
-        now,
-        values,
-        macros,
-        held,
-    )
+    return tuple(states)
 
 
 def _arrays(table: StepTable | StepGrid) -> tuple[str, ...]:
@@ -123,14 +130,10 @@ def _joined(*parts: str) -> str:
     return "; ".join(p for p in parts if p)
 
 
-def _member(row: StepInput | StepParameter | Output, note: str, kind: RefKind, values: Values, made: StepLaw) -> Member:
-    return Member(row.name, values.type(row.type), row.size, note, made.places.get((kind, row.name)))
-
-
 def _scale(made: StepLaw, kind: RefKind, name: str, unit: Unit) -> str:
     """Fixed point: how many bits stand before and after the point, and what the last one is worth."""
     places = made.places.get((kind, name))
-    return "" if places is None else f"Q{31 - places}.{places}, resolution {2.0**-places:.3g} {_unit(unit)}".rstrip()
+    return "" if places is None else f"{scale(places)} {_unit(unit)}".rstrip()
 
 
 def _input_note(u: Input, made: StepLaw) -> str:
@@ -156,3 +159,17 @@ def _state_note(x: State, made: StepLaw) -> str:
             return _joined(_unit(x.unit), _range(x.low, x.high), _scale(made, RefKind.STATE, x.name, x.unit), x.about)
         case _:
             return x.about
+
+
+def converted(made: StepLaw, namer: Namer) -> Iterator[Conversion]:
+    """The conversions of inputs, parameters and outputs in fixed point, with free names."""
+    law = made.law
+    units = {
+        RefKind.INPUT: {u.name: u.unit for u in law.inputs},
+        RefKind.PARAMETER: {p.name: p.unit for p in law.parameters},
+        RefKind.OUTPUT: {o.name: o.unit for o in law.outputs},
+    }
+    for (kind, name), places in made.places.items():
+        if kind in units:
+            raw, physical = (namer.unique(f"{law.name}_{name}_{word}") for word in ("raw", "physical"))
+            yield Conversion(name, raw, physical, places, _unit(units[kind][name]) or "no unit")

@@ -15,6 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hybgen.expr.core import Kind, RefKind, Type
+from hybgen.kernels.integers import NO_NUMBER
 from hybgen.numbers.format import LARGEST_COUNT, Format
 from hybgen.step.model import Status, StepLaw, StepState
 
@@ -53,21 +54,36 @@ def layout(made: StepLaw, which: str) -> list[tuple[str, np.dtype[Any], tuple[in
             return [*states, *held, ("last_jump", word, ()), ("jumps", word, ())]
 
 
-NO_NUMBER = -(2**31)
-"""The raw value of what is no number, in fixed point: outside every range."""
-
-
 def to_raw(value: Any, places: int) -> Array:
     """Physical values as raw ones: nearest, ties to even; held at the ends; NO_NUMBER for what is not finite."""
+    given = np.asarray(value, np.float64)
+    finite = np.isfinite(given)
     with np.errstate(over="ignore"):
-        scaled = np.ldexp(np.asarray(value, np.float64), places)
-    held = np.clip(np.rint(np.where(np.isfinite(scaled), scaled, 0.0)), -LARGEST_COUNT, LARGEST_COUNT)
-    return np.where(np.isfinite(scaled), held, NO_NUMBER).astype(np.int32)
+        scaled = np.ldexp(np.where(finite, given, 0.0), places)
+    held = np.clip(np.rint(scaled), -LARGEST_COUNT, LARGEST_COUNT)
+    return np.where(finite, held, NO_NUMBER).astype(np.int32)
 
 
 def to_physical(raw: Any, places: int) -> Array:
     """Raw values as physical ones, exactly."""
     return np.ldexp(np.asarray(raw, np.float64), -places)
+
+
+def physical(made: StepLaw, kind: RefKind, name: str, value: Any) -> Array:
+    """A value of an input, parameter, state or output (also `held_NAME`) as a physical number; NaN for NO_NUMBER. What has
+    no places stays as it is."""
+    places = places_of(made, kind, name)
+    if places is None:
+        return np.asarray(value)
+    return np.where(np.asarray(value) == NO_NUMBER, np.nan, to_physical(value, places))
+
+
+def places_of(made: StepLaw, kind: RefKind, name: str) -> int | None:
+    """The binary places of a member of a struct, in fixed point; None for what has none."""
+    found = made.places.get((kind, name))
+    if found is None and kind is RefKind.STATE:
+        found = next((made.places.get((RefKind.INPUT, u.name)) for u in made.inputs if name == f"held_{u.name}"), None)
+    return found
 
 
 class Machine:
@@ -158,7 +174,7 @@ class Machine:
 
     def _physical(self, name: str, value: Any, type_: Type, raw: bool) -> Any:
         places = self.step_law.places.get((RefKind.OUTPUT, name))
-        return self._shown(value, type_) if raw or places is None else float(to_physical(value, places))
+        return self._shown(value, type_) if raw or places is None else to_physical(value, places).tolist()
 
     def run(self, inputs: Mapping[str, Any], *, raw: bool = False) -> dict[str, Array]:
         """Many steps: arrays of shape (steps,) go on from the state; arrays of shape (steps, lanes) start every lane at the

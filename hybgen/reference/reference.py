@@ -11,6 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from hybgen.expr.core import Kind, Node, Ref, RefKind
+from hybgen.kernels.integers import NO_NUMBER
 from hybgen.law.model import Law
 from hybgen.reference.machine import Fields, Machine
 from hybgen.reference.plan import Plan, Planner, atoms
@@ -198,7 +199,8 @@ class Reference(Machine):
                 seen = np.where(each, raw, substitute)
             case _:
                 inside = np.where(raw < low, low, np.where(raw > high, high, raw))
-                seen = inside if held is None else np.where(np.isfinite(raw), inside, held)
+                number = raw != NO_NUMBER if u.scaled else np.isfinite(raw)
+                seen = inside if held is None else np.where(number, inside, held)
         self.snapshot[u.name] = seen
         self.snapshot[f"valid {u.name}"] = whole
         np.bitwise_or(status, np.uint32(Status.INVALID_INPUT), out=status, where=~whole)

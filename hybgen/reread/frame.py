@@ -11,7 +11,7 @@ from fractions import Fraction
 
 from hybgen.expr.core import INT, REAL, Kind, Node, Op, Ref, RefKind, Type, integer, op, real
 from hybgen.numbers.format import LARGEST_COUNT, Format
-from hybgen.reread import kernels, tables
+from hybgen.reread import conversions, kernels, tables
 from hybgen.reread.execute import Executor, NotUnderstood, State
 from hybgen.reread.interned import Judge
 from hybgen.reread.source import Source, body_of, numbers, same
@@ -36,6 +36,7 @@ def wrong(made: StepLaw, source: Source, executor: Executor, judge: Judge) -> It
     yield from tables.wrong(made, source)
     yield from _helpers(made, source, executor, judge)
     yield from kernels.wrong(name, made.format.name, source)
+    yield from conversions.wrong(made, source)
     if not same(source.functions[f"{name}_jump_name"].body, body_of(_names_text(made, source), name)):
         yield f"{name}_jump_name"
     if not same(source.functions[f"{name}_step"].body, body_of(_step_text(made, source), name)):

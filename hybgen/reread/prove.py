@@ -27,6 +27,7 @@ from hybgen.expr.core import (
     refs,
     truth,
 )
+from hybgen.kernels.integers import MOST
 from hybgen.reread import frame, tables
 from hybgen.reread.execute import Executor, NotUnderstood, Place, State
 from hybgen.reread.interned import Interner, Judge, Undecided
@@ -214,8 +215,10 @@ class _Prover:
         for i, r, pair in zip(indexes, raw, good, strict=True):
             fine = op("and", *pair) if u.invalid == "clamp" else whole
             held = Ref(RefKind.STATE, f"held_{u.name}", u.type, i)
-            if u.invalid == "clamp" and u.type == INT:
-                other: Node = op("iclamp", r, low, high)
+            if u.invalid == "clamp" and u.scaled:
+                other: Node = op("select", op("ge", r, integer(-MOST)), op("iclamp", r, low, high), held)
+            elif u.invalid == "clamp" and u.type == INT:
+                other = op("iclamp", r, low, high)
             elif u.invalid == "clamp":
                 other = op("select", op("finite", r), op("clamp", r, low, high), held)
             else:

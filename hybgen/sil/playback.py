@@ -10,10 +10,10 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from hybgen.expr.core import RefKind, refs
+from hybgen.expr.core import Ref, RefKind, refs
 from hybgen.law.model import Law
 from hybgen.reference import Reference
-from hybgen.reference.machine import Machine
+from hybgen.reference.machine import Machine, physical
 from hybgen.sil.chip import Chip
 from hybgen.sil.lockstep import Difference, SilReport, _difference, compared
 from hybgen.sil.replay import Log
@@ -133,10 +133,14 @@ def _values(reference: Reference, before: dict[str, Any], jump: StepJump) -> dic
                 todo.append(definitions[ref.name])
             elif ref.kind is RefKind.STATE:
                 found[ref.name] = before[ref.name]
-            elif ref.kind is RefKind.PARAMETER:
-                found[ref.name] = reference.parameters[ref.name][0].tolist()
-            elif ref.kind is RefKind.INPUT:
-                found[ref.name] = np.asarray(reference.snapshot[ref.name])[0].tolist()
+            elif ref.kind in (RefKind.PARAMETER, RefKind.INPUT):
+                found[ref.name] = _shown(reference, ref)
             elif ref.kind is RefKind.VALID:
                 found[f"valid({ref.name})"] = bool(reference.snapshot[f"valid {ref.name}"][0])
     return found
+
+
+def _shown(reference: Reference, ref: Ref) -> Any:
+    """The value of an input or parameter (first lane), as a physical number."""
+    values = reference.parameters if ref.kind is RefKind.PARAMETER else reference.snapshot
+    return physical(reference.step_law, ref.kind, ref.name, np.asarray(values[ref.name])[0]).tolist()

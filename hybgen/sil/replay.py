@@ -22,9 +22,9 @@ from hybgen.diag.span import Span
 from hybgen.diag.suggest import nearest
 from hybgen.expr import units
 from hybgen.expr.constant import factor
-from hybgen.expr.core import Kind, Type
+from hybgen.expr.core import REAL, Kind, RefKind, Type
 from hybgen.expr.units import ONE, SECOND, Unit
-from hybgen.reference.machine import Fields, dtype_of
+from hybgen.reference.machine import Fields, dtype_of, physical, places_of, to_raw
 from hybgen.step.model import StepLaw
 
 Array = NDArray[Any]
@@ -44,7 +44,10 @@ class Log:
 def recording(
     made: StepLaw, inputs: Fields, steps: int, parameters: Mapping[str, Any], start: Mapping[str, Any]
 ) -> str:
-    """A log of one lane as CSV text; numbers are written so that reading gives the same bits."""
+    """A log of one lane as CSV text; numbers are written so that reading gives the same bits. Raw values become physical."""
+    inputs = {n: physical(made, RefKind.INPUT, n, a) for n, a in inputs.items()}
+    parameters = {n: physical(made, RefKind.PARAMETER, n, v) for n, v in parameters.items()}
+    start = {n: physical(made, RefKind.STATE, n, v) for n, v in start.items()}
     columns: list[tuple[str, list[Any]]] = []
     for name, array in inputs.items():
         parts = [array] if array.ndim == 1 else [array[:, i] for i in range(array.shape[1])]
@@ -148,11 +151,20 @@ def known_real() -> Type:
 
 def _known(made: StepLaw, start: bool) -> dict[str, tuple[str, Type, Unit, int | None]]:
     if start:
-        rows = {x.name: ("start", x.type, ONE, x.size) for x in made.states}
-        rows |= {f"held_{u.name}": ("start", u.type, ONE, u.size) for u in made.inputs if u.held}
+        members = [*((x.name, x.type, x.size) for x in made.states)]
+        members += [(f"held_{u.name}", u.type, u.size) for u in made.inputs if u.held]
+        rows = {n: ("start", _physical_type(made, RefKind.STATE, n, t), ONE, size) for n, t, size in members}
         return rows | {n: ("start", Type(Kind.INT), ONE, None) for n in ("last_jump", "jumps")}
-    inputs = {u.name: ("input", u.type, made.law.input(u.name).unit, u.size) for u in made.inputs}
+    inputs = {
+        u.name: ("input", _physical_type(made, RefKind.INPUT, u.name, u.type), made.law.input(u.name).unit, u.size)
+        for u in made.inputs
+    }
     return inputs | {p.name: ("parameter", p.type, made.law.parameter(p.name).unit, p.size) for p in made.parameters}
+
+
+def _physical_type(made: StepLaw, kind: RefKind, name: str, type_: Type) -> Type:
+    """Logs hold physical numbers, whatever the number format."""
+    return type_ if places_of(made, kind, name) is None else REAL
 
 
 def _factor(rest: str, unit: Unit, where: Span, findings: Findings) -> Fraction:
@@ -241,10 +253,18 @@ def _gathered(values: Array, columns: list[_Column | None], made: StepLaw, file:
         if c.kind == "input":
             target = inputs[c.name] if c.index is None else inputs[c.name][:, c.index]
             with np.errstate(over="ignore", invalid="ignore"):
-                target[...] = column
+                target[...] = _raw(made, RefKind.INPUT, c.name, column)
         elif c.kind == "parameter":
             key = c.name if c.index is None else f"{c.name}[{c.index}]"
-            parameters[key] = np.asarray(column, dtype_of(c.type, made.format))
+            parameters[key] = np.asarray(_raw(made, RefKind.PARAMETER, c.name, column), dtype_of(c.type, made.format))
         elif c.kind == "start" and not np.isnan(values[0, i]):
-            start[c.name if c.index is None else f"{c.name}[{c.index}]"] = float(values[0, i])
+            start[c.name if c.index is None else f"{c.name}[{c.index}]"] = float(
+                _raw(made, RefKind.STATE, c.name, values[0, i])
+            )
     return Log(len(rows), inputs, parameters, start)
+
+
+def _raw(made: StepLaw, kind: RefKind, name: str, values: Array) -> Array:
+    """What the struct's member holds for physical numbers."""
+    places = places_of(made, kind, name)
+    return values if places is None else to_raw(values, places)

@@ -6,7 +6,6 @@ parameters at and between their limits, and any state of the declared domain.
 
 from __future__ import annotations
 
-import math
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import Any
@@ -52,12 +51,24 @@ def _ends(made: StepLaw) -> dict[str, list[float]]:
 
 
 def _compared(one: Node, other: Node, ends: dict[str, list[float]], found: dict[Key, set[float]]) -> None:
+    if isinstance(one, Op) and one.op == "fixed_order":
+        _ordered(one.args, ends, found)
     if not isinstance(one, Ref) or one.type.kind in (Kind.BOOL, Kind.ENUM):
         return
     values = [float(other.value)] if isinstance(other, Const) else []
     if isinstance(other, Ref) and other.kind is RefKind.PARAMETER:
         values = ends.get(other.name, [])
     found.setdefault((one.kind, one.name), set()).update(values)
+
+
+def _ordered(args: tuple[Node, ...], ends: dict[str, list[float]], found: dict[Key, set[float]]) -> None:
+    """Raw values with different places: the ends of a parameter, as the other one has them."""
+    shifts = [int(a.value) for a in args[2:] if isinstance(a, Const)]
+    for i in (0, 1):
+        one, other = args[i], args[1 - i]
+        if isinstance(one, Ref) and isinstance(other, Ref) and other.kind is RefKind.PARAMETER:
+            values = {v * 2.0 ** (shifts[1 - i] - shifts[i]) for v in ends.get(other.name, [])}
+            found.setdefault((one.kind, one.name), set()).update(values)
 
 
 def around(values: list[float], dtype: np.dtype[Any]) -> Array:
@@ -249,8 +260,8 @@ class Stimulus:
         dtype = self.made.format.dtype
         state = self.made.law.state(x.name)
         low, high = float(state.low or 0), float(state.high or 0)
-        if (places := self.made.places.get((RefKind.STATE, x.name))) is not None:
-            low, high = math.ceil(math.ldexp(low, places)), math.floor(math.ldexp(high, places))
+        if dtype.kind == "i":
+            return self._raw(x, marks, lanes)
         near = around([*marks, low, high, 0.0], dtype)
         with np.errstate(over="ignore"):
             near = near[np.isfinite(near)]
@@ -258,3 +269,14 @@ class Stimulus:
             near = np.clip(near, ends[0], ends[1]) if state.limit else near
             spread = self.random.uniform(low, high, lanes).astype(dtype)
         return np.where(self.random.random(lanes) < 0.5, self.random.choice(near, lanes), spread)
+
+    def _raw(self, x: StepState, marks: list[float], lanes: int) -> Array:
+        """Fixed point: raw values of the range; of all 32 bits where the state is not limited."""
+        assert x.low is not None and x.high is not None
+        near = np.clip(around([*marks, float(x.low), float(x.high), 0.0], np.dtype(np.int32)), x.low, x.high)
+        spread = self.random.integers(x.low, x.high, lanes, endpoint=True)
+        small = spread >> self.random.integers(0, 31, lanes)
+        kind = self.random.integers(0, 4, lanes)
+        chosen = np.where(kind < 2, self.random.choice(near, lanes), np.where(kind == 2, spread, small))
+        found: Array = np.clip(chosen, x.low, x.high).astype(np.int32)
+        return found

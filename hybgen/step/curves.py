@@ -7,23 +7,23 @@ from dataclasses import replace
 from fractions import Fraction
 
 from hybgen.diag.span import Span
-from hybgen.expr.core import Node, Op, integer, op
+from hybgen.expr.core import Node, integer, op
 from hybgen.step.model import StepGrid, StepTable
-from hybgen.step.scaled import MOST, Scaled, added, constant, multiplied, raw, rescaled, room
+from hybgen.step.scaled import MOST, Refused, Scaled, added, multiplied, raw, rescaled, room
 
 Numbers = Sequence[Fraction]
 Define = Callable[[str, Scaled], Scaled]
 """Makes a definition of a value, so that it is computed once; the reference to it."""
 
+FINE = 2**20
+"""So many raw values between two points make the rounding of the points negligible."""
+LONGEST = 30
+"""Places of a slope: with them `fixed_line` stays below 2**63."""
+
 
 def curve(table: StepTable, x: Scaled, span: Span, define: Define) -> Scaled:
     """table(x)."""
     return _line(table.x, table.y, define(f"{table.name} at", _among(table.x, x, span)), span)
-
-
-def _among(points: Numbers, x: Scaled, span: Span) -> Scaled:
-    """x with places that the points have room for too."""
-    return _to(x, min(x.places, room(max(abs(p) for p in points))), span)
 
 
 def grid(table: StepGrid, x: Scaled, y: Scaled, span: Span, define: Define) -> Scaled:
@@ -39,64 +39,74 @@ def grid(table: StepGrid, x: Scaled, y: Scaled, span: Span, define: Define) -> S
         rise = added(rows[j + 1], rows[j], True, span)
         cells.append(added(rows[j], multiplied(share, rise, span), False, span))
     places = min(c.places for c in (*cells, rows[0], rows[-1]))
-    return _chosen(table.y, [_to(c, places, span) for c in cells], rows[0], rows[-1], y, places, span)
+    first, *inner, last = (rescaled(c, places, span) for c in (rows[0], *cells, rows[-1]))
+    return _chosen([raw(p, y.places) for p in table.y], inner, first, last, y, span)
 
 
-def _to(value: Scaled, places: int, span: Span) -> Scaled:
-    if value.places == places:
-        return value
-    return rescaled(value, places, span)
+def _among(points: Numbers, x: Scaled, span: Span) -> Scaled:
+    """x with places for which the points have room, and which tell them apart finely; x beyond the last point may be held."""
+    most = room(max(abs(p) for p in points))
+    if x.places > most:
+        return rescaled(x, most, span)
+    unit = Fraction(2) ** x.places
+    exact = all((p * unit).denominator == 1 for p in points)
+    gap = min(b - a for a, b in zip(points, points[1:], strict=False))
+    found = x if exact or gap * unit >= FINE else rescaled(x, most, span)
+    if gap * Fraction(2) ** found.places < 1:
+        raise Refused(f"two points of a table are closer than {2.0**-found.places:.3g}, the resolution of its argument")
+    return found
 
 
 def _line(xs: Numbers, ys: Numbers, x: Scaled, span: Span) -> Scaled:
     """Linear between the points, held beyond the ends."""
-    slopes = [(d - c) / (b - a) for a, b, c, d in zip(xs, xs[1:], ys, ys[1:], strict=False)]
-    steepest = max(abs(m) for m in slopes)
-    places = min(room(max(abs(v) for v in ys)), room(steepest) + x.places)
-    cells = [_segment(xs[i], (ys[i], ys[i + 1]), m, x, places, span) for i, m in enumerate(slopes)]
-    first, last = (constant(ys[i], span) for i in (0, -1))
-    return _chosen(
-        xs, cells, _to_constant(first, ys[0], places, span), _to_constant(last, ys[-1], places, span), x, places, span
-    )
+    points = [raw(p, x.places) for p in xs]
+    slopes = [(d - c) / (b - a) for a, b, c, d in zip(points, points[1:], ys, ys[1:], strict=False)]
+    places = min(room(max(abs(v) for v in ys)), room(max(abs(m) for m in slopes)))
+    cells = [_segment(points[i : i + 2], raw(ys[i], places), m, x, places, span) for i, m in enumerate(slopes)]
+    # the rounding of the points, and the error of x, along the steepest slope
+    aside = max(abs((d - c) / (b - a)) for a, b, c, d in zip(xs, xs[1:], ys, ys[1:], strict=False)) * (x.half + x.error)
+    cells = [replace(c, error=c.error + aside) for c in cells]
+    first, last = (_constant(y, places, span) for y in (ys[0], ys[-1]))
+    return _chosen(points, cells, first, last, x, span)
 
 
-def _to_constant(made: Scaled, value: Fraction, places: int, span: Span) -> Scaled:
+def _constant(value: Fraction, places: int, span: Span) -> Scaled:
     found = raw(value, places)
     return Scaled(integer(found, span), places, found, found, Fraction(2) ** -(places + 1))
 
 
-def _segment(start: Fraction, ys: Numbers, slope: Fraction, x: Scaled, places: int, span: Span) -> Scaled:
-    """y + slope * (x - start), rounded once; a unit beyond its ends for the rounding of the slope."""
-    fine = min(room(abs(slope)), 30 + places - x.places)
-    left = fine + x.places - places
-    numbers = (raw(ys[0], places), raw(slope, fine), raw(start, x.places), left, left)
-    first, second, third, *shifts = (integer(n, span) for n in numbers)
-    ends = sorted(raw(y, places) for y in ys)
-    node = op("fixed_line", first, second, x.node, third, *shifts, span=span)
-    found = Scaled(node, places, max(-MOST, ends[0] - 1), min(MOST, ends[1] + 1))
-    # rounding of the result and of y, of the slope along the run, of the start; the error of x along the slope
-    run = abs(ys[1] - ys[0]) / abs(slope) if slope else Fraction(0)
-    error = 2 * found.half + Fraction(2) ** -(fine + 1) * run + abs(slope) * (x.half + x.error)
-    return replace(found, error=error)
+def _segment(points: Sequence[int], start: int, slope: Fraction, x: Scaled, places: int, span: Span) -> Scaled:
+    """start + slope * (x - first point), rounded once; its interval is that of its two ends."""
+    per = slope * Fraction(2) ** places
+    left = min(LONGEST, max(0, room(abs(per))))
+    numbers = (start, raw(per, left))
+    shifts = [integer(left, span), integer(left, span)]
+    begin, steep, first = (integer(n, span) for n in (*numbers, points[0]))
+    last = round(start + Fraction(numbers[1] * (points[1] - points[0]), 2**left))
+    node = op("fixed_line", begin, steep, x.node, first, *shifts, span=span)
+    found = Scaled(node, places, max(-MOST, min(start, last)), min(MOST, max(start, last)))
+    # the rounding of the start and of the result, and that of the slope along the run
+    run = Fraction(points[1] - points[0], 2 ** (left + 1)) * Fraction(2) ** -places
+    return replace(found, error=2 * found.half + run)
 
 
 def _chosen(
-    xs: Numbers, cells: Sequence[Scaled], first: Scaled, last: Scaled, x: Scaled, places: int, span: Span
+    points: Sequence[int], cells: Sequence[Scaled], first: Scaled, last: Scaled, x: Scaled, span: Span
 ) -> Scaled:
-    """The cell in which x lies, found by halves; the first value up to the first point, the last one from the last."""
-    points = [integer(max(-MOST, min(MOST, raw(p, x.places))), span) for p in xs]
+    """The cell in which x lies, found by halves; the first value up to the first point, the last one from the last. All of
+    them have the same places."""
+    marks = [integer(p, span) for p in points]
 
     def between(low: int, high: int) -> Node:
         """x is known to be in the cells low … high - 1."""
         if high - low == 1:
             return cells[low].node
         middle = (low + high) // 2
-        return op("select", op("lt", x.node, points[middle]), between(low, middle), between(middle, high), span=span)
+        return op("select", op("lt", x.node, marks[middle]), between(low, middle), between(middle, high), span=span)
 
-    inner = op("select", op("ge", x.node, points[-1]), _to(last, places, span).node, between(0, len(cells)), span=span)
-    whole: Op = op("select", op("le", x.node, points[0]), _to(first, places, span).node, inner, span=span)
-    ends = [*first.ends, *last.ends, *(e for c in cells for e in c.ends)]
-    low, high = raw(min(ends), places), raw(max(ends), places)
+    inner = op("select", op("ge", x.node, marks[-1]), last.node, between(0, len(cells)), span=span)
+    whole = op("select", op("le", x.node, marks[0]), first.node, inner, span=span)
+    values = (first, last, *cells)
     # a point that rounding moves, or an error of x, may choose the neighbour: both lines meet at the point
-    error = 2 * max([c.error for c in cells] + [first.error, last.error])
-    return Scaled(whole, places, max(-MOST, low), min(MOST, high), error)
+    error = 2 * max(v.error for v in values)
+    return Scaled(whole, first.places, min(v.low for v in values), max(v.high for v in values), error)

@@ -7,22 +7,19 @@ from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass, field, replace
 from fractions import Fraction
 
-import numpy as np
-
-from hybgen.diag.finding import Findings
+from hybgen.diag.finding import Finding, Findings, Severity, Verdict
 from hybgen.diag.span import Span
 from hybgen.expr.core import FALSE, INT, REAL, TRUE, Const, Kind, Node, Op, Ref, RefKind, integer, op, truth, walk
 from hybgen.expr.fold import decide
-from hybgen.kernels.errors import RELATIVE
 from hybgen.kernels.word import ELEMENTARY
 from hybgen.numbers.bounds import Bounds, Range
-from hybgen.numbers.enclosures import ELEMENTARY as FUNCTIONS
-from hybgen.numbers.enclosures import Enclosure
 from hybgen.numbers.rounding import turned
 from hybgen.step.curves import curve, grid
+from hybgen.step.functions import elementary, picked
 from hybgen.step.model import (
     ConditionBound,
     Definition,
+    StepJump,
     StepLaw,
     StepTable,
 )
@@ -31,10 +28,9 @@ from hybgen.step.scaled import (
     Refused,
     Scaled,
     added,
-    common,
+    chosen,
     constant,
     divided,
-    fitted,
     multiplied,
     ordered,
     rescaled,
@@ -56,8 +52,12 @@ class Elaborator:
     leaves: Mapping[Key, Leaf]
     locals: dict[str, Scaled]
     known: dict[Node, Scaled] = field(default_factory=dict)
+    jump: StepJump | None = None
+    """The jump whose condition is made."""
     asking: str = ""
-    """The jump whose condition is made: its comparisons are moved outward."""
+    """The same, where its comparisons are moved outward."""
+    refused: bool = False
+    """Was there an operation that is not possible? Then a value may be only a stand-in."""
     records: list[ConditionBound] = field(default_factory=list)
     more: list[Definition] = field(default_factory=list)
     """Every definition, those of the elaboration too, each before its use."""
@@ -126,16 +126,18 @@ class Elaborator:
                     todo.append(bodies[here.name])
                 found = turned(here)
                 if found is not None and (self.real(found[0]).error > 0 or here.op != "wrap"):  # type: ignore[union-attr]
-                    angle = _chosen("abs", [self.real(here)], here.span)
+                    angle = picked("abs", [self.real(here)], here.span)
                     slack = self.real(found[0]).error + 16 * angle.half
                     yield self.against("le", angle, found[1] - slack, here.span)
 
     def against(self, name: str, x: Scaled, value: Fraction, span: Span) -> Node:
         exact = value * Fraction(2) ** x.places
+        edge = safe = math.ceil(exact) if name in ("ge", "lt") else math.floor(exact)
         if self.made.law.thresholds == "nearest":
             edge = round(exact)
-        else:
-            edge = math.ceil(exact) if name in ("ge", "lt") else math.floor(exact)
+            if edge != safe and self.jump is not None and not self.refused:
+                unit = Fraction(2) ** -x.places
+                self.findings.add(_nearest(self.jump, edge * unit, safe * unit))
         if abs(edge) > MOST:
             return truth((edge > 0) is (name in ("lt", "le")), span)
         return op(name, x.node, integer(edge, span), span=span)
@@ -145,6 +147,7 @@ class Elaborator:
         try:
             return make()
         except Refused as refused:
+            self.refused = True
             self.findings.error("HG422", node.span, f"fixed32: {refused}", hint="limit it first, such as max(x, 0.01)")
             return None
 
@@ -155,25 +158,13 @@ class Elaborator:
             try:
                 found = self.computed(node)
             except Refused as refused:
+                self.refused = True
                 self.findings.error(
                     "HG422", node.span, f"fixed32: {refused}", hint="limit it first, such as max(x, 0.01)"
                 )
                 found = Scaled(integer(0), 0, 0, 0)
             self.known[node] = found
         return found
-
-    def held(self, node: Node, places: int) -> Scaled:
-        """An expression that is stored with these places, where too large a result is held anyway: a sum or product keeps them."""
-        if isinstance(node, Op) and node.op in ("add", "sub", "mul"):
-            self.real(node)  # reports what is refused
-            try:
-                a, b = (self.real(x) for x in node.args)
-                if node.op == "mul":
-                    return multiplied(a, b, node.span, places)
-                return added(a, b, node.op == "sub", node.span, places)
-            except Refused:
-                pass
-        return self.real(node)
 
     def computed(self, node: Node) -> Scaled:
         match node:
@@ -191,13 +182,8 @@ class Elaborator:
         span = node.span
         match node.op:
             case "select":
-                yes, no = common([self.real(a) for a in node.args[1:]], span)
-                made = op("select", self.plain(node.args[0]), yes.node, no.node, span=span)
-                found = Scaled(made, yes.places, min(yes.low, no.low), max(yes.high, no.high))
-                error = max(yes.error, no.error)
-                if self.doubtful(node.args[0]):
-                    error += found.ends[1] - found.ends[0]
-                return replace(found, error=error)
+                yes, no = (self.real(a) for a in node.args[1:])
+                return chosen(self.plain(node.args[0]), yes, no, self.doubtful(node.args[0]), span)
             case "to_real":
                 known: Range = self.bounds.of(node.args[0])
                 low, high = max(-MOST, math.floor(known.low)), min(MOST, math.ceil(known.high))
@@ -206,7 +192,7 @@ class Elaborator:
         match node.op:
             case "add" | "sub":
                 total = added(args[0], args[1], node.op == "sub", span)
-                return replace(total, error=args[0].error + 8 * total.half) if turned(node) else total
+                return replace(total, error=args[0].error + 8 * total.half, maker=None) if turned(node) else total
             case "mul":
                 return multiplied(args[0], args[1], span)
             case "div":
@@ -222,8 +208,8 @@ class Elaborator:
                     return curve(table, args[0], span, self.defined(span))
                 return grid(table, args[0], args[1], span, self.defined(span))
         if node.op in ELEMENTARY:
-            return _elementary(node.op, args, span)
-        return _chosen(node.op, args, span)
+            return elementary(node.op, args, span)
+        return picked(node.op, args, span)
 
     def defined(self, span: Span) -> Callable[[str, Scaled], Scaled]:
         """Makes definitions; their names have blanks, so no name of the author is the same."""
@@ -233,7 +219,7 @@ class Elaborator:
                 return value
             unique = f"{name} number {len(self.more) + 1}"
             self.more.append(Definition(unique, value.node, span, name))
-            return replace(value, node=Ref(RefKind.LOCAL, unique, INT, None, span))
+            return value.named(Ref(RefKind.LOCAL, unique, INT, None, span))
 
         return define
 
@@ -265,85 +251,11 @@ class Elaborator:
         )
 
 
-def _chosen(name: str, args: list[Scaled], span: Span) -> Scaled:
-    """neg, abs, min, max, clamp: no rounding, but to common places."""
-    args = common(args, span)
-    low, high = args[0].low, args[0].high
-    match name:
-        case "neg":
-            low, high = -high, -low
-        case "abs":
-            low, high = max(low, -high, 0), max(-low, high)
-        case "min":
-            low, high = min(low, args[1].low), min(high, args[1].high)
-        case "max":
-            low, high = max(low, args[1].low), max(high, args[1].high)
-        case "clamp":
-            least, most = args[1:]
-            low, high = (
-                max(min(least.low, most.low), min(low, most.low)),
-                min(max(least.high, most.high), max(high, least.high)),
-            )
-    error = max(a.error for a in args)
-    return Scaled(op(f"i{name}", *(a.node for a in args), span=span), args[0].places, low, high, error)
-
-
-_SLACK = Fraction(1, 10**6)
-
-
-def _elementary(name: str, args: list[Scaled], span: Span) -> Scaled:
-    """An elementary function, on an interval inside its domain."""
-    low, high = _image(name, [(float(a.ends[0]), float(a.ends[1])) for a in args])
-    wide = [Fraction(low) - _SLACK * (1 + abs(Fraction(low))), Fraction(high) + _SLACK * (1 + abs(Fraction(high)))]
-    most = {"sin": 30, "cos": 30, "tanh": 30, "asin": 30, "acos": 29, "atan2": 29, "wrap": 29}.get(name, 62)
-
-    def make(places: int) -> Node:
-        shifts = [*(a.places for a in args), places]
-        return op(f"fixed_{name}", *(a.node for a in args), *map(integer, shifts), span=span)
-
-    error = _propagated(name, args) + Fraction(RELATIVE[name]) * max(map(abs, wide))
-    return fitted(wide[0], wide[1], most, make, error)
-
-
-def _propagated(name: str, args: list[Scaled]) -> Fraction:
-    """What the errors of the arguments make of the result. Raises Refused where there is no bound."""
-    if not any(a.error for a in args):
-        return Fraction(0)
-    boxes = [Enclosure(*(np.array([float(v)]) for v in (*a.ends, a.error * (1 + Fraction(1, 2**40))))) for a in args]
-    with np.errstate(all="ignore"):
-        error = float(FUNCTIONS[name](*boxes)[2][0])
-    if not math.isfinite(error):
-        raise Refused(f"the argument of {name}() is as near to an end of its domain as its own rounding error")
-    return Fraction(error) * (1 + Fraction(1, 2**40))
-
-
-def _image(name: str, ends: list[tuple[float, float]]) -> tuple[float, float]:
-    """The interval of an elementary function's results."""
-    low, high = ends[0]
-    match name:
-        case "sqrt":
-            if low < 0:
-                raise Refused(f"sqrt() of a number that can be {low:.6g}")
-            return math.sqrt(low), math.sqrt(high)
-        case "log":
-            if low <= 0:
-                raise Refused(f"log() of a number that can be {low:.6g}")
-            return math.log(low), math.log(high)
-        case "exp":
-            if high > 40:
-                raise Refused(f"exp() of a number that can be {high:.6g}")
-            return math.exp(max(low, -700.0)), math.exp(high)
-        case "asin" | "acos":
-            if low < -1 or high > 1:
-                raise Refused(f"{name}() of a number between {low:.6g} and {high:.6g}")
-            return (-1.5707964, 1.5707964) if name == "asin" else (0.0, 3.1415927)
-        case "tan":
-            if low <= -1.57 or high >= 1.57:
-                raise Refused(f"tan() of an angle between {low:.6g} and {high:.6g}: pi/2 may be among them")
-            return math.tan(low), math.tan(high)
-        case "hypot":
-            return 0.0, math.hypot(*(max(-a, b) for a, b in ends))
-        case "atan2" | "wrap":
-            return -3.1415927, 3.1415927
-        case _:
-            return -1.0, 1.0
+def _nearest(jump: StepJump, least: Fraction, most: Fraction) -> Finding:
+    """What `thresholds: nearest` costs: a constant that rounding moves to the side where the law does not jump."""
+    message = (
+        f"'{jump.name}' compares with {float(least):.10g} in C, where the law needs {float(most):.10g}: "
+        "rounding can cause a jump"
+    )
+    hint = "leave out thresholds: nearest"
+    return Finding("HG411", "rounding", Verdict.REFUTED, Severity.NOTE, jump.span, jump.name, message, hint=hint)

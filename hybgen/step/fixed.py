@@ -13,7 +13,7 @@ from fractions import Fraction
 
 from hybgen.diag.finding import Findings
 from hybgen.diag.span import Span
-from hybgen.expr.core import INT, REAL, Const, Node, Op, Ref, RefKind, integer, op
+from hybgen.expr.core import INT, REAL, Const, Node, Ref, RefKind, integer
 from hybgen.law.model import Law, Value
 from hybgen.numbers.bounds import Bounds
 from hybgen.step.elaborate import Elaborator, Key, Leaf
@@ -31,7 +31,6 @@ from hybgen.step.model import (
 from hybgen.step.scaled import (
     MOST,
     Refused,
-    Scaled,
     raw,
     rescaled,
     room,
@@ -39,7 +38,7 @@ from hybgen.step.scaled import (
 
 
 def in_fixed_point(made: StepLaw, bounds: Bounds, findings: Findings) -> StepLaw:
-    """The step law on raw integers; findings where a range is missing, nothing fits, or an operation is not defined everywhere."""
+    """The step law on raw integers; findings where nothing fits, or an operation is not defined everywhere."""
     leaves = _leaves(made, findings)
     findings.stop()
     return _Fixed(made, leaves, Elaborator(made, bounds, findings, leaves, {})).built()
@@ -51,12 +50,12 @@ def _leaves(made: StepLaw, findings: Findings) -> dict[Key, Leaf]:
     for u in made.inputs:
         if u.type == REAL:
             held = [Fraction(u.initial), Fraction(u.substitute)]
-            found[(RefKind.INPUT, u.name)] = _between(Fraction(u.low), Fraction(u.high), u.name, u.span, findings, held)
+            found[(RefKind.INPUT, u.name)] = _between(Fraction(u.low), Fraction(u.high), u, findings, held)
     for p in made.parameters:
         if p.type == REAL:
             ends = (min(map(Fraction, p.default)), max(map(Fraction, p.default)))
             low, high = (Fraction(e if v is None else v) for v, e in zip((p.low, p.high), ends, strict=True))
-            found[(RefKind.PARAMETER, p.name)] = _between(low, high, p.name, p.span, findings, [])
+            found[(RefKind.PARAMETER, p.name)] = _between(low, high, p, findings, [])
     for x in made.states:
         if x.type == REAL:
             found[(RefKind.STATE, x.name)] = _state(x, made.law, findings)
@@ -68,22 +67,34 @@ def _state(x: StepState, law: Law, findings: Findings) -> tuple[int, int, int]:
     declared = law.state(x.name)
     assert declared.low is not None and declared.high is not None, "every real state has a range"
     if declared.limit:
-        return _between(declared.low, declared.high, x.name, x.span, findings, [])
-    places, _, _ = _between(2 * declared.low, 2 * declared.high, x.name, x.span, findings, [])
+        return _between(declared.low, declared.high, x, findings, [])
+    places, _, _ = _between(2 * declared.low, 2 * declared.high, x, findings, [])
     return places, -MOST, MOST
 
 
 def _between(
-    low: Fraction, high: Fraction, name: str, span: Span, findings: Findings, others: list[Fraction]
+    low: Fraction,
+    high: Fraction,
+    row: StepInput | StepParameter | StepState,
+    findings: Findings,
+    others: list[Fraction],
 ) -> tuple[int, int, int]:
-    """Ends are rounded inward, other values to the nearest."""
+    """Ends are rounded inward, other values to the nearest. No end of what comes from outside (`sampled`) is ± MOST, where
+    larger values are held: those have to be out of range."""
+    sampled = not isinstance(row, StepState)
     try:
         places = room(max(abs(v) for v in (low, high, *others)))
+        if sampled and max(abs(v) for v in (low, high)) * Fraction(2) ** places > MOST - 1:
+            places -= 1
     except Refused as refused:
-        findings.error("HG421", span, f"'{name}' does not fit fixed32: {refused}", hint="use another unit")
+        findings.error("HG421", row.span, f"'{row.name}' does not fit fixed32: {refused}", hint="use another unit")
         return 0, 0, 0
     unit = Fraction(2) ** places
-    raws = [math.ceil(low * unit), math.floor(high * unit), *(raw(v, places) for v in others)]
+    first, last = math.ceil(low * unit), math.floor(high * unit)
+    if first > last:
+        findings.error("HG421", row.span, f"'{row.name}' does not fit fixed32: no raw value lies in its range")
+        return 0, 0, 0
+    raws = [first, last, *(raw(v, places) for v in others)]
     return places, min(raws), max(raws)
 
 
@@ -99,7 +110,7 @@ class _Fixed:
         made = self.made
         for d in made.definitions:
             self.expressions.more.append(self.definition(d))
-        outputs = tuple(self.output(o) for o in made.outputs)
+        places = self.output_places()
         fixed = replace(
             made,
             inputs=tuple(self.input(u) for u in made.inputs),
@@ -109,14 +120,14 @@ class _Fixed:
             alarms=(),
             jumps=tuple(self.jump(j) for j in made.jumps),
             flow_condition=None if made.flow_condition is None else self.expressions.condition(made.flow_condition),
-            outputs=tuple(o for o, _ in outputs),
+            outputs=tuple(self.output(o, places.get(o.name)) for o in made.outputs),
             flow=tuple(self.assign(a) for a in made.flow),
             sample=tuple(self.assign(a) for a in made.sample),
             law=replace(
                 made.law, outputs=tuple(replace(o, type=INT if o.type == REAL else o.type) for o in made.law.outputs)
             ),
             places={k: v[0] for k, v in self.leaves.items()}
-            | {(RefKind.OUTPUT, o.name): places for o, places in outputs if places is not None},
+            | {(RefKind.OUTPUT, name): p for name, p in places.items()},
         )
         self.expressions.findings.stop()
         return replace(
@@ -135,7 +146,7 @@ class _Fixed:
         unit = Fraction(2) ** places
         low, high = math.ceil(Fraction(u.low) * unit), math.floor(Fraction(u.high) * unit)
         given, initial = (raw(Fraction(v), places) for v in (u.substitute, u.initial))
-        return replace(u, type=INT, low=low, high=high, substitute=given, initial=initial)
+        return replace(u, type=INT, scaled=True, low=low, high=high, substitute=given, initial=initial)
 
     def parameter(self, p: StepParameter) -> StepParameter:
         if p.type != REAL:
@@ -148,59 +159,67 @@ class _Fixed:
         if x.type != REAL:
             return x
         places, low, high = self.leaves[(RefKind.STATE, x.name)]
-        return replace(x, type=INT, initial=tuple(max(low, min(high, raw(Fraction(v), places))) for v in x.initial))
+        initial = tuple(max(low, min(high, raw(Fraction(v), places))) for v in x.initial)
+        return replace(x, type=INT, initial=initial, low=low, high=high)
 
     def definition(self, d: Definition) -> Definition:
         if d.expr.type == REAL:
             value = self.expressions.real(d.expr)
             named = Ref(RefKind.LOCAL, d.name, INT, None, d.span)
-            self.expressions.locals[d.name] = replace(value, node=named)
+            self.expressions.locals[d.name] = value.named(named)
             return replace(d, expr=value.node)
         return replace(d, expr=self.expressions.other(d.expr))
 
     def jump(self, j: StepJump) -> StepJump:
+        self.expressions.jump = j
         if self.made.law.thresholds == "safe":
             self.expressions.asking = j.name
         condition = self.expressions.condition(j.condition)
-        self.expressions.asking = ""
+        self.expressions.jump, self.expressions.asking = None, ""
         return replace(j, condition=condition, assigns=tuple(self.assign(a) for a in j.assigns))
 
     def assign(self, a: StepAssign) -> StepAssign:
         if a.expr.type != REAL:
             return replace(a, expr=self.expressions.other(a.expr))
         places, low, high = self.leaves[(RefKind.STATE, a.state)]
-        ends = (low, high)
-        expr = self.stored(self.expressions.held(a.expr, places), places, ends, a.span)
-        inside = self.made.law.state(a.state).limit and a.clamp is not None
-        return replace(a, expr=expr, guarded=False, clamp=(low, high) if inside else None)
+        ends = (low, high) if self.made.law.state(a.state).limit else None
+        expr, clamp = self.stored(a.expr, places, ends, a.span)
+        return replace(a, expr=expr, guarded=False, clamp=clamp)
 
-    def stored(self, value: Scaled, places: int, ends: tuple[int, int], span: Span) -> Node:
-        """A choice is rounded branch by branch: a branch that is the state itself stays as it is; constants are inside the ends."""
-        node = value.node
-        if isinstance(node, Op) and node.op == "select":
-            asked, yes, no = node.args
-            parts = [self.stored(replace(value, node=n), places, ends, span) for n in (yes, no)]
-            return op("select", asked, *parts, span=span)
-        if isinstance(node, Op) and node.op == "fixed_scale" and isinstance(node.args[1], Const):
-            back = node.args[0]
-            if value.places - int(node.args[1].value) == places and int(node.args[1].value) >= 0:
-                return back
-        node = rescaled(value, places, span).node
-        if isinstance(node, Const):
-            return integer(min(max(int(node.value), ends[0]), ends[1]), span)
-        return node
+    def stored(
+        self, node: Node, places: int, ends: tuple[int, int] | None, span: Span
+    ) -> tuple[Node, tuple[Value, Value] | None]:
+        """A real expression with the places of what it is stored in; the ends in which it has to be held, None where it
+        is inside them anyway."""
+        value = rescaled(self.expressions.real(node), places, span)
+        if ends is None or (ends[0] <= value.low and value.high <= ends[1]):
+            return value.node, None
+        if isinstance(value.node, Const):
+            return integer(min(max(int(value.node.value), ends[0]), ends[1]), span), None
+        return value.node, ends
 
-    def output(self, o: StepOutput) -> tuple[StepOutput, int | None]:
-        if o.expr.type != REAL:
-            return replace(o, expr=self.expressions.other(o.expr)), None
-        value = self.expressions.real(o.expr)
-        low, high = -MOST, MOST
-        clamp: tuple[Value, Value] | None = None
-        places = value.places
+    def output_places(self) -> dict[str, int]:
+        """Places of the real outputs: those of the range, and not more than any component leaves room for."""
+        found: dict[str, int] = {}
+        for o in self.made.outputs:
+            if o.expr.type == REAL:
+                value = self.expressions.real(o.expr)
+                declared = next(d for d in self.made.law.outputs if d.name == o.name)
+                places = value.places
+                if o.clamp is not None:
+                    places = room(max(abs(Fraction(e)) for e in o.clamp))
+                elif declared.low is not None and declared.high is not None:
+                    most = max(abs(v) for v in (*value.ends, declared.low, declared.high))
+                    places = room(most)
+                found[o.name] = min(places, found.get(o.name, places))
+        return found
+
+    def output(self, o: StepOutput, places: int | None) -> StepOutput:
+        if places is None:
+            return replace(o, expr=self.expressions.other(o.expr))
+        ends: tuple[int, int] | None = None
         if o.clamp is not None:
-            ends = [Fraction(c) for c in o.clamp]
-            places = room(max(abs(e) for e in ends))
-            low, high = math.ceil(ends[0] * Fraction(2) ** places), math.floor(ends[1] * Fraction(2) ** places)
-            clamp = (low, high)
-        node = self.stored(value, places, (low, high), o.span)
-        return replace(o, expr=node, guarded=False, fallback=0, clamp=clamp), places
+            low, high = (Fraction(c) * Fraction(2) ** places for c in o.clamp)
+            ends = math.ceil(low), math.floor(high)
+        expr, clamp = self.stored(o.expr, places, ends, o.span)
+        return replace(o, expr=expr, guarded=False, fallback=0, clamp=clamp)

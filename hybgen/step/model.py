@@ -64,13 +64,14 @@ class StepInput:
     initial: Value
     """What `hold` holds before the first good sample (each component)."""
     span: Span
+    scaled: bool = False
+    """A raw value of fixed point: NO_NUMBER stands for NaN and infinities."""
 
     @property
     def held(self) -> bool:
         """Does the instance have to remember the last good sample?"""
-        return (self.type.kind == "real" and self.invalid in ("hold", "clamp")) or (
-            self.type.kind == "int" and self.invalid == "hold"
-        )
+        real = self.type.kind == "real" or self.scaled
+        return (real and self.invalid in ("hold", "clamp")) or (self.type.kind == "int" and self.invalid == "hold")
 
 
 @dataclass(frozen=True, slots=True)
@@ -109,6 +110,9 @@ class StepState:
     initial: tuple[Value, ...]
     maximum: int | None
     span: Span
+    low: int | None = None
+    high: int | None = None
+    """Fixed point: the raw values that a real state can have; else None."""
 
 
 @dataclass(frozen=True, slots=True)

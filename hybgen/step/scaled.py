@@ -23,8 +23,17 @@ class Refused(Exception):
 
 
 @dataclass(frozen=True, slots=True)
+class Maker:
+    """The operation that a value comes from, for any number of places from `least` to `most` (held where there is no room)."""
+
+    least: int
+    most: int
+    at: Callable[[int], Scaled]
+
+
+@dataclass(frozen=True, slots=True)
 class Scaled:
-    """raw * 2**-places, low <= raw <= high."""
+    """raw * 2**-places, low <= raw <= high. With `maker` the value can still be had with other places, rounded once."""
 
     node: Node
     """int"""
@@ -33,6 +42,7 @@ class Scaled:
     high: int
     error: Fraction = Fraction(0)
     """How far the value is from the law's at most, where the law's is exact in real numbers."""
+    maker: Maker | None = None
 
     @property
     def half(self) -> Fraction:
@@ -49,6 +59,10 @@ class Scaled:
         """The interval of the value."""
         unit = Fraction(2) ** -self.places
         return self.low * unit, self.high * unit
+
+    def named(self, node: Node) -> Scaled:
+        """The same value, read by its name."""
+        return replace(self, node=node, maker=None)
 
 
 def room(largest: Fraction) -> int:
@@ -68,25 +82,30 @@ def raw(value: Fraction, places: int) -> int:
     return round(value * Fraction(2) ** places)
 
 
+def held(value: Fraction, places: int) -> int:
+    """The nearest raw value that there is."""
+    return max(-MOST, min(MOST, raw(value, places)))
+
+
 def fitted(
     low: Fraction,
     high: Fraction,
-    most: int,
+    ends: tuple[int, int],
     make: Callable[[int], Node],
     error: Fraction,
     exact: int | None = None,
-    kept: int = COARSEST,
 ) -> Scaled:
-    """A result in [low, high], with at most `most` places; `make` gives its node for the places chosen.
+    """A result in [low, high], with as many places as there is room for; `make` gives its node for places inside `ends`.
 
-    `error` is that of the operands; with `exact` places or more the operation itself does not round. `kept`: places that
-    are wanted although the result may then be held at the ends (it is stored into a state that is held there anyway).
+    `error` is that of the operands; with `exact` places or more the operation itself does not round.
     """
-    places = min(most, max(kept, room(max(abs(low), abs(high)))))
-    lowest, highest = (max(-MOST, min(MOST, raw(e, places))) for e in (low, high))
-    found = Scaled(make(places), places, lowest, highest)
-    rounds = exact is None or places < exact
-    return replace(found, error=error + (found.half if rounds else 0))
+
+    def at(places: int) -> Scaled:
+        found = Scaled(make(places), places, held(low, places), held(high, places))
+        rounds = exact is None or places < exact
+        return replace(found, error=error + (found.half if rounds else 0))
+
+    return replace(at(min(ends[1], room(max(abs(low), abs(high))))), maker=Maker(*ends, at))
 
 
 def constant(value: Fraction, span: Span) -> Scaled:
@@ -96,15 +115,18 @@ def constant(value: Fraction, span: Span) -> Scaled:
     if value.denominator == 1 << exact:
         places = min(places, exact)
     found = raw(value, places)
-    off = abs(value - found * Fraction(2) ** -places)
-    return Scaled(integer(found, span), places, found, found, off)
+    return Scaled(integer(found, span), places, found, found, abs(value - found * Fraction(2) ** -places))
 
 
 def rescaled(x: Scaled, places: int, span: Span) -> Scaled:
-    """The same value with other places: rounded where there are fewer, held where there is no room."""
+    """The same value with other places: rounded once where there are fewer, held where there is no room."""
     if x.places == places:
         return x
-    low, high = (max(-MOST, min(MOST, raw(e, places))) for e in x.ends)
+    if x.maker is not None and places >= x.maker.least and (places < x.places or x.places < x.maker.most):
+        x = x.maker.at(min(places, x.maker.most))
+        if x.places == places:
+            return x
+    low, high = (held(e, places) for e in x.ends)
     left = max(-FINEST, min(31, places - x.places))
     node = integer(low, span) if isinstance(x.node, Const) else op("fixed_scale", x.node, integer(left), span=span)
     found = Scaled(node, places, low, high)
@@ -113,12 +135,17 @@ def rescaled(x: Scaled, places: int, span: Span) -> Scaled:
 
 def common(values: list[Scaled], span: Span) -> list[Scaled]:
     """The values with the same places: the most that there is room for."""
-    largest = max(abs(e) for v in values for e in v.ends)
-    places = min(max(v.places for v in values), room(largest))
+    places = shared(values)
     return [rescaled(v, places, span) for v in values]
 
 
-def added(a: Scaled, b: Scaled, minus: bool, span: Span, kept: int = COARSEST) -> Scaled:
+def shared(values: list[Scaled]) -> int:
+    """The most places that any of the values has and there is room for."""
+    largest = max(abs(e) for v in values for e in v.ends)
+    return min(max(v.places for v in values), room(largest))
+
+
+def added(a: Scaled, b: Scaled, minus: bool, span: Span) -> Scaled:
     """a + b or a - b, rounded once; an operand that is more than 2**31 times finer than the other is rounded first."""
     fine = min(a.places, b.places) + 31
     a, b = (rescaled(x, fine, span) if x.places > fine else x for x in (a, b))
@@ -126,16 +153,20 @@ def added(a: Scaled, b: Scaled, minus: bool, span: Span, kept: int = COARSEST) -
     (a_low, a_high), (b_low, b_high) = a.ends, b.ends
     low, high = (a_low - b_high, a_high - b_low) if minus else (a_low + b_low, a_high + b_high)
     top = max(a.places, b.places)
+    most = max(abs(low), abs(high))
 
     def make(places: int) -> Node:
-        inside = max(abs(low), abs(high)) * Fraction(2) ** places <= MOST
-        if a.places == b.places == places and inside:
+        if a.places == b.places == places <= room(most):
             return op("isub" if minus else "iadd", a.node, b.node, span=span)
-        other = op("ineg", b.node, span=span) if minus else b.node
+        other = _negative(b.node, span) if minus else b.node
         shifts = (top - a.places, top - b.places, top - places)
         return op("fixed_add", a.node, other, *map(integer, shifts), span=span)
 
-    return fitted(low, high, top, make, a.error + b.error, top, kept)
+    return fitted(low, high, (top - FINEST, top), make, a.error + b.error, top)
+
+
+def _negative(node: Node, span: Span) -> Node:
+    return integer(-int(node.value), span) if isinstance(node, Const) else op("ineg", node, span=span)
 
 
 def _joined(x: Scaled, other: Scaled, span: Span) -> Scaled:
@@ -144,8 +175,11 @@ def _joined(x: Scaled, other: Scaled, span: Span) -> Scaled:
     return rescaled(x, other.places, span) if isinstance(x.node, Const) and finer else x
 
 
-def multiplied(a: Scaled, b: Scaled, span: Span, kept: int = COARSEST) -> Scaled:
-    """a * b, rounded once."""
+def multiplied(a: Scaled, b: Scaled, span: Span) -> Scaled:
+    """a * b, rounded once; a power of two only moves the point."""
+    for x, factor in ((a, b), (b, a)):
+        if (moved := _moved(x, factor, 1)) is not None:
+            return moved
     ends = [x * y for x in a.ends for y in b.ends]
     if a.node == b.node:  # a square is nowhere below 0
         ends = [max(ends), Fraction(0) if a.low <= 0 <= a.high else min(e * e for e in a.ends)]
@@ -155,23 +189,59 @@ def multiplied(a: Scaled, b: Scaled, span: Span, kept: int = COARSEST) -> Scaled
         return op("fixed_mul", a.node, b.node, integer(min(FINEST, whole - places)), span=span)
 
     error = a.size * b.error + b.size * a.error + a.error * b.error
-    return fitted(min(ends), max(ends), whole, make, error, whole, kept)
+    return fitted(min(ends), max(ends), (whole - FINEST, whole), make, error, whole)
+
+
+def _moved(x: Scaled, factor: Scaled, sign: int) -> Scaled | None:
+    """x * factor**sign for a factor that is a power of two, without an operation; None for others."""
+    if not isinstance(factor.node, Const) or isinstance(x.node, Const) or factor.error:
+        return None
+    if factor.low < 1 or factor.low & (factor.low - 1):
+        return None
+    shift = sign * (factor.places - factor.low.bit_length() + 1)
+    if not COARSEST <= x.places + shift <= FINEST:
+        return None
+
+    def moved(value: Scaled) -> Scaled:
+        return replace(value, places=value.places + shift, error=value.error / Fraction(2) ** shift, maker=None)
+
+    if x.maker is None:
+        return moved(x)
+    inner = x.maker
+    maker = Maker(inner.least + shift, inner.most + shift, lambda places: moved(inner.at(places - shift)))
+    return replace(moved(x), maker=maker)
+
+
+def chosen(asked: Node, yes: Scaled, no: Scaled, doubtful: bool, span: Span) -> Scaled:
+    """yes where `asked` holds, else no; `doubtful`: rounding may choose the other one than the law does."""
+
+    def at(places: int) -> Scaled:
+        first, second = (rescaled(x, places, span) for x in (yes, no))
+        node = op("select", asked, first.node, second.node, span=span)
+        found = Scaled(node, places, min(first.low, second.low), max(first.high, second.high))
+        error = max(first.error, second.error)
+        return replace(found, error=error + (found.ends[1] - found.ends[0] if doubtful else 0))
+
+    return replace(at(shared([yes, no])), maker=Maker(COARSEST, FINEST, at))
 
 
 def divided(a: Scaled, b: Scaled, span: Span) -> Scaled:
     """a / b, rounded once; b is not 0."""
     if b.low <= 0 <= b.high:
         raise Refused(f"the divisor can be 0: it lies between {float(b.ends[0]):.6g} and {float(b.ends[1]):.6g}")
+    if (moved := _moved(a, b, -1)) is not None:
+        return moved
     ends = [x / y for x in a.ends for y in b.ends]
-
-    def make(places: int) -> Node:
-        return op("fixed_div", a.node, b.node, integer(max(-31, places - a.places + b.places)), span=span)
-
     least = min(abs(e) for e in b.ends) - b.error
     if least <= 0:
         raise Refused("the divisor is as small as its own rounding error")
     error = (a.error + max(abs(e) for e in ends) * b.error) / least
-    return fitted(min(ends), max(ends), a.places - b.places + 31, make, error)
+    middle = a.places - b.places
+
+    def make(places: int) -> Node:
+        return op("fixed_div", a.node, b.node, integer(max(-31, places - middle)), span=span)
+
+    return fitted(min(ends), max(ends), (middle - 31, middle + 31), make, error)
 
 
 def ordered(name: str, a: Scaled, b: Scaled, span: Span) -> Node:

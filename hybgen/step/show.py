@@ -37,7 +37,6 @@ def show(made: StepLaw) -> str:
 
 def _lines(made: StepLaw) -> Iterator[str]:
     yield f"step law {made.law.name}: {made.format.name}, step {float(made.step):.9g} s, method {made.method}"
-    yield from _scales(made)
     yield ""
     yield "snapshot"
     for u in made.inputs:
@@ -49,11 +48,8 @@ def _lines(made: StepLaw) -> Iterator[str]:
             yield f"  {u.name}{size}: good in [{_number(u.low, made)}, {_number(u.high, made)}], else {policy}"
     for i, rule in enumerate(made.rules):
         yield f"  rule {i + 1}: {rule.text}"
-    if made.definitions:
-        yield ""
-        yield "definitions"
-        for d in made.definitions:
-            yield f"  {d.name} = {expression(d.expr, made)}"
+    yield from _scales(made)
+    yield from _definitions(made)
     yield ""
     yield f"jumps: at most {made.jumps_per_step} in one step, first in order; prefer {made.law.prefer}"
     for jump in made.jumps:
@@ -76,13 +72,26 @@ def _lines(made: StepLaw) -> Iterator[str]:
             yield f"  {_assign(a, made)}"
 
 
+def _definitions(made: StepLaw) -> Iterator[str]:
+    if made.definitions:
+        yield ""
+        yield "definitions"
+        for d in made.definitions:
+            yield f"  {d.name} = {expression(d.expr, made)}"
+
+
 def _scales(made: StepLaw) -> Iterator[str]:
     """Fixed point: the scale of each quantity."""
     if made.places:
         yield ""
-        yield "scales (raw = value * 2^n)"
+        yield "scales: a raw value in Qm.n is raw / 2^n"
         for (kind, name), places in made.places.items():
-            yield f"  {kind} {name}: Q{31 - places}.{places}, resolution {2.0**-places:.3g}"
+            yield f"  {kind} {name}: {scale(places)}"
+
+
+def scale(places: int) -> str:
+    """Bits before and after the point, and what the last one is worth."""
+    return f"Q{31 - places}.{places}, resolution {2.0**-places:.3g}"
 
 
 def _jump(jump: StepJump, made: StepLaw) -> Iterator[str]:

@@ -82,7 +82,11 @@ def test_whole_steps_are_rounded_up_with_a_little_slack() -> None:
         (1, 20): 1,
         (0, 20): 0,
         (-5, 20): 0,
-        (MOST, 0): MOST - 17,
+        (MOST, 0): MOST,
+        (10, 1): 5,
+        (11, 1): 6,
+        (1 << 30, 3): 1 << 27,
+        ((1 << 30) + 3, 3): (1 << 27) + 1,
     }
     for (raw, places), wanted in cases.items():
         assert exact(kernel, raw, places) == wanted == int(function(kernel)(np.int32(raw), np.int32(places)))

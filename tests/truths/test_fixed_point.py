@@ -53,8 +53,10 @@ def test_accumulators_have_the_standard_s_scale() -> None:
         outputs: {{y: {{value: sum}}}}
     """)
     assert build(law).places[(RefKind.STATE, "sum")] == 15
-    steps = np.random.default_rng(6).integers(-(2**31) + 1, 2**31, 500)
-    steps[:5] = [int(v * 2**15) for v in (65000.25, 2.0**-15, 535.75, 1.0, -0.5)]
+    # a sample keeps one bit, by which what is beyond its range is told from its end
+    assert build(law).places[(RefKind.INPUT, "u")] == 14
+    steps = np.random.default_rng(6).integers(-(2**30) + 1, 2**30, 500)
+    steps[:5] = [int(v * 2**14) for v in (65000.25, 2.0**-14, 535.75, 1.0, -0.5)]
     reference, chip = Reference(law), Chip(law)
     kept = 0
     for k, u in enumerate(steps.tolist()):
@@ -62,7 +64,7 @@ def test_accumulators_have_the_standard_s_scale() -> None:
             assert machine.step({"u": u}, raw=True) == {"y": kept}
         if k == 4:
             assert kept == 2**31 - 1 and chip.state["sum"] == top - 0.5
-        kept = max(-(2**31) + 1, min(2**31 - 1, kept + u))
+        kept = max(-(2**31) + 1, min(2**31 - 1, kept + 2 * u))
 
 
 def half_away(x: Fraction) -> int:
