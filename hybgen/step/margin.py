@@ -51,10 +51,14 @@ class Margins:
             for i, e in enumerate(t.exprs)
         }
         timers = {n: translator.step / u.scale for n, u in translator.timers.items()}
+        domain = Domain(translator.format, _leaves(law, translator), terms, timers, {}, _ordered(law, translator))
         tables = {
-            t.name: Lookup.of((t.x,), t.y) if isinstance(t, Table) else Lookup.of((t.x, t.y), t.z) for t in law.tables
+            t.name: Lookup.of((t.x,), t.y, domain.constant)
+            if isinstance(t, Table)
+            else Lookup.of((t.x, t.y), t.z, domain.constant)
+            for t in law.tables
         }
-        domain = Domain(translator.format, _leaves(law, translator), terms, timers, tables, _ordered(law, translator))
+        domain = replace(domain, tables=tables)
         edges = Edges.of(law, {j.name: translator.exact(j.condition) for j in law.jumps}, terms)
         return cls(law, translator, domain, edges)
 

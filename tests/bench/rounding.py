@@ -54,7 +54,7 @@ def main() -> None:
         bench = bench_of(condition, "float32")
         atom = next(iter(bench.atoms()))
         start = time.perf_counter()
-        bound = Difference(*atom.args, bench.margins.domain, True).error()
+        bound = Difference(atom.args[0], atom.args[1], bench.margins.domain, True).error()
         spent = time.perf_counter() - start
         worst = worst_seen(bench, atom, bound, random.Random(11))
         print(f"{condition:<56} {bound:9.2e} {worst:9.2e} {bound / worst:6.2f} {spent * 1e3:6.1f}")
