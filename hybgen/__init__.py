@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from hybgen.law import Law, load
     from hybgen.pipeline import generate
     from hybgen.reference import Reference
+    from hybgen.selftests import selftest
     from hybgen.sil import Chip, compile
 
 _HOMES = {
@@ -31,6 +32,7 @@ _HOMES = {
     "compile": "hybgen.sil",
     "generate": "hybgen.pipeline",
     "load": "hybgen.law",
+    "selftest": "hybgen.selftests",
 }
 
 __all__ = [
@@ -45,6 +47,7 @@ __all__ = [
     "compile",
     "generate",
     "load",
+    "selftest",
 ]
 
 

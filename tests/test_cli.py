@@ -148,10 +148,12 @@ def test_preflight_leaves_evidence(tmp_path: Path) -> None:
     one, two = tmp_path / "one", tmp_path / "two"
     done = run("preflight", PUMP, "--to", one)
     assert done.returncode == 0, done.stdout + done.stderr
-    assert [line.split()[0] for line in done.stdout.splitlines()[:5]] == ["passed"] * 5
+    assert [line.split()[0] for line in done.stdout.splitlines()[:6]] == ["passed"] * 6
     assert run("preflight", PUMP, "--to", two, "--quiet").stdout == ""
     names = sorted(p.name for p in one.iterdir())
-    assert names == ["bilge_pump.c", "bilge_pump.h", "findings.json", "sil.json", "summary.md"]
+    assert names == [
+        "bilge_pump.c", "bilge_pump.h", "bilge_pump_selftest.c", "findings.json", "sil.json", "summary.md",
+    ]  # fmt: skip
     assert all((one / n).read_bytes() == (two / n).read_bytes() for n in names)
     assert "not a safety case" in (one / "summary.md").read_text()
     bad = run("preflight", BAD / "HG301_never.yaml", "--to", tmp_path / "bad")

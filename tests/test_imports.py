@@ -14,8 +14,9 @@ MAY = {
     "version": set(), "diag": set(), "kernels": set(), "expr": {"diag"}, "law": {"diag", "expr"}, "numbers": {"expr", "kernels"},
     "step": {"diag", "expr", "law", "kernels", "numbers"}, "reference": {"expr", "law", "numbers", "kernels", "step"}, "ir": {"kernels"},
     "lower": {"diag", "expr", "law", "step", "ir", "kernels", "version"}, "emit": {"ir", "kernels"},
-    "checks": {"diag", "expr", "law", "step"}, "pipeline": {"diag", "law", "step", "lower", "emit", "reread"},
+    "checks": {"diag", "expr", "law", "numbers", "step"}, "pipeline": {"diag", "law", "step", "lower", "emit", "reread"},
     "reread": {"expr", "numbers", "kernels", "step"},
+    "selftests": {"expr", "law", "kernels", "numbers", "step", "reference", "ir", "lower", "emit", "sil"},
     "sil": {"diag", "expr", "law", "step", "reference", "lower", "emit"},
 }  # fmt: skip
 EVERYTHING = {"cli", "__init__", "__main__"}

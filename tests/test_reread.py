@@ -13,7 +13,8 @@ from hybgen.diag.finding import LawError
 from hybgen.emit import emit
 from hybgen.law import load, read
 from hybgen.lower import lower
-from hybgen.reread import reread
+from hybgen.pipeline import generate
+from hybgen.reread import Mismatch, reread
 from hybgen.step import StepLaw, build
 from tests.conftest import SPECS, law_of
 from tests.strategies import law_text
@@ -175,9 +176,16 @@ def test_a_wrong_file_is_not_written(
 
     real = emit
 
-    def planted(program: object) -> dict[str, str]:
+    def planted(program: object, _: bool) -> dict[str, str]:
         return {n: t.replace(">=", ">") for n, t in real(program).items()}  # type: ignore[arg-type]
 
     monkeypatch.setattr("hybgen.pipeline.emit", planted)
     assert main(["generate", str(SPECS[0]), "--to", str(tmp_path / "c")]) == 3
     assert "is not its step law" in capsys.readouterr().err and not (tmp_path / "c").exists()
+
+
+def test_what_is_not_proved_is_not_given(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr("hybgen.pipeline.reread", lambda *_: (Mismatch("due", "answer", decided=False),))
+    with pytest.raises(LawError) as caught:
+        generate(load(SPECS[0]))
+    assert [f.code for f in caught.value.findings] == ["HG605"] and caught.value.findings[0].where.line > 0

@@ -6,7 +6,7 @@ from collections.abc import Iterator
 from dataclasses import replace
 from fractions import Fraction
 
-from hybgen.checks import rounding
+from hybgen.checks import coarse, rounding
 from hybgen.checks.report import error
 from hybgen.diag.finding import Finding, Severity, Verdict
 from hybgen.expr.core import FALSE, Const, Node, Ref, RefKind, walk
@@ -30,7 +30,14 @@ def fits(law: Law) -> list[Finding]:
 def questions(law: Law, step: Fraction | None, number: str | None) -> list[Finding]:
     """Findings of the step law; raises LawError where there is none."""
     made = build(law, step=step, number=number)
-    return [*made.notes, *_defaults(made), *_moved(law, made), *rounding.findings(made), _chain(made)]
+    return [
+        *made.notes,
+        *_defaults(made),
+        *_moved(law, made),
+        *rounding.findings(made),
+        *coarse.questions(made),
+        _chain(made),
+    ]
 
 
 def _defaults(made: StepLaw) -> Iterator[Finding]:

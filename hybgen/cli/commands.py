@@ -100,7 +100,11 @@ def generate_command(options: argparse.Namespace, law: Law, console: Console) ->
         show_findings(report.failing(options.fail_on), console)
         console.data(report.to_json())
         return FINDINGS
-    files = generate(law, step=options.step, number=options.number)
+    files = generate(law, step=options.step, number=options.number, conversions=options.conversions)
+    if options.selftest:
+        from hybgen.selftests import selftest
+
+        files |= selftest(law, step=options.step, number=options.number)
     folder = Path(options.to)
     write_all(folder, files)
     for name in files:

@@ -26,8 +26,7 @@ def parser() -> argparse.ArgumentParser:
     top.add_argument("--version", action="version", version=f"hybgen {VERSION}")
     commands = top.add_subparsers(dest="command", required=True, metavar="COMMAND")
     _law(commands, "check", "check a law: language, units, names, reachability, memory kept over jumps")
-    generate = _law(commands, "generate", "write NAME.h and NAME.c")
-    generate.add_argument("--to", default=".", metavar="DIR", help="folder to write into (made if missing)")
+    _generate(commands)
     sil = _law(commands, "sil", "compare reference and compiled C, bit for bit, at every step")
     sil.add_argument("--target", default="host", choices=("host",), help="where the C runs (this version: host)")
     sil.add_argument("--lanes", type=_count, default=2048, metavar="N", help="runs side by side (default 2048)")
@@ -38,7 +37,7 @@ def parser() -> argparse.ArgumentParser:
     )
     show = _law(commands, "show", "print what a stage made of a law")
     show.add_argument("--stage", default="step", choices=STAGES, help="default: step")
-    preflight = _law(commands, "preflight", "check, generate, compile, compare; evidence into a folder")
+    preflight = _law(commands, "preflight", "check, generate, compile, self-test, compare; evidence into a folder")
     preflight.add_argument("--to", default=None, metavar="DIR", help="evidence folder (default NAME_evidence)")
     new = _common(commands.add_parser("new", help="write a commented law to start from"))
     new.add_argument("name", metavar="NAME", help="a C identifier; the file is NAME.yaml")
@@ -59,6 +58,19 @@ def _common(command: argparse.ArgumentParser) -> argparse.ArgumentParser:
     command.add_argument("--colour", choices=("auto", "always", "never"), default="auto", help="default: auto")
     command.add_argument("--debug", action="store_true", help="show the traceback of a fault in hybgen")
     return command
+
+
+def _generate(commands: argparse._SubParsersAction[argparse.ArgumentParser]) -> None:
+    generate = _law(commands, "generate", "write NAME.h and NAME.c, with --selftest a test of the target")
+    generate.add_argument("--to", default=".", metavar="DIR", help="folder to write into (made if missing)")
+    generate.add_argument(
+        "--conversions", action="store_true", help="fixed32: functions between physical and raw values in NAME.h"
+    )
+    generate.add_argument(
+        "--selftest",
+        action="store_true",
+        help="NAME_selftest.c too: run on the target, it answers 0 if every bit is right",
+    )
 
 
 def _law(

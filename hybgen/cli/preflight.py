@@ -6,18 +6,22 @@ import argparse
 import hashlib
 import json
 from collections.abc import Callable, Mapping
+from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 from hybgen.checks import Report, check
+from hybgen.checks.report import error
 from hybgen.cli.console import Console, placed
 from hybgen.cli.files import write_all
 from hybgen.cli.main import FINDINGS, OK
-from hybgen.diag.finding import Verdict
+from hybgen.diag.finding import Finding, Verdict
 from hybgen.diag.render import render, summary
+from hybgen.diag.span import Span
 from hybgen.pipeline import generate
 from hybgen.reread import reread
-from hybgen.sil import lockstep, toolchain
+from hybgen.selftests import selftest
+from hybgen.sil import board, lockstep, toolchain
 from hybgen.sil.lockstep import SilReport
 from hybgen.step import build
 from hybgen.version import VERSION
@@ -47,14 +51,8 @@ def preflight(options: argparse.Namespace, law: Law, console: Console) -> int:
     files: dict[str, str] = {}
     sil: SilReport | None = None
     if stage("check", not report.failing(options.fail_on), summary(report.findings)):
-        files = generate(law, step=options.step, number=options.number)
-        same = files == generate(law, step=options.step, number=options.number)
-        stage("generate", same, f"{', '.join(files)}, {'the same bytes twice' if same else 'not the same bytes twice'}")
-        wrong = reread(build(law, step=options.step, number=options.number), files)
-        told = "; ".join(f"{w.function}: {w.what}{'' if w.decided else ' (too many cases to tell)'}" for w in wrong)
-        stage("reread", not wrong, told or "the C, read back, is the step law in every operation, for all inputs")
-        if _builds(law, files, stage):
-            sil = _sil(options, law, stage, console)
+        files, sil, failed = _made(options, law, stage, console)
+        report = replace(report, findings=(*report.findings, *failed))
     passed = all(p for _, p, _ in stages) and sil is not None
     folder = Path(options.to or f"{law.name}_evidence")
     evidence = _evidence(law, report, files, sil, stages, passed)
@@ -73,12 +71,44 @@ def preflight(options: argparse.Namespace, law: Law, console: Console) -> int:
     return OK if passed else FINDINGS
 
 
-def _builds(law: Law, files: Mapping[str, str], stage: Stage) -> bool:
+def _made(
+    options: argparse.Namespace, law: Law, stage: Stage, console: Console
+) -> tuple[dict[str, str], SilReport | None, tuple[Finding, ...]]:
+    """The stages from the C on: the files, what lock-step found, what the self-test found."""
+    sil: SilReport | None = None
+    failed: tuple[Finding, ...] = ()
+    files = generate(law, step=options.step, number=options.number)
+    same = files == generate(law, step=options.step, number=options.number)
+    stage("generate", same, f"{', '.join(files)}, {'the same bytes twice' if same else 'not the same bytes twice'}")
+    wrong = reread(build(law, step=options.step, number=options.number), files)
+    told = "; ".join(f"{w.function}: {w.what}{'' if w.decided else ' (too many cases to tell)'}" for w in wrong)
+    stage("reread", not wrong, told or "the C, read back, is the step law in every operation, for all inputs")
+    tested = selftest(law, step=options.step, number=options.number)
+    if _builds(law, files, tested, stage):
+        failed = _tested(law, files, tested, stage)
+        for finding in placed(failed, options):
+            console.say(render(finding, console.colour))
+        sil = _sil(options, law, stage, console)
+    return {**files, **tested}, sil, failed
+
+
+def _builds(law: Law, files: Mapping[str, str], tested: Mapping[str, str], stage: Stage) -> bool:
     try:
-        toolchain.warning_free(files, law.name)
+        for name in (law.name, f"{law.name}_selftest"):
+            toolchain.warning_free({**files, **tested}, name)
     except (toolchain.NoCompiler, toolchain.CompilerRefused) as error:
         return stage("compile", False, str(error))
     return stage("compile", True, "C99 without a warning, warnings as errors")
+
+
+def _tested(law: Law, files: Mapping[str, str], tested: Mapping[str, str], stage: Stage) -> tuple[Finding, ...]:
+    """The self-test on this host: what is wrong, if it fails."""
+    number = board.answer({**files, **tested}, law.name)
+    if stage("selftest", number == 0, "0 on this host" if number == 0 else f"{number} on this host, not 0 (HG604)"):
+        return ()
+    message = f"{law.name}_selftest() answers {number} on this host"
+    hint = f"the head of {law.name}_selftest.c says what {number} means"
+    return (error("HG604", "equality", Span(law.file, 1, 1), law.name, message, hint),)
 
 
 def _sil(options: argparse.Namespace, law: Law, stage: Stage, console: Console) -> SilReport:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import textwrap
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from functools import cache
 from pathlib import Path
@@ -25,6 +25,10 @@ STATUS = (
 CAUTIONS = (
     "Caution: this code can move machines. It was checked against its law in simulation, and simulation is not a "
     "safety case. Local codes, functional-safety standards and a qualified review decide whether it may be used."
+)
+_FIXED = (
+    "Numbers are raw: value * 2^n as int32_t, with n as given for each member (Qm.n), rounded half to even and",
+    "held at the ends; INT32_MIN means no number.",
 )
 _ORDER = ("self", "p", "u", "now", "y")
 
@@ -51,13 +55,35 @@ def _environment() -> Any:
     )
 
 
-def emit(program: Program) -> dict[str, str]:
-    """The two files, by name."""
-    pages = _Pages(program, Writer(program))
-    environment = _environment()
+def emit(program: Program, conversions: bool = False) -> dict[str, str]:
+    """The two files, by name; `conversions`: with functions between physical and raw values (fixed point)."""
+    pages = _Pages(program, Writer(program), conversions)
     return {
-        f"{program.name}.h": environment.get_template("law.h.jinja").render(pages.header()),
-        f"{program.name}.c": environment.get_template("law.c.jinja").render(pages.source()),
+        f"{program.name}.h": render("law.h.jinja", pages.header()),
+        f"{program.name}.c": render("law.c.jinja", pages.source()),
+    }
+
+
+def render(template: str, values: Mapping[str, Any]) -> str:
+    """A template laid out."""
+    text: str = _environment().get_template(template).render(values)
+    return text
+
+
+def common(program: Program) -> dict[str, Any]:
+    """What the heads of all C files have in common, and their guards against flags that change results."""
+    return {
+        "name": program.name,
+        "upper": program.name.upper(),
+        "facts": [
+            f"Made by hybgen {program.version} from {comment(program.origin)}, SHA-256",
+            f"  {program.digest}",
+            f"step {program.step}, numbers {program.number}, integration {program.method}",
+            *(_FIXED if program.number == "fixed32" else ()),
+            "Compile as C99 (or C++) with -ffp-contract=off, without -ffast-math.",
+        ],
+        "cautions": textwrap.wrap(CAUTIONS, 100),
+        "excess": " && (__FLT_EVAL_METHOD__ != 1)" if program.real == "double" else "",
     }
 
 
@@ -67,17 +93,16 @@ class _Pages:
 
     program: Program
     writer: Writer
+    conversions: bool
 
     def header(self) -> dict[str, Any]:
         program = self.program
         about = textwrap.wrap(comment(f"{program.name}: {program.about}" if program.about else program.name), 100)
         return {
-            "name": program.name,
-            "upper": program.name.upper(),
+            **common(program),
+            "conversions": list(self.converted()) if self.conversions else [],
             "guard": f"{program.name.upper()}_H",
             "about": about,
-            "facts": self.facts(),
-            "cautions": textwrap.wrap(CAUTIONS, 100),
             "step": program.step,
             "status": [{"name": n, "value": v, "note": note} for n, v, note in STATUS],
             "jumps": program.jumps,
@@ -95,15 +120,6 @@ class _Pages:
             "structs": self.structs(),
             "rules": [f"{i}: {comment(r)}" for i, r in enumerate(program.rules, 1)] or ["(there is none)"],
         }
-
-    def facts(self) -> list[str]:
-        program = self.program
-        return [
-            f"Made by hybgen {program.version} from {comment(program.origin)}, SHA-256",
-            f"  {program.digest}",
-            f"step {program.step}, numbers {program.number}, integration {program.method}",
-            "Compile as C99 (or C++) with -ffp-contract=off, without -ffast-math.",
-        ]
 
     def structs(self) -> list[dict[str, Any]]:
         program, name = self.program, self.program.name
@@ -130,6 +146,20 @@ class _Pages:
             return [{"text": f"uint8_t none; /* this law has no {word} */"}]
         return [{"text": self.member(m)} for m in members]
 
+    def converted(self) -> Iterator[dict[str, str]]:
+        """The members that are scaled, each name once, with the factor 2**places."""
+        taken = {t.name for t in self.program.tables}
+        for m in (*self.program.inputs, *self.program.parameters, *self.program.outputs):
+            if m.places is not None:
+                names = {}
+                for word in ("raw", "physical"):
+                    name = f"{self.program.name}_{word}_{m.name}"
+                    while name in taken:
+                        name += "_"
+                    taken.add(name)
+                    names[word] = name
+                yield {**names, "factor": f"{2.0**m.places!r}", "inverse": f"{2.0**-m.places!r}"}
+
     def member(self, m: Member) -> str:
         size = "" if m.size is None else f"[{m.size}]"
         note = f" /* {comment(m.note)} */" if m.note else ""
@@ -144,11 +174,7 @@ class _Pages:
         helpers = [helper(h, program) for h in program.helpers if h not in LOOKUPS]
         helpers += [*functions(program.kernels, program), *lookups(program, tables)]
         return {
-            "name": program.name,
-            "upper": program.name.upper(),
-            "facts": self.facts(),
-            "cautions": textwrap.wrap(CAUTIONS, 100),
-            "excess": " && (__FLT_EVAL_METHOD__ != 1)" if program.real == "double" else "",
+            **common(program),
             "now": [{"text": self.member(m)} for m in program.now],
             "defaults": self.defaults(),
             "helpers": helpers,
@@ -305,4 +331,4 @@ class _Pages:
         yield "    }"
 
 
-__all__ = ["emit", "templates_folder"]
+__all__ = ["common", "emit", "render", "templates_folder"]

@@ -158,6 +158,8 @@ class Member:
     type: str
     size: int | None
     note: str
+    places: int | None = None
+    """Fixed point: binary places."""
 
 
 @dataclass(frozen=True, slots=True)

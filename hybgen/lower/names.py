@@ -17,6 +17,7 @@ API = (
     "step",
     "check_parameters",
     "jump_name",
+    "selftest",
     "now",
     "read",
     "watch",

@@ -11,7 +11,7 @@ from hybgen.ir.model import Enum, Member
 from hybgen.law.model import Input, Output, Parameter, State, StateKind
 from hybgen.lower.names import LOCALS, Namer
 from hybgen.lower.values import Values
-from hybgen.step.model import StepGrid, StepLaw, StepTable
+from hybgen.step.model import StepGrid, StepInput, StepLaw, StepParameter, StepTable
 
 
 @dataclass(frozen=True, slots=True)
@@ -50,12 +50,12 @@ def structs(made: StepLaw, namer: Namer) -> Structs:
     ]
     return Structs(
         tuple(enums),
-        tuple(Member(u.name, values.type(u.type), u.size, _input_note(law.input(u.name), made)) for u in made.inputs),
+        tuple(_member(u, _input_note(law.input(u.name), made), RefKind.INPUT, values, made) for u in made.inputs),
         tuple(
-            Member(p.name, values.type(p.type), p.size, _parameter_note(law.parameter(p.name), made))
+            _member(p, _parameter_note(law.parameter(p.name), made), RefKind.PARAMETER, values, made)
             for p in made.parameters
         ),
-        tuple(Member(o.name, values.type(o.type), o.size, _output_note(o, made)) for o in law.outputs),
+        tuple(_member(o, _output_note(o, made), RefKind.OUTPUT, values, made) for o in law.outputs),
         tuple(states),
         now,
         values,
@@ -121,6 +121,10 @@ def _range(low: Fraction | None, high: Fraction | None) -> str:
 
 def _joined(*parts: str) -> str:
     return "; ".join(p for p in parts if p)
+
+
+def _member(row: StepInput | StepParameter | Output, note: str, kind: RefKind, values: Values, made: StepLaw) -> Member:
+    return Member(row.name, values.type(row.type), row.size, note, made.places.get((kind, row.name)))
 
 
 def _scale(made: StepLaw, kind: RefKind, name: str, unit: Unit) -> str:

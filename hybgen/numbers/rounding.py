@@ -187,6 +187,18 @@ def whole(node: Node, domain: Domain) -> Enclosure:
         return _Evaluator(domain, at, 1, {}).of(node)
 
 
+def interval(node: Node, domain: Domain) -> tuple[float, float]:
+    """Between which exact values an expression lies over the whole domain. Raises Unbounded."""
+    leaves = list(leaves_of(node, domain))
+    at = {
+        leaf: (np.array([low]), np.array([high]))
+        for leaf, (low, high) in zip(leaves, _ends(leaves, domain), strict=True)
+    }
+    with np.errstate(all="ignore"):
+        found = _Evaluator(domain, at, 1, {}).of(node)
+    return float(found.low[0]), float(found.high[0])
+
+
 def turned(node: Node) -> tuple[Node, Fraction] | None:
     """(angle, half a turn) of a wrapped angle: wrap(x), or in degrees x + turn * floor(1/2 - x / turn)."""
     match node:

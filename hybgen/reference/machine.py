@@ -59,7 +59,8 @@ NO_NUMBER = -(2**31)
 
 def to_raw(value: Any, places: int) -> Array:
     """Physical values as raw ones: nearest, ties to even; held at the ends; NO_NUMBER for what is not finite."""
-    scaled = np.ldexp(np.asarray(value, np.float64), places)
+    with np.errstate(over="ignore"):
+        scaled = np.ldexp(np.asarray(value, np.float64), places)
     held = np.clip(np.rint(np.where(np.isfinite(scaled), scaled, 0.0)), -LARGEST_COUNT, LARGEST_COUNT)
     return np.where(np.isfinite(scaled), held, NO_NUMBER).astype(np.int32)
 

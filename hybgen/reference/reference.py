@@ -154,6 +154,17 @@ class Reference(Machine):
         self.state_status = status
         return outputs
 
+    def values(self, nodes: Sequence[Node], inputs: Fields) -> list[Array]:
+        """Expressions at the present state and these samples, one value for each lane; no step is made."""
+        kept = {n: a.copy() for n, a in self.fields.items()}
+        with np.errstate(all="ignore"):
+            self._check_parameters()
+            self._snapshot(inputs, np.zeros(self.lanes, np.uint32))
+            found = Planner(self.step_law).plan(nodes)[0].run(self._load(None))[0]
+        for name, array in kept.items():
+            self.fields[name][...] = array
+        return [np.broadcast_to(value, (self.lanes,)) for value in found]
+
     def _snapshot(self, inputs: Fields, status: Array) -> None:
         self.snapshot = {}
         for u in self.step_law.inputs:

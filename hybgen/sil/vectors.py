@@ -6,6 +6,7 @@ parameters at and between their limits, and any state of the declared domain.
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import Any
@@ -248,6 +249,8 @@ class Stimulus:
         dtype = self.made.format.dtype
         state = self.made.law.state(x.name)
         low, high = float(state.low or 0), float(state.high or 0)
+        if (places := self.made.places.get((RefKind.STATE, x.name))) is not None:
+            low, high = math.ceil(math.ldexp(low, places)), math.floor(math.ldexp(high, places))
         near = around([*marks, low, high, 0.0], dtype)
         with np.errstate(over="ignore"):
             near = near[np.isfinite(near)]

@@ -12,6 +12,7 @@ from hybgen.expr.fold import decide
 from hybgen.law.model import Assign, Jump, Law, Output, State, StateKind, Value
 from hybgen.numbers.bounds import Bounds, Key, Range, exact_range
 from hybgen.numbers.format import FIXED32, NUMBERS, Format
+from hybgen.numbers.rounding import Domain
 from hybgen.step import declare
 from hybgen.step.chain import longest
 from hybgen.step.fixed import in_fixed_point
@@ -41,6 +42,13 @@ def conditions(law: Law, *, step: Fraction, number: str) -> list[Node]:
     names = _local_names(law)
     translator = Translator(law, NUMBERS[number], step, Findings(), constants_of(law), timers_of(law), names)
     return [translator.translate(j.condition) for j in law.jumps]
+
+
+def domain(law: Law, *, step: Fraction, number: str) -> tuple[Translator, Domain]:
+    """What the leaves of the law's expressions can be, for questions about intervals; the translator folds its constants."""
+    names = _local_names(law)
+    translator = Translator(law, NUMBERS[number], step, Findings(), constants_of(law), timers_of(law), names)
+    return translator, Margins.of(law, translator).domain
 
 
 def _local_names(law: Law) -> dict[tuple[str, int | None], str]:

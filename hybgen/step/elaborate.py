@@ -162,6 +162,19 @@ class Elaborator:
             self.known[node] = found
         return found
 
+    def held(self, node: Node, places: int) -> Scaled:
+        """An expression that is stored with these places, where too large a result is held anyway: a sum or product keeps them."""
+        if isinstance(node, Op) and node.op in ("add", "sub", "mul"):
+            self.real(node)  # reports what is refused
+            try:
+                a, b = (self.real(x) for x in node.args)
+                if node.op == "mul":
+                    return multiplied(a, b, node.span, places)
+                return added(a, b, node.op == "sub", node.span, places)
+            except Refused:
+                pass
+        return self.real(node)
+
     def computed(self, node: Node) -> Scaled:
         match node:
             case Const():

@@ -170,7 +170,7 @@ class _Fixed:
             return replace(a, expr=self.expressions.other(a.expr))
         places, low, high = self.leaves[(RefKind.STATE, a.state)]
         ends = (low, high)
-        expr = self.stored(self.expressions.real(a.expr), places, ends, a.span)
+        expr = self.stored(self.expressions.held(a.expr, places), places, ends, a.span)
         inside = self.made.law.state(a.state).limit and a.clamp is not None
         return replace(a, expr=expr, guarded=False, clamp=(low, high) if inside else None)
 

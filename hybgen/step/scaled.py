@@ -69,14 +69,22 @@ def raw(value: Fraction, places: int) -> int:
 
 
 def fitted(
-    low: Fraction, high: Fraction, most: int, make: Callable[[int], Node], error: Fraction, exact: int | None = None
+    low: Fraction,
+    high: Fraction,
+    most: int,
+    make: Callable[[int], Node],
+    error: Fraction,
+    exact: int | None = None,
+    kept: int = COARSEST,
 ) -> Scaled:
     """A result in [low, high], with at most `most` places; `make` gives its node for the places chosen.
 
-    `error` is that of the operands; with `exact` places or more the operation itself does not round.
+    `error` is that of the operands; with `exact` places or more the operation itself does not round. `kept`: places that
+    are wanted although the result may then be held at the ends (it is stored into a state that is held there anyway).
     """
-    places = min(most, room(max(abs(low), abs(high))))
-    found = Scaled(make(places), places, raw(low, places), raw(high, places))
+    places = min(most, max(kept, room(max(abs(low), abs(high)))))
+    lowest, highest = (max(-MOST, min(MOST, raw(e, places))) for e in (low, high))
+    found = Scaled(make(places), places, lowest, highest)
     rounds = exact is None or places < exact
     return replace(found, error=error + (found.half if rounds else 0))
 
@@ -110,7 +118,7 @@ def common(values: list[Scaled], span: Span) -> list[Scaled]:
     return [rescaled(v, places, span) for v in values]
 
 
-def added(a: Scaled, b: Scaled, minus: bool, span: Span) -> Scaled:
+def added(a: Scaled, b: Scaled, minus: bool, span: Span, kept: int = COARSEST) -> Scaled:
     """a + b or a - b, rounded once; an operand that is more than 2**31 times finer than the other is rounded first."""
     fine = min(a.places, b.places) + 31
     a, b = (rescaled(x, fine, span) if x.places > fine else x for x in (a, b))
@@ -120,13 +128,14 @@ def added(a: Scaled, b: Scaled, minus: bool, span: Span) -> Scaled:
     top = max(a.places, b.places)
 
     def make(places: int) -> Node:
-        if a.places == b.places == places:
+        inside = max(abs(low), abs(high)) * Fraction(2) ** places <= MOST
+        if a.places == b.places == places and inside:
             return op("isub" if minus else "iadd", a.node, b.node, span=span)
         other = op("ineg", b.node, span=span) if minus else b.node
         shifts = (top - a.places, top - b.places, top - places)
         return op("fixed_add", a.node, other, *map(integer, shifts), span=span)
 
-    return fitted(low, high, top, make, a.error + b.error, top)
+    return fitted(low, high, top, make, a.error + b.error, top, kept)
 
 
 def _joined(x: Scaled, other: Scaled, span: Span) -> Scaled:
@@ -135,16 +144,18 @@ def _joined(x: Scaled, other: Scaled, span: Span) -> Scaled:
     return rescaled(x, other.places, span) if isinstance(x.node, Const) and finer else x
 
 
-def multiplied(a: Scaled, b: Scaled, span: Span) -> Scaled:
+def multiplied(a: Scaled, b: Scaled, span: Span, kept: int = COARSEST) -> Scaled:
     """a * b, rounded once."""
     ends = [x * y for x in a.ends for y in b.ends]
+    if a.node == b.node:  # a square is nowhere below 0
+        ends = [max(ends), Fraction(0) if a.low <= 0 <= a.high else min(e * e for e in a.ends)]
     whole = a.places + b.places
 
     def make(places: int) -> Node:
         return op("fixed_mul", a.node, b.node, integer(min(FINEST, whole - places)), span=span)
 
     error = a.size * b.error + b.size * a.error + a.error * b.error
-    return fitted(min(ends), max(ends), whole, make, error, whole)
+    return fitted(min(ends), max(ends), whole, make, error, whole, kept)
 
 
 def divided(a: Scaled, b: Scaled, span: Span) -> Scaled:

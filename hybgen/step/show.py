@@ -37,6 +37,7 @@ def show(made: StepLaw) -> str:
 
 def _lines(made: StepLaw) -> Iterator[str]:
     yield f"step law {made.law.name}: {made.format.name}, step {float(made.step):.9g} s, method {made.method}"
+    yield from _scales(made)
     yield ""
     yield "snapshot"
     for u in made.inputs:
@@ -73,6 +74,15 @@ def _lines(made: StepLaw) -> Iterator[str]:
         yield "sample"
         for a in made.sample:
             yield f"  {_assign(a, made)}"
+
+
+def _scales(made: StepLaw) -> Iterator[str]:
+    """Fixed point: the scale of each quantity."""
+    if made.places:
+        yield ""
+        yield "scales (raw = value * 2^n)"
+        for (kind, name), places in made.places.items():
+            yield f"  {kind} {name}: Q{31 - places}.{places}, resolution {2.0**-places:.3g}"
 
 
 def _jump(jump: StepJump, made: StepLaw) -> Iterator[str]:

@@ -114,7 +114,7 @@ static uint32_t charger_due(const charger *self, const charger_parameters *p, co
             /* charger.yaml:31  goal: full + shift */
             const float goal = p->full + shift;
             if ((now->battery - goal) >= 1.0705294e-06f) {
-                /* charger.yaml:48  stage == bulk and battery >= goal; rounding at most 1.1e-06, jumps at the latest 2.1e-06 beyond */
+                /* charger.yaml:48  stage == bulk and battery >= goal; rounding at most 1.1e-06, jumps at the latest 2.2e-06 beyond */
                 answer = CHARGER_JUMP_REACHED;
             }
         }

@@ -79,7 +79,7 @@ static uint32_t heater_due(const heater *self, const heater_parameters *p, const
             answer = HEATER_JUMP_SENSOR_LOST;
         } else if (now->enabled && (self->since >= 120)
             && ((now->box - (p->target - p->band)) <= (-9.536745e-07f))) {
-            /* heater.yaml:43  mode == off and enabled and since >= least_off and box <= target - band; rounding at most 9.5e-07, jumps at the latest 1.9e-06 beyond */
+            /* heater.yaml:43  mode == off and enabled and since >= least_off and box <= target - band; rounding at most 9.6e-07, jumps at the latest 2e-06 beyond */
             answer = HEATER_JUMP_START;
         }
         break;
@@ -95,7 +95,7 @@ static uint32_t heater_due(const heater *self, const heater_parameters *p, const
             answer = HEATER_JUMP_OVERHEAT;
         } else if ((self->since >= 60)
             && (((now->box - (p->target + p->band)) >= 9.536745e-07f) || !now->enabled)) {
-            /* heater.yaml:39  mode == on and since >= least_on and (box >= target + band or not enabled); rounding at most 9.5e-07, jumps at the latest 1.9e-06 beyond */
+            /* heater.yaml:39  mode == on and since >= least_on and (box >= target + band or not enabled); rounding at most 9.6e-07, jumps at the latest 2e-06 beyond */
             answer = HEATER_JUMP_STOP;
         }
         break;
