@@ -189,13 +189,7 @@ def whole(node: Node, domain: Domain) -> Enclosure:
 
 def interval(node: Node, domain: Domain) -> tuple[float, float]:
     """Between which exact values an expression lies over the whole domain. Raises Unbounded."""
-    leaves = list(leaves_of(node, domain))
-    at = {
-        leaf: (np.array([low]), np.array([high]))
-        for leaf, (low, high) in zip(leaves, _ends(leaves, domain), strict=True)
-    }
-    with np.errstate(all="ignore"):
-        found = _Evaluator(domain, at, 1, {}).of(node)
+    found = whole(node, domain)
     return float(found.low[0]), float(found.high[0])
 
 
@@ -323,7 +317,8 @@ class _Evaluator:
             return EXACT[node.op](*args)
         if node.op in ELEMENTARY:
             low, high, error = ELEMENTARY[node.op](*args)
-            return self.rounded(low, high, error, ULP[self.domain.format.name][node.op])
+            units = ULP.get(self.domain.format.name, {}).get(node.op, 1.0)  # fixed point asks for intervals only
+            return self.rounded(low, high, error, units)
         match node.op:
             case "lookup" | "lookup2":
                 return self.domain.tables[node.table].enclosure(args, self.domain.half, self.domain.unit)
