@@ -340,3 +340,17 @@ def test_integers_are_exact_numbers_of_the_analysis() -> None:
     leaves = {(RefKind.STATE, "many"): (Fraction(0), Fraction(2**31 - 1))}
     found = whole(op("to_real", op("imul", many, many)), Domain(fmt, leaves, {}, {}, {}))
     assert found.error[0] >= 2.0**37
+
+
+def test_a_function_in_a_rate_of_a_fixed_point_law_has_an_interval() -> None:
+    """`check` once stopped with a KeyError here: fixed point has no units in the last place."""
+    text = """
+        law: swell
+        step: 100 ms
+        number: fixed32
+        inputs: {u: {range: [0, 1]}}
+        states: {x: {range: [-3, 3], limit: true}}
+        flow: {map: {x: "sin(u) / (1 s)"}, method: euler}
+        outputs: {y: {value: x}}
+        """
+    assert check(law_of(text)).ok
