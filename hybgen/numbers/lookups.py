@@ -16,46 +16,57 @@ from numpy.typing import NDArray
 
 from hybgen.numbers.enclosures import Array, Enclosure
 
+Row = tuple[Fraction, ...]
+
 MOST_POINTS = 400
 """Tables of more points are bounded as a whole, not by cells."""
 GROW = 1 + 2.0**-20
 IN_A_CELL = {1: 5, 2: 14}
 """Roundings in proportion to the rise, by number of inputs: slope or inverse width (up to 4: it may be rounded down), product,
 and with two inputs the differences of values."""
-AT_ITS_SIZE = {1: 2, 2: 3}
-"""Roundings in proportion to the value: the point's own, and each sum."""
 
 
 @dataclass(frozen=True, slots=True)
 class Lookup:
-    """A table in double precision: points of each input, values with one axis for each."""
+    """A table in double precision: points of each input, values with one axis for each, and how far rounding moves each."""
 
     points: tuple[Array, ...]
     values: Array
+    moved: tuple[Array, ...]
+    lifted: Array
 
     @classmethod
-    def of(cls, points: tuple[tuple[Fraction, ...], ...], values: tuple[object, ...]) -> Lookup:
+    def of(
+        cls, points: tuple[Row, ...], values: Row | tuple[Row, ...], rounding: Callable[[Fraction], float]
+    ) -> Lookup:
         """From exact numbers; `values` is a row, or a row for each point of the first input."""
-        rows = [[float(v) for v in row] if isinstance(row, tuple) else float(row) for row in values]  # type: ignore[arg-type]
-        return cls(tuple(np.array([float(v) for v in row]) for row in points), np.array(rows))
+
+        def rows(change: Callable[[Fraction], float]) -> Array:
+            return np.array([[change(v) for v in r] if isinstance(r, tuple) else change(r) for r in values])
+
+        moved = tuple(np.array([rounding(v) for v in row]) for row in points)
+        return cls(tuple(np.array([float(v) for v in row]) for row in points), rows(float), moved, rows(rounding))
 
     def enclosure(self, args: list[Enclosure], half: Callable[[Array], Array], unit: float) -> Enclosure:
-        """The table on boxes; `half` is half a unit in the last place of a magnitude, `unit` the relative rounding."""
-        ends = [np.abs(row).max() * GROW for row in self.points]
-        slack = [a.error + 3 * half(np.full(a.low.shape, end)) for a, end in zip(args, ends, strict=True)]
-        inside = [self._touched(row, a, s) for row, a, s in zip(self.points, args, slack, strict=True)]
+        """The table on boxes; `half` is half a unit in the last place of a magnitude, `unit` the relative rounding (0: none)."""
+        moved = [a.error + row.max() for a, row in zip(args, self.moved, strict=True)]
+        inside = [self._touched(row, a, s) for row, a, s in zip(self.points, args, moved, strict=True)]
         if self.values.size > MOST_POINTS:
             inside = [np.ones((1, len(row)), bool) for row in self.points]
         reach = inside[0] if len(inside) == 1 else inside[0][:, :, None] & inside[1][:, None, :]
         axes = tuple(range(1, reach.ndim))
         low, high = np.where(reach, self.values, np.inf).min(axes), np.where(reach, self.values, -np.inf).max(axes)
         size = np.maximum(np.abs(low), np.abs(high)) * GROW
-        error = unit * IN_A_CELL[len(args)] * (high - low) + AT_ITS_SIZE[len(args)] * half(size)
-        for axis, off in enumerate(slack):
-            slope = self._steepest(axis, reach)
+        error = unit * IN_A_CELL[len(args)] * (high - low) + len(args) * half(size)
+        if unit:
+            error = error + np.where(reach, self.lifted, 0.0).max(axes)
+        for axis, arg in enumerate(args):
+            width = np.diff(self.points[axis]).reshape((-1,) if len(args) == 1 else (-1, 1) if axis == 0 else (1, -1))
+            rise = np.abs(np.diff(self.values, axis=axis))
+            slope, far = (self._most(axis, v, reach) for v in (rise / width, width + 0 * rise))
+            off = arg.error + (self.moved[axis].max() if unit else 0.0) + half(far)
             error = error + np.where(slope > 0, slope * off, 0.0)
-        wide = 2.0**-50 * size
-        full = np.zeros(args[0].low.shape)
+        wide, full = 2.0**-50 * size, np.zeros(args[0].low.shape)
         return Enclosure(low - wide + full, high + wide + full, error * GROW + full)
 
     def _touched(self, points: Array, a: Enclosure, slack: Array) -> NDArray[np.bool_]:
@@ -67,12 +78,8 @@ class Lookup:
         index = np.arange(len(points))
         return np.asarray(inside | ((index >= before[:, None]) & (index <= after[:, None])))
 
-    def _steepest(self, axis: int, reach: NDArray[np.bool_]) -> Array:
-        """The steepest slope along one input in the cells reached."""
-        rise = np.abs(np.diff(self.values, axis=axis))
-        width = np.diff(self.points[axis])
-        slope = rise / (width if rise.ndim == 1 else np.expand_dims(width, 1 - axis))
-        first = np.take(reach, range(reach.shape[axis + 1] - 1), axis + 1)
-        second = np.take(reach, range(1, reach.shape[axis + 1]), axis + 1)
-        axes = tuple(range(1, reach.ndim))
-        return np.asarray(np.where(first & second, slope, 0.0).max(axes) * GROW)
+    def _most(self, axis: int, of_cells: Array, reach: NDArray[np.bool_]) -> Array:
+        """The largest of a property of cells along one input, of those that are reached."""
+        count = reach.shape[axis + 1]
+        first, second = (np.take(reach, range(k, count - 1 + k), axis + 1) for k in (0, 1))
+        return np.asarray(np.where(first & second, of_cells, 0.0).max(tuple(range(1, reach.ndim))) * GROW)

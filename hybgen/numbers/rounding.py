@@ -189,13 +189,7 @@ def whole(node: Node, domain: Domain) -> Enclosure:
 
 def interval(node: Node, domain: Domain) -> tuple[float, float]:
     """Between which exact values an expression lies over the whole domain. Raises Unbounded."""
-    leaves = list(leaves_of(node, domain))
-    at = {
-        leaf: (np.array([low]), np.array([high]))
-        for leaf, (low, high) in zip(leaves, _ends(leaves, domain), strict=True)
-    }
-    with np.errstate(all="ignore"):
-        found = _Evaluator(domain, at, 1, {}).of(node)
+    found = whole(node, domain)
     return float(found.low[0]), float(found.high[0])
 
 
@@ -249,6 +243,18 @@ def _up(x: Array) -> Array:
     return np.where(np.isnan(x), np.inf, np.nextafter(x, np.inf))
 
 
+Flags = NDArray[np.bool_]
+
+
+@dataclass(frozen=True, slots=True)
+class _Answer:
+    """For each box: can the exact condition hold, can it fail, and is the computed one certainly the same?"""
+
+    yes: Flags
+    no: Flags
+    sure: Flags
+
+
 @dataclass(frozen=True, slots=True)
 class _Evaluator:
     """Evaluates one expression on all boxes."""
@@ -278,9 +284,8 @@ class _Evaluator:
         match node:
             case Const():
                 exact = Fraction(node.value)
-                value = self.full(nearest(exact))
                 off = self.domain.constant(exact) if node.type.kind is Kind.REAL else 0.0
-                return Enclosure(_down(value), _up(value), self.full(off))
+                return Enclosure(self.full(_below(exact)), self.full(-_below(-exact)), self.full(off))
             case Ref(kind=RefKind.TERM):
                 return self.of(self.domain.terms[(node.name, node.index)])
             case Ref():
@@ -312,7 +317,8 @@ class _Evaluator:
             return EXACT[node.op](*args)
         if node.op in ELEMENTARY:
             low, high, error = ELEMENTARY[node.op](*args)
-            return self.rounded(low, high, error, ULP[self.domain.format.name][node.op])
+            units = ULP.get(self.domain.format.name, {}).get(node.op, 1.0)  # fixed point asks for intervals only
+            return self.rounded(low, high, error, units)
         match node.op:
             case "lookup" | "lookup2":
                 return self.domain.tables[node.table].enclosure(args, self.domain.half, self.domain.unit)
@@ -335,28 +341,47 @@ class _Evaluator:
         return Enclosure(low, high, error * GROW)
 
     def choice(self, node: Op) -> Enclosure:
-        asked, yes, no = node.args
-        a, b = self.of(yes), self.of(no)
+        """The branch that is taken, or the hull of both; where rounding may take another than the law, either for the other."""
+        asked = self.answer(node.args[0])
+        a, b = self.of(node.args[1]), self.of(node.args[2])
         low, high, error = np.minimum(a.low, b.low), np.maximum(a.high, b.high), np.maximum(a.error, b.error)
         doubtful = high - low + error
-        return Enclosure(low, high, np.where(self.sure(asked), error, np.where(np.isnan(doubtful), np.inf, doubtful)))
+        error = np.where(asked.sure, error, np.where(np.isnan(doubtful), np.inf, doubtful))
+        for only, branch in ((asked.sure & ~asked.no, a), (asked.sure & ~asked.yes, b)):
+            low, high, error = (
+                np.where(only, x, y)
+                for x, y in zip((branch.low, branch.high, branch.error), (low, high, error), strict=True)
+            )
+        return Enclosure(low, high, error)
 
-    def sure(self, condition: Node) -> NDArray[np.bool_]:
-        """In which boxes is the condition certainly answered as the exact one?"""
+    def answer(self, condition: Node) -> _Answer:
+        """What a condition can be in each box."""
         match condition:
-            case Op(op="lt" | "le" | "gt" | "ge") if condition.args[0].type.kind is Kind.REAL:
-                return self.decided(*condition.args)
+            case Const(value=value):
+                return _Answer(self.flags(bool(value)), self.flags(not value), self.flags(True))
             case Ref(kind=RefKind.TERM):
-                return self.sure(self.domain.terms[(condition.name, condition.index)])
+                return self.answer(self.domain.terms[(condition.name, condition.index)])
+            case Op(op="lt" | "le" | "gt" | "ge") if condition.args[0].type.kind is Kind.REAL:
+                return self.compared(condition.op, *condition.args)
+            case Op(op="not"):
+                inner = self.answer(condition.args[0])
+                return _Answer(inner.no, inner.yes, inner.sure)
+            case Op(op="and" | "or"):
+                parts = [self.answer(a) for a in condition.args]
+                every, some = np.logical_and.reduce, np.logical_or.reduce
+                first, second = (every, some) if condition.op == "and" else (some, every)
+                sure = every([p.sure for p in parts])
+                return _Answer(first([p.yes for p in parts]), second([p.no for p in parts]), sure)
             case Op():
-                found = np.ones(self.count, bool)
-                for arg in condition.args:
-                    found &= self.sure(arg)
-                return found
+                sure = np.logical_and.reduce([self.answer(a).sure for a in condition.args])
+                return _Answer(self.flags(True), self.flags(True), sure)
             case _:
-                return np.ones(self.count, bool)
+                return _Answer(self.flags(True), self.flags(True), self.flags(True))
 
-    def decided(self, left: Node, right: Node) -> NDArray[np.bool_]:
+    def flags(self, value: bool) -> Flags:
+        return np.full(self.count, value)
+
+    def compared(self, name: str, left: Node, right: Node) -> _Answer:
         a, b = self.of(left), self.of(right)
         # a constant is rounded outward, by up to a whole unit: against an exact number the answer is exact
         first, second = (
@@ -365,6 +390,9 @@ class _Evaluator:
         )
         exact = [e.error == 0 for n, e in ((left, a), (right, b)) if not isinstance(n, Const)]
         error = (first + second) * GROW
-        return np.asarray(
-            np.logical_and.reduce(exact) | (_down(a.low - b.high) > error) | (_down(b.low - a.high) > error)
-        )
+        apart = (_down(a.low - b.high) > error) | (_down(b.low - a.high) > error)
+        strict = name in ("gt", "lt")
+        larger, smaller = (a, b) if name in ("gt", "ge") else (b, a)
+        yes = larger.high > smaller.low if strict else larger.high >= smaller.low
+        no = larger.low <= smaller.high if strict else larger.low < smaller.high
+        return _Answer(yes, no, np.logical_and.reduce(exact) | apart)

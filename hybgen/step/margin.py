@@ -51,10 +51,14 @@ class Margins:
             for i, e in enumerate(t.exprs)
         }
         timers = {n: translator.step / u.scale for n, u in translator.timers.items()}
+        domain = Domain(translator.format, _leaves(law, translator), terms, timers, {}, _ordered(law, translator))
         tables = {
-            t.name: Lookup.of((t.x,), t.y) if isinstance(t, Table) else Lookup.of((t.x, t.y), t.z) for t in law.tables
+            t.name: Lookup.of((t.x,), t.y, domain.constant)
+            if isinstance(t, Table)
+            else Lookup.of((t.x, t.y), t.z, domain.constant)
+            for t in law.tables
         }
-        domain = Domain(translator.format, _leaves(law, translator), terms, timers, tables, _ordered(law, translator))
+        domain = replace(domain, tables=tables)
         edges = Edges.of(law, {j.name: translator.exact(j.condition) for j in law.jumps}, terms)
         return cls(law, translator, domain, edges)
 
@@ -199,8 +203,40 @@ class Margins:
             return plain
         if record.error == 0 and not guards:
             return plain
+        if record.never and (parts := self.parts(node)) is not None:
+            return self.made(jump, fold(parts), True)
         self.records.append(replace(record, within=self.within(node, bool(guards))))
         return op("and", moved, *guards, span=node.span) if guards else moved
+
+    def parts(self, node: Op) -> Node | None:
+        """A comparison of a min, max or clamp as comparisons of what it picks from; None if neither side is one.
+
+        As a whole, a value that is held at its end (`clamp(x, -most, most) >= most`) can't get beyond it by a margin.
+        """
+        for side in (0, 1):
+            whole_, other = self.body(node.args[side]), node.args[1 - side]
+            if not (isinstance(whole_, Op) and whole_.op in ("min", "max", "clamp")):
+                continue
+            if whole_.op == "clamp" and self.torn(whole_):
+                continue
+
+            def compared(x: Node, other: Node = other, side: int = side) -> Node:
+                return Op(node.op, (x, other) if side == 0 else (other, x), node.type, "", node.span)
+
+            needs_all = (whole_.op == "min") is ((node.op in _UP) is (side == 0))
+            if whole_.op != "clamp":
+                return op("and" if needs_all else "or", *map(compared, whole_.args), span=node.span)
+            x, low, high = map(compared, whole_.args)
+            if (node.op in _UP) is (side == 0):
+                return op("or", low, op("and", x, high, span=node.span), span=node.span)
+            return op("or", high, op("and", x, low, span=node.span), span=node.span)
+        return None
+
+    def body(self, node: Node) -> Node:
+        """The expression of a term, else the node."""
+        while isinstance(node, Ref) and node.kind is RefKind.TERM:
+            node = self.domain.terms[(node.name, node.index)]
+        return node
 
     def whole_time(self, node: Node) -> bool:
         """A timer, or a time that is made whole steps from a constant or a parameter."""
