@@ -176,7 +176,7 @@ def test_a_wrong_file_is_not_written(
 
     real = emit
 
-    def planted(program: object, _: bool) -> dict[str, str]:
+    def planted(program: object) -> dict[str, str]:
         return {n: t.replace(">=", ">") for n, t in real(program).items()}  # type: ignore[arg-type]
 
     monkeypatch.setattr("hybgen.pipeline.emit", planted)
